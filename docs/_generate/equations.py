@@ -1,0 +1,264 @@
+"""One page for each module that holds equations, every equation traced from its own code."""
+
+from __future__ import annotations
+
+import csv
+import re
+from importlib import resources
+from typing import Any
+
+from _generate.markdown import (
+    anchor_of,
+    escape,
+    first_name,
+    link,
+    math,
+    page,
+    quantity_link,
+    source_link,
+    span,
+    table,
+    tex,
+)
+from gasphys.equation import EQUATIONS
+from gasphys.errors import NotTraceable
+from gasphys.gas import FORMULAS, Gas
+from gasphys.policy import validity
+from gasphys.registry import equations
+
+#: Gas of the worked examples that need a mixture.
+EXAMPLE_GAS = "trimix 17/48"
+
+TITLES = {
+    "laws": "Gas laws and gas volumes",
+    "surroundings": "Pressure, depth, altitude",
+    "real_gas": "Gas density",
+    "lungs": "Alveolar gas",
+    "blood": "Oxygen in blood",
+    "gas_exchange": "From alveolus to arterial blood",
+    "doses": "Oxygen dose",
+}
+
+
+def pages() -> dict[str, str | bytes]:
+    """Return the equation pages and their index."""
+    modules: dict[str, list[str]] = {}
+    for name in equations():
+        modules.setdefault(name.split(".")[0], []).append(name)
+    out: dict[str, str | bytes] = {
+        f"equations/{module}.md": _module(module, names) for module, names in modules.items()
+    }
+    out["equations/index.md"] = _index(modules)
+    return out
+
+
+def _index(modules: dict[str, list[str]]) -> str:
+    rows = []
+    for names in modules.values():
+        for name in names:
+            f = EQUATIONS[name]
+            if "[" not in name:
+                rows.append((link(name), f.kind, escape(summary(f)), f"`{f.provenance}`"))
+    toctree = "\n".join(modules)
+    return page(
+        "Equations",
+        "Each equation is written once, as code. What is printed on these pages is traced from that code: "
+        "the same function is run with symbols instead of numbers. So page and program cannot differ.",
+        table(("equation", "kind", "what it gives", "provenance"), rows),
+        "The kinds:",
+        "formula\n: closed form; printed, differentiated and solved as it stands.\n\nchoice\n: picks one "
+        "of several published formulas by name; all of them stand on the page.\n\ninverse\n: found from a "
+        "formula, never written a second time, so there is nothing to trace.\n\ntable\n: printed values "
+        "and the rule between them; no closed form.",
+        f"```{{toctree}}\n:maxdepth: 1\n:hidden:\n\n{toctree}\n```",
+        anchor="equations-page",
+    )
+
+
+def _module(module: str, names: list[str]) -> str:
+    parts = []
+    for name in names:
+        if first_name(name) != name:
+            continue
+        f = EQUATIONS[name]
+        level = "###" if "[" in name else "##"
+        labels = [key for key, g in EQUATIONS.items() if g is f]
+        title = " = ".join(f"`{key.split('.', 1)[1]}`" for key in labels)
+        parts.append(f"({anchor_of(name)})=\n{level} {title}")
+        parts.append(_body(name, f))
+    parts += _files(module)
+    return page(
+        TITLES.get(module, module.replace("_", " ").capitalize()), *parts, anchor=f"equations-{module}"
+    )
+
+
+def _files(module: str) -> list[str]:
+    """Print the data files beside a module: what its tables read."""
+    folder = resources.files("gasphys").joinpath(module)
+    files = sorted(f.name for f in folder.iterdir() if f.name.endswith(".csv")) if folder.is_dir() else []
+    parts = []
+    for name in files:
+        lines = folder.joinpath(name).read_text("utf-8").splitlines()
+        rows = list(csv.reader(line for line in lines if not line.startswith("#")))
+        about = " ".join(line.lstrip("# ") for line in lines if line.startswith("#"))
+        parts.append(f"## Data: `{name}`\n\n{escape(about)}")
+        parts.append(table([escape(h) for h in rows[0]], [[escape(v) for v in row] for row in rows[1:]]))
+    return parts
+
+
+def summary(f: Any) -> str:
+    """Return the first line of an equation's docstring."""
+    return (f.__doc__ or "").strip().split("\n\n")[0].replace("\n", " ")
+
+
+def _notes(f: Any) -> str:
+    match = re.search(r"\nNotes\n-+\n(.*?)(?=\n\w[\w ]*\n-{3,}\n|\Z)", f.__doc__ or "", re.DOTALL)
+    text = match[1].strip() if match else ""
+    text = re.sub(r"\n*Provenance: \w+\.\s*$", "", text).strip()
+    return (
+        f"```{{eval-rst}}\n.. currentmodule:: gasphys.{f.name.split('.')[0]}\n\n{text}\n```" if text else ""
+    )
+
+
+def _body(name: str, f: Any) -> str:
+    parts = [escape(summary(f)), _notes(f)]
+    if f.kind == "choice":
+        parts.append(_members(name, f))
+    else:
+        parts += [_equation(f), _arguments(f), _constants(f), _example(name, f), _derivatives(f)]
+    sources = "; ".join(source_link(key) for key in f.sources)
+    if "[" not in name:
+        parts.append(f"Code: {{py:func}}`gasphys.{name}`.")
+    parts.append(f"Kind: {f.kind}. Provenance: `{f.provenance}`. Sources: {sources}.")
+    return "\n\n".join(p for p in parts if p)
+
+
+def _members(name: str, f: Any) -> str:
+    rows = []
+    for key, member in f.registry.items():
+        label = key if isinstance(key, str) else ",".join(key)
+        rows.append(
+            (link(f"{name}[{label}]"), member.kind, escape(summary(member)), f"`{member.provenance}`")
+        )
+    options = " and ".join(f"`{o}=`" for o in f.options)
+    return f"Picked by {options}:\n\n" + table(("name", "kind", "what it is", "provenance"), rows)
+
+
+def _equation(f: Any) -> str:
+    try:
+        return f"$$\n{tex(f.latex())}\n$$"
+    except NotTraceable as reason:
+        if f.kind == "inverse":
+            try:
+                text = f"$$\n{tex(f.forward.latex())}\n$$"
+            except NotTraceable:
+                text = ""
+            return (
+                f"Not traced: {escape(str(reason))}. Found as the {quantity_link(f.unknown)} "
+                f"for which the forward equation gives the wanted value:\n\n{text}"
+            )
+        return f"Not traced: {escape(str(reason))}."
+
+
+def _arguments(f: Any) -> str:
+    rows = []
+    for a in f.arguments:
+        q = a.quantity
+        named = quantity_link(q.name) if q.name == a.name else f"`{a.name}`, a {quantity_link(q.name)}"
+        rows.append(
+            (
+                named,
+                math(q.symbol),
+                f"`{q.unit}`",
+                escape(q.long_name),
+                "required" if a.default is None else f"{a.default:.6g}",
+                span(*q.possible),
+                "" if a.valid is None else span(a.low, a.high),
+            )
+        )
+    r = f.result
+    rows.append(
+        (
+            f"gives {quantity_link(r.name)}",
+            math(r.symbol),
+            f"`{r.unit}`",
+            escape(r.long_name),
+            "",
+            span(*r.possible),
+            "",
+        )
+    )
+    return table(("argument", "symbol", "unit", "meaning", "default", "possible", "valid"), rows)
+
+
+def _constants(f: Any) -> str:
+    if not f.constants:
+        return ""
+    rows = [
+        (
+            f"[`{name}`](#constant-{name.lower()})",
+            math(c.symbol),
+            f"{float(c):.10g} {'' if c.unit == '1' else c.unit}",
+            escape(c.meaning),
+            source_link(c.source),
+            f"`{c.provenance}`",
+        )
+        for name, c in f.constants.items()
+    ]
+    return "Constants:\n\n" + table(("constant", "symbol", "value", "meaning", "source", "provenance"), rows)
+
+
+#: Where in its usual range an argument of a change is taken; all others at the middle.
+_SHARE = {"start": 0.75, "initial": 0.75, "end": 0.25, "final": 0.25}
+
+
+def example_inputs(f: Any) -> dict[str, float]:
+    """Return inputs of everyday size: defaults where there are any, mid of the usual range otherwise."""
+    gas = Gas.parse(EXAMPLE_GAS)
+    if f.kind == "inverse":
+        forward = example_inputs(f.forward)
+        with validity("ignore"):
+            wanted = f.forward(**forward)
+        known = {a.name: forward[a.name] for a in f.arguments if a.name in forward}
+        return {f.arguments[0].name: float(f"{wanted:.6g}"), **known}
+    fields = {field: gas.fraction(formula) for formula, field in FORMULAS.items()}
+    mixture = {"oxygen", "nitrogen"} <= {a.name for a in f.arguments}
+    inputs = {}
+    for a in f.arguments:
+        if a.default is not None:
+            inputs[a.name] = a.default
+        elif mixture and a.name in fields:
+            inputs[a.name] = fields[a.name]
+        else:
+            low, high = a.quantity.usual
+            low, high = max(low, a.low), min(high, a.high)
+            if not low <= high:
+                low, high = a.low, a.high
+            share = _SHARE.get(a.name.split("_")[0], 0.5)
+            inputs[a.name] = float(f"{low + (high - low) * share:.3g}")
+    return inputs
+
+
+def _example(name: str, f: Any) -> str:
+    inputs = example_inputs(f)
+    with validity("raise"):
+        text = str(f.working(**inputs))
+    return f"Worked, with inputs of everyday size (not advice):\n\n```text\n{text}\n```"
+
+
+def _derivatives(f: Any) -> str:
+    lines = []
+    for a in f.arguments:
+        try:
+            latex = f.derivative(a.name).latex()
+        except NotTraceable:
+            continue
+        if latex:
+            lines.append(f"$$\n{tex(latex)}\n$$")
+    if not lines:
+        return (
+            "The derivative is evaluated numerically from the forward equation."
+            if f.kind == "inverse"
+            else ""
+        )
+    return "````{details} Derivatives, traced from the same code\n\n" + "\n\n".join(lines) + "\n\n````"

@@ -1,0 +1,83 @@
+"""Every number from memory, and what would settle it."""
+
+from __future__ import annotations
+
+from collections import Counter
+
+from _generate.limits import remembered as remembered_limits
+from _generate.markdown import escape, first_name, link, page, table
+from _generate.schedules import remembered as remembered_schedules
+from _generate.words import person_defaults
+from gasphys.constants import CONSTANTS
+from gasphys.equation import EQUATIONS
+from gasphys.gas import dry_air_standards
+from gasphys.policy import PROVENANCE
+from gasphys.registry import equations
+from gasphys.sources import cite
+
+_WEAKEST_FIRST = {word: -rank for rank, word in enumerate(PROVENANCE)}
+
+
+def pages() -> dict[str, str | bytes]:
+    """Return the provenance page."""
+    equations()
+    constants = sorted(
+        (c for c in CONSTANTS.values() if c.provenance.startswith("memory")),
+        key=lambda c: _WEAKEST_FIRST[c.provenance],
+    )
+    own = [(name, f) for name, f in EQUATIONS.items() if first_name(name) == name and f.kind != "choice"]
+    remembered = sorted(
+        ((n, f) for n, f in own if f.provenance.startswith("memory")),
+        key=lambda pair: _WEAKEST_FIRST[pair[1].provenance],
+    )
+    count = Counter(f.provenance for _, f in own)
+    count_constants = Counter(c.provenance for c in CONSTANTS.values())
+    parts = [
+        "Some numbers in this library were written down from memory because the printed source was not at "
+        "hand. They carry a word that says so, the review prints which it used, and "
+        '`with gasphys.provenance("secondary"):` refuses all of them. This page lists each one with what it '
+        "should be compared to. Whoever has the source can settle a row: see [Adding](#adding-a-constant).",
+        table(
+            ("word", "equations", "constants"),
+            [(f"`{w}`", count.get(w, 0), count_constants.get(w, 0)) for w in PROVENANCE],
+        ),
+        "## Constants from memory\n\n"
+        + table(
+            ("constant", "value", "provenance", "used by", "compare with"),
+            [
+                (
+                    f"[`{c.name}`](#constant-{c.name.lower()})",
+                    f"{float(c):.10g} {'' if c.unit == '1' else c.unit}",
+                    f"`{c.provenance}`",
+                    ", ".join(link(n) for n, f in own if c.name in f.constants) or "nothing yet",
+                    escape(cite(c.source)),
+                )
+                for c in constants
+            ],
+        ),
+        "## Equations from memory\n\nAn equation is as weak as the weakest number in it. Where a constant "
+        "is the reason, settling the constant settles the equation.\n\n"
+        + table(
+            ("equation", "provenance", "because of", "compare with"), [_equation(n, f) for n, f in remembered]
+        ),
+        "## Compositions of air and assumed values of a person from memory\n\n"
+        + table(
+            ("what", "provenance", "compare with"),
+            [
+                (f"`{name}`", f"`{row['provenance']}`", escape(row["source"]))
+                for name, row in {**dry_air_standards(), **person_defaults()}.items()
+                if row["provenance"].startswith("memory")
+            ],
+        ),
+        *remembered_limits(),
+        *remembered_schedules(),
+    ]
+    return {
+        "provenance.md": page("What would settle each remembered number", *parts, anchor="provenance-page")
+    }
+
+
+def _equation(name: str, f: object) -> tuple[str, ...]:
+    weak = [c for c in f.constants.values() if c.provenance == f.provenance]  # type: ignore[attr-defined]
+    because = ", ".join(f"[`{c.name}`](#constant-{c.name.lower()})" for c in weak) or "the equation itself"
+    return (link(name), f"`{f.provenance}`", because, "; ".join(escape(cite(k)) for k in f.sources))  # type: ignore[attr-defined]

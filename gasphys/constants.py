@@ -1,0 +1,400 @@
+"""Constants: each with its value, unit, exactness, source and provenance.
+
+A :class:`Constant` is a float, so arithmetic works as usual; in a traced equation it becomes a
+symbol with its own LaTeX name.
+"""
+
+from __future__ import annotations
+
+from gasphys.units import UNITS
+
+__all__ = ["CONSTANTS", "Constant"]
+
+
+class Constant(float):
+    """A named number with unit, source and provenance.
+
+    Parameters
+    ----------
+    name : str
+        Name in the code.
+    value : float
+        The number.
+    unit : str
+        Its unit.
+    symbol : str
+        LaTeX name.
+    meaning : str
+        One line.
+    source : str
+        Key of a reference in ``sources.toml``.
+    provenance : str
+        One of the words of :data:`gasphys.policy.PROVENANCE`.
+    exact : bool
+        True if exact by definition.
+    uncertainty : float or None
+        Standard uncertainty where it is not exact and known.
+    """
+
+    __slots__ = ("exact", "meaning", "name", "provenance", "source", "symbol", "uncertainty", "unit")
+
+    name: str
+    unit: str
+    symbol: str
+    meaning: str
+    source: str
+    provenance: str
+    exact: bool
+    uncertainty: float | None
+
+    def __new__(
+        cls,
+        name: str,
+        value: float,
+        unit: str,
+        symbol: str,
+        meaning: str,
+        source: str,
+        provenance: str,
+        exact: bool = False,
+        uncertainty: float | None = None,
+    ) -> Constant:
+        self = super().__new__(cls, value)
+        self.name, self.unit, self.symbol, self.meaning = name, unit, symbol, meaning
+        self.source, self.provenance = source, provenance
+        self.exact, self.uncertainty = exact, uncertainty
+        return self
+
+    def __reduce__(self) -> tuple[object, ...]:
+        return (
+            Constant,
+            (
+                self.name,
+                float(self),
+                self.unit,
+                self.symbol,
+                self.meaning,
+                self.source,
+                self.provenance,
+                self.exact,
+                self.uncertainty,
+            ),
+        )
+
+    def __repr__(self) -> str:
+        return f"{float(self)!r}"
+
+
+#: Every constant by name.
+CONSTANTS: dict[str, Constant] = {}
+
+
+def _constant(
+    name: str,
+    value: float,
+    unit: str,
+    symbol: str,
+    meaning: str,
+    source: str,
+    provenance: str,
+    exact: bool = False,
+    uncertainty: float | None = None,
+) -> Constant:
+    one = Constant(name, value, unit, symbol, meaning, source, provenance, exact, uncertainty)
+    CONSTANTS[name] = one
+    return one
+
+
+ATMOSPHERE = _constant(
+    "ATMOSPHERE", 101.325, "kPa", "P_0", "standard atmosphere", "cgpm_1954", "read", exact=True
+)
+BAR = _constant("BAR", 100.0, "kPa", "p_{bar}", "one bar", "si_brochure_2019", "read", exact=True)
+MMHG = _constant(
+    "MMHG",
+    UNITS["mmHg"].factor / 1e3,
+    "kPa",
+    "p_{mmHg}",
+    "conventional millimeter of mercury",
+    "si_brochure_2019",
+    "secondary",
+    exact=True,
+)
+ZERO_CELSIUS = _constant(
+    "ZERO_CELSIUS",
+    273.15,
+    "K",
+    "T_0",
+    "zero of the Celsius scale, temperature of STPD",
+    "si_brochure_2019",
+    "read",
+    exact=True,
+)
+BODY_TEMPERATURE = _constant(
+    "BODY_TEMPERATURE",
+    310.15,
+    "K",
+    "T_b",
+    "body temperature of BTPS, 37 degC",
+    "common_practice",
+    "secondary",
+    exact=True,
+)
+GAS_CONSTANT = _constant(
+    "GAS_CONSTANT",
+    8.31446261815324,
+    "J/mol/K",
+    "R_m",
+    "molar gas constant",
+    "si_brochure_2019",
+    "read",
+    exact=True,
+)
+BODY_VAPOR_PRESSURE = _constant(
+    "BODY_VAPOR_PRESSURE",
+    47.0 * UNITS["mmHg"].factor / 1e3,
+    "kPa",
+    "P_{H_2O,37}",
+    "water vapor pressure at 37 degC by convention, 47 mmHg",
+    "common_practice",
+    "secondary",
+    exact=True,
+)
+STANDARD_GRAVITY = _constant(
+    "STANDARD_GRAVITY", 9.80665, "m/s2", "g_n", "standard gravity", "cgpm_1901", "read", exact=True
+)
+MSW = _constant(
+    "MSW", 10.0, "kPa", "p_{msw}", "pressure of one meter of sea water", "msw_convention",
+    "secondary", exact=True,
+)  # fmt: skip
+FSW = _constant(
+    "FSW",
+    101.325 / 33.0,
+    "kPa",
+    "p_{fsw}",
+    "pressure of one foot of sea water, 33 per atmosphere",
+    "usn_manual",
+    "secondary",
+    exact=True,
+)
+FSW_64_LB_FT3 = _constant(
+    "FSW_64_LB_FT3",
+    UNITS["fsw_64_lb_ft3"].factor / 1e3,
+    "kPa",
+    "p_{fsw,64}",
+    "pressure of one foot of water of 64 lb/ft3",
+    "usn_physics",
+    "secondary",
+    exact=True,
+)
+FSW_33_08_PER_ATM = _constant(
+    "FSW_33_08_PER_ATM",
+    101.325 / 33.08,
+    "kPa",
+    "p_{fsw,33.08}",
+    "pressure of one foot of sea water, 33.08 per atmosphere",
+    "uhms_fsw",
+    "memory_medium",
+    exact=True,
+)
+FSW_32_646_PER_BAR = _constant(
+    "FSW_32_646_PER_BAR",
+    100.0 / 32.646,
+    "kPa",
+    "p_{fsw,32.646}",
+    "pressure of one foot of sea water, 32.646 per bar",
+    "uhms_fsw",
+    "memory_medium",
+    exact=True,
+)
+FRESH_WATER_DENSITY = _constant(
+    "FRESH_WATER_DENSITY",
+    1000.0,
+    "kg/m3",
+    r"\rho_{fw}",
+    "fresh water, conventional",
+    "common_practice",
+    "secondary",
+    exact=True,
+)
+EN13319_PRESSURE_PER_METER = _constant(
+    "EN13319_PRESSURE_PER_METER",
+    10.0,
+    "kPa/m",
+    "g_{13319}",
+    "EN 13319: one bar for ten meters",
+    "en_13319",
+    "secondary",
+    exact=True,
+)
+HUEFNER = _constant(
+    "HUEFNER",
+    1.34,
+    "mL/g",
+    r"\beta",
+    "O2 carried by one gram of hemoglobin, in vivo",
+    "o2_capacity_texts",
+    "secondary",
+)
+O2_SOLUBILITY = _constant(
+    "O2_SOLUBILITY",
+    0.0031,
+    "mL/dL/mmHg",
+    r"\alpha_{O_2}",
+    "O2 dissolved in blood at 37 degC",
+    "o2_capacity_texts",
+    "secondary",
+)
+MOLAR_MASS_O2 = _constant(
+    "MOLAR_MASS_O2", 31.9988, "g/mol", "M_{O_2}", "molar mass of oxygen", "ciaaw", "memory_high"
+)
+MOLAR_MASS_N2 = _constant(
+    "MOLAR_MASS_N2", 28.0134, "g/mol", "M_{N_2}", "molar mass of nitrogen", "ciaaw", "memory_high"
+)
+MOLAR_MASS_HE = _constant(
+    "MOLAR_MASS_HE", 4.002602, "g/mol", "M_{He}", "molar mass of helium", "ciaaw", "memory_high"
+)
+MOLAR_MASS_AR = _constant(
+    "MOLAR_MASS_AR", 39.948, "g/mol", "M_{Ar}", "molar mass of argon", "ciaaw", "memory_high"
+)
+MOLAR_MASS_H2 = _constant(
+    "MOLAR_MASS_H2", 2.01588, "g/mol", "M_{H_2}", "molar mass of hydrogen", "ciaaw", "memory_high"
+)
+MOLAR_MASS_NE = _constant(
+    "MOLAR_MASS_NE", 20.1797, "g/mol", "M_{Ne}", "molar mass of neon", "ciaaw", "memory_high"
+)
+MOLAR_MASS_CO2 = _constant(
+    "MOLAR_MASS_CO2",
+    44.0095,
+    "g/mol",
+    "M_{CO_2}",
+    "molar mass of carbon dioxide",
+    "ciaaw",
+    "memory_high",
+)
+UPTD_THRESHOLD = _constant(
+    "UPTD_THRESHOLD",
+    0.5 * 101.325,
+    "kPa",
+    "P_{1/2}",
+    "PO2 below which no pulmonary dose is counted, 0.5 atm",
+    "clark_lambertsen_1971",
+    "memory_high",
+    exact=True,
+)
+WATER_CRITICAL_TEMPERATURE = _constant(
+    "WATER_CRITICAL_TEMPERATURE",
+    647.096,
+    "K",
+    "T_c",
+    "critical temperature of water",
+    "wagner_pruss_1993",
+    "memory_high",
+)
+WATER_CRITICAL_PRESSURE = _constant(
+    "WATER_CRITICAL_PRESSURE",
+    22064.0,
+    "kPa",
+    "p_c",
+    "critical pressure of water",
+    "wagner_pruss_1993",
+    "memory_high",
+)
+PK_CO2 = _constant(
+    "PK_CO2",
+    6.1,
+    "1",
+    "pK'",
+    "apparent pK of carbonic acid in plasma",
+    "henderson_hasselbalch_texts",
+    "secondary",
+)
+CO2_PLASMA_SOLUBILITY = _constant(
+    "CO2_PLASMA_SOLUBILITY",
+    0.03,
+    "mmol/L/mmHg",
+    r"\alpha_{CO_2}",
+    "CO2 dissolved in plasma at 37 degC, rounded as the bedside equation uses it",
+    "henderson_hasselbalch_texts",
+    "secondary",
+)
+CO_CAPACITY = _constant(
+    "CO_CAPACITY",
+    1.38,
+    "mL/g",
+    r"\beta_{CO}",
+    "CO (or O2) carried by one gram of hemoglobin in the Coburn-Forster-Kane equation",
+    "coburn_forster_kane_1965",
+    "secondary",
+)
+CO2_MOLAR_VOLUME = _constant(
+    "CO2_MOLAR_VOLUME",
+    22.26,
+    "L/mol",
+    "V_{CO_2}",
+    "volume of a mole of real CO2 at 0 degC and 101.325 kPa",
+    "douglas_1988",
+    "secondary",
+)
+MOLAR_MASS_WATER = _constant(
+    "MOLAR_MASS_WATER", 18.0153, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
+)
+N2_SOLUBILITY_LEAN = _constant(
+    "N2_SOLUBILITY_LEAN",
+    0.0125,
+    "1",
+    r"\alpha_w",
+    "Bunsen coefficient of N2 in the water of lean tissue, 37 degC",
+    "farhi_1963",
+    "read",
+)
+N2_SOLUBILITY_BLOOD = _constant(
+    "N2_SOLUBILITY_BLOOD",
+    0.0127,
+    "1",
+    r"\alpha_b",
+    "Bunsen coefficient of N2 in human blood, middle of 0.0125-0.0129 at 37.3 degC",
+    "farhi_1963",
+    "read",
+)
+N2_SOLUBILITY_FAT = _constant(
+    "N2_SOLUBILITY_FAT",
+    0.0615,
+    "1",
+    r"\alpha_f",
+    "Bunsen coefficient of N2 in body fat, 37 degC",
+    "solubility_texts",
+    "memory_medium",
+)
+LEAN_WATER = _constant(
+    "LEAN_WATER",
+    0.73,
+    "L/kg",
+    "w",
+    "water of a kilogram of lean tissue",
+    "body_composition_texts",
+    "memory_high",
+)
+FAT_DENSITY = _constant(
+    "FAT_DENSITY", 0.9, "kg/L", r"\rho_f", "density of body fat", "body_composition_texts", "memory_high"
+)
+DEAD_SPACE_PER_MASS = _constant(
+    "DEAD_SPACE_PER_MASS",
+    0.0022,
+    "L/kg",
+    "v_D",
+    "anatomical dead space of a kilogram of body mass",
+    "alveolar_ventilation_texts",
+    "memory_high",
+)
+WATER_MOLAR_VOLUME = _constant(
+    "WATER_MOLAR_VOLUME",
+    0.01814,
+    "L/mol",
+    "V_w",
+    "volume of a mole of liquid water at 37 degC, molar mass over density",
+    "tanaka_2001",
+    "memory_high",
+)
+MOLAR_MASS_H2O = _constant(
+    "MOLAR_MASS_H2O", 18.01528, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
+)

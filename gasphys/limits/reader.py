@@ -1,0 +1,237 @@
+"""Read limits: the shipped ones and a site's own, in the same format."""
+
+from __future__ import annotations
+
+import os
+import re
+import tomllib
+from collections.abc import Iterable
+from dataclasses import dataclass
+from importlib import resources
+from pathlib import Path
+from typing import Any
+
+from gasphys.errors import GasphysError, InputFileError, UnknownNameError, unknown_name
+from gasphys.policy import PROVENANCE
+from gasphys.quantities import quantity
+from gasphys.sources import sources
+
+__all__ = ["Limit", "load"]
+
+ROLES = ("diver", "patient", "attendant")
+
+_FIELDS = {
+    "id": str,
+    "title": str,
+    "quantity": str,
+    "comparison": str,
+    "value": (int, float),
+    "unit": str,
+    "authority": str,
+    "edition": str,
+    "roles": list,
+    "conditions": str,
+    "provenance": str,
+    "source": str,
+}
+
+
+@dataclass(frozen=True)
+class Limit:
+    """One published limit.
+
+    Parameters
+    ----------
+    id : str
+        Name, unique.
+    title : str
+        What it is.
+    quantity : str
+        Quantity compared.
+    comparison : str
+        "<=" or ">=".
+    value : float
+        The limit in the quantity's canonical unit.
+    unit : str
+        Unit as published.
+    published_value : float
+        Number as published.
+    authority, edition : str
+        Whose it is.
+    roles : tuple of str
+        For whom it was made.
+    conditions : str
+        When it holds.
+    provenance : str
+        How the number is known.
+    source : str
+        Key of ``sources.toml``, or free text in a site's file.
+    site : bool
+        True if it comes from the caller's own file.
+    """
+
+    id: str
+    title: str
+    quantity: str
+    comparison: str
+    value: float
+    unit: str
+    published_value: float
+    authority: str
+    edition: str
+    roles: tuple[str, ...]
+    conditions: str
+    provenance: str
+    source: str
+    site: bool = False
+
+
+def load(limits: str | os.PathLike[str] | Iterable[Any] = "default") -> tuple[Limit, ...]:
+    """Return limits: the shipped ones, a site's file beside them, or a mixture.
+
+    Parameters
+    ----------
+    limits : str, path or sequence
+        ``"default"``: the shipped limits. A path: the file's limits first, then the shipped ones.
+        A sequence of such names, paths and :class:`Limit`: just those, in order, paths without the
+        shipped ones.
+
+    Returns
+    -------
+    tuple of Limit
+        A site's own first.
+
+    Raises
+    ------
+    InputFileError
+        With file and line, for a file that cannot be read as meant.
+    UnknownNameError
+        If two limits have one id.
+
+    Examples
+    --------
+    >>> load("default")[0].authority
+    'NOAA Diving Program'
+    """
+    if isinstance(limits, Limit):
+        return (limits,)
+    if isinstance(limits, (str, os.PathLike)):
+        if str(limits) == "default":
+            found = list(_shipped())
+        else:
+            found = [*_file(limits), *_shipped()]
+    else:
+        found = []
+        for one in limits:
+            if isinstance(one, Limit):
+                found.append(one)
+            elif str(one) == "default":
+                found.extend(_shipped())
+            else:
+                found.extend(_file(one))
+        found.sort(key=lambda limit: not limit.site)
+    seen: set[str] = set()
+    for limit in found:
+        if limit.id in seen:
+            raise UnknownNameError(
+                f"limit id {limit.id!r} is given twice; a site's file can only add, choose another id"
+            )
+        seen.add(limit.id)
+    return tuple(found)
+
+
+def _shipped() -> list[Limit]:
+    text = resources.files("gasphys.limits").joinpath("default.toml").read_text(encoding="utf-8")
+    return _parse(text, "gasphys/limits/default.toml", site=False)
+
+
+def _file(path: str | os.PathLike[str]) -> list[Limit]:
+    try:
+        text = Path(path).read_text(encoding="utf-8-sig")
+    except UnicodeDecodeError:
+        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from None
+    except OSError as error:
+        raise InputFileError(
+            error.strerror or "cannot be read", path=path, remedy="check the file's name"
+        ) from None
+    return _parse(text, str(path), site=True)
+
+
+def _parse(text: str, path: str, site: bool) -> list[Limit]:
+    try:
+        data = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
+        raise InputFileError(
+            str(error).split(" (at")[0],
+            path=path,
+            line=int(match[1]) if match else None,
+            column=int(match[2]) if match else None,
+            remedy="write TOML tables [[limit]]",
+        ) from None
+    starts = [n for n, line in enumerate(text.splitlines(), 1) if line.strip() == "[[limit]]"]
+    rows = data.pop("limit", None)
+    if not isinstance(rows, list) or data:
+        extra = next(iter(data), "")
+        raise InputFileError(
+            f"only [[limit]] tables are read, found {extra!r}" if extra else "no [[limit]] table",
+            path=path,
+            remedy="begin every limit with a line [[limit]]",
+        )
+    return [_limit(row, path, starts[k] if k < len(starts) else None, text, site) for k, row in enumerate(rows)]
+
+
+def _limit(row: dict[str, Any], path: str, start: int | None, text: str, site: bool) -> Limit:
+    lines = text.splitlines()
+
+    def at(key: str) -> int | None:
+        if start is None:
+            return None
+        for number in range(start, len(lines) + 1):
+            stripped = lines[number - 1].strip()
+            if number > start and stripped == "[[limit]]":
+                break
+            if re.match(rf"{re.escape(key)}\s*=", stripped):
+                return number
+        return start
+
+    def refuse(key: str, message: str, remedy: str) -> InputFileError:
+        return InputFileError(message, path=path, line=at(key), remedy=remedy)
+
+    for key in row:
+        if key not in _FIELDS:
+            raise refuse(key, str(unknown_name("field of a limit", key, _FIELDS)), "correct the field")
+    for key, kind in _FIELDS.items():
+        if key not in row:
+            raise refuse(key, f"the limit has no {key}", f"add {key} = ...")
+        if not isinstance(row[key], kind) or isinstance(row[key], bool):
+            raise refuse(key, f"{key} = {row[key]!r} is of the wrong kind", f"correct {key}")
+    if row["comparison"] not in ("<=", ">="):
+        raise refuse("comparison", f"comparison {row['comparison']!r}", "write <= or >=")
+    for role in row["roles"]:
+        if role not in ROLES:
+            raise refuse("roles", str(unknown_name("role", role, ROLES)), "correct the role")
+    if row["provenance"] not in PROVENANCE:
+        raise refuse(
+            "provenance",
+            str(unknown_name("provenance", row["provenance"], PROVENANCE)),
+            "say how the number is known",
+        )
+    if not site and row["source"] not in sources():
+        raise refuse("source", f"unknown source {row['source']!r}", "add it to sources.toml")
+    try:
+        one = quantity(row["quantity"])
+    except UnknownNameError as error:
+        raise refuse("quantity", str(error), "name a quantity of the registry") from None
+    try:
+        published = float(row["value"])
+        value = one.from_unit(published, row["unit"]) if row["unit"] != one.unit else published
+    except GasphysError as error:
+        raise refuse("unit", str(error), f"give the value in a unit like {one.unit}") from None
+    low, high = one.possible
+    if not low <= value <= high:
+        raise refuse("value", str(one.range_error(value)), "correct the value or its unit")
+    kept = {k: row[k] for k in _FIELDS if k not in ("value", "roles")}
+    return Limit(**kept, value=value, published_value=published, roles=tuple(row["roles"]), site=site)
+
+

@@ -1,0 +1,361 @@
+"""A person: what is measured, what is assumed."""
+
+from __future__ import annotations
+
+import functools
+import os
+import re
+import tomllib
+from dataclasses import dataclass, fields
+from importlib import resources
+from pathlib import Path
+from typing import Any
+
+from gasphys import lungs
+from gasphys.errors import GasphysError, InputFileError, RangeError, unknown_name
+from gasphys.policy import outside_validity
+from gasphys.quantities import quantity
+
+__all__ = ["Person"]
+
+#: Roles a person may have in an exposure.
+ROLES = ("diver", "patient", "attendant")
+
+
+@functools.cache
+def _defaults() -> dict[str, dict[str, Any]]:
+    text = resources.files("gasphys").joinpath("person_defaults.toml").read_text(encoding="utf-8")
+    return tomllib.loads(text)
+
+
+@dataclass(frozen=True)
+class Person:
+    """A person by what is known of lungs and blood; every field is optional.
+
+    Parameters
+    ----------
+    code : str
+        A code, never a name.
+    role : str
+        "diver", "patient" or "attendant"; "" where it is not said.
+    arterial_pco2 : float or str, optional
+        Arterial PCO2 [kPa].
+    respiratory_exchange_ratio : float, optional
+        CO2 output over O2 uptake [1].
+    hemoglobin : float, optional
+        Hemoglobin [g/dL].
+    arterial_alveolar_ratio : float, optional
+        Arterial over alveolar PO2 [1].
+    shunt_fraction : float, optional
+        Shunt as a share of cardiac output [1].
+    arteriovenous_difference : float, optional
+        Arterial minus mixed venous O2 content [mL/dL].
+    cardiac_output : float, optional
+        Cardiac output [L/min].
+    o2_uptake_stpd, co2_output_stpd : float, optional
+        Gas exchange at rest [L/min STPD].
+    cohb_fraction : float, optional
+        Carboxyhemoglobin [1].
+    assumed : tuple of str
+        Names of given fields that are assumed, not measured.
+
+    Raises
+    ------
+    RangeError
+        If a value is not possible.
+    UnknownNameError
+        If the role is unknown.
+
+    Notes
+    -----
+    A field that is not given is None; :meth:`value` then returns the assumed value of
+    ``person_defaults.toml``, and results name it as assumed.
+
+    Examples
+    --------
+    >>> Person(hemoglobin=12.9).value("hemoglobin")
+    12.9
+    >>> Person().is_measured("hemoglobin")
+    False
+    """
+
+    code: str = ""
+    role: str = ""
+    arterial_pco2: Any = None
+    respiratory_exchange_ratio: Any = None
+    hemoglobin: Any = None
+    arterial_alveolar_ratio: Any = None
+    shunt_fraction: Any = None
+    arteriovenous_difference: Any = None
+    cardiac_output: Any = None
+    o2_uptake_stpd: Any = None
+    co2_output_stpd: Any = None
+    cohb_fraction: Any = None
+    assumed: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        if self.role not in ("", *ROLES):
+            raise unknown_name("role", self.role, ROLES)
+        for name in measurable():
+            value = getattr(self, name)
+            if value is None:
+                continue
+            one = quantity(name)
+            if isinstance(value, str):
+                value = one.from_text(value)
+            if isinstance(value, bool) or not isinstance(value, (int, float)):
+                raise TypeError(f"{name} must be a number in {one.unit} or text with a unit")
+            value = float(value)
+            if not one.possible[0] <= value <= one.possible[1]:
+                raise one.range_error(value)
+            object.__setattr__(self, name, value)
+        for name in self.assumed:
+            if name not in measurable():
+                raise unknown_name("field of a person", name, measurable())
+
+    def value(self, name: str) -> float:
+        """Return a field, measured or assumed.
+
+        Parameters
+        ----------
+        name : str
+            A field.
+
+        Returns
+        -------
+        float
+            In the canonical unit.
+
+        Raises
+        ------
+        UnknownNameError
+            If there is no such field.
+
+        Examples
+        --------
+        >>> Person().value("respiratory_exchange_ratio")
+        0.8
+        """
+        if name not in measurable():
+            raise unknown_name("field of a person", name, measurable())
+        given = getattr(self, name)
+        return float(_defaults()[name]["value"]) if given is None else float(given)
+
+    def is_measured(self, name: str) -> bool:
+        """Tell whether a field was given and is not marked as assumed.
+
+        Parameters
+        ----------
+        name : str
+            A field.
+
+        Returns
+        -------
+        bool
+            True if measured.
+
+        Examples
+        --------
+        >>> Person(hemoglobin=15, assumed=("hemoglobin",)).is_measured("hemoglobin")
+        False
+        """
+        return getattr(self, name) is not None and name not in self.assumed
+
+    @classmethod
+    def from_sample(
+        cls,
+        *,
+        arterial_po2: Any,
+        fio2: Any,
+        arterial_pco2: Any,
+        barometric_pressure: Any = 101.325,
+        **given: Any,
+    ) -> Person:
+        """Describe a person from one bedside arterial sample.
+
+        Parameters
+        ----------
+        arterial_po2, arterial_pco2 : float or str
+            Measured pressures [kPa].
+        fio2 : float or str
+            Inspired O2 fraction of the sample [1].
+        barometric_pressure : float or str
+            Barometric pressure at the bedside [kPa absolute].
+        **given
+            Further fields.
+
+        Returns
+        -------
+        Person
+            With ``arterial_pco2`` and ``arterial_alveolar_ratio`` measured.
+
+        Raises
+        ------
+        RangeError
+            If a value is not possible, or the arterial PO2 exceeds the alveolar one.
+
+        Examples
+        --------
+        >>> p = Person.from_sample(arterial_po2=25.3, fio2=0.4, arterial_pco2=5.2, barometric_pressure=101)
+        >>> round(p.arterial_alveolar_ratio, 3)
+        0.793
+        """
+        po2, pco2 = _number("arterial_po2", arterial_po2), _number("arterial_pco2", arterial_pco2)
+        fraction = _number("fio2", fio2)
+        exchange = given.get("respiratory_exchange_ratio")
+        r = _defaults()["respiratory_exchange_ratio"]["value"] if exchange is None else exchange
+        alveolar = lungs.alveolar_po2(
+            _number("barometric_pressure", barometric_pressure), fraction, pco2, float(r)
+        )
+        ratio = po2 / alveolar
+        if not 0.0 < ratio <= 1.0:
+            raise RangeError(
+                f"arterial_po2 = {po2:g} kPa against an alveolar PO2 of {alveolar:.4g} kPa: a ratio of "
+                f"{ratio:.3g} is not possible; check FiO2, barometric pressure and the sample"
+            )
+        if ratio < 0.75:
+            outside_validity(
+                f"arterial/alveolar ratio {ratio:.2f} is below 0.75: the ratio found at 1 atm need not "
+                "carry over to pressure (Weaver & Howe 1994); a shunt is the better model there"
+            )
+        if fraction < 0.25:
+            outside_validity(
+                f"the sample was taken on FiO2 {fraction:g}: in disease a ratio found on air is mostly "
+                "uneven ventilation and does not carry over to oxygen; use a sample on oxygen"
+            )
+        return cls(arterial_pco2=pco2, arterial_alveolar_ratio=ratio, **given)
+
+    @classmethod
+    def from_toml(cls, path: str | os.PathLike[str]) -> Person:
+        """Read a person from a TOML file.
+
+        Parameters
+        ----------
+        path : path
+            Fields of :class:`Person` at the top level; a table ``[sample]`` with
+            ``arterial_po2``, ``fio2``, ``arterial_pco2`` and ``barometric_pressure`` for the
+            arterial/alveolar ratio. Numbers in canonical units or text such as ``"190 mmHg"``.
+
+        Returns
+        -------
+        Person
+            The person.
+
+        Raises
+        ------
+        InputFileError
+            With file and line, for anything that cannot be read.
+
+        Examples
+        --------
+        >>> import pathlib, tempfile
+        >>> file = pathlib.Path(tempfile.mkdtemp()) / "p.toml"
+        >>> _ = file.write_text('code = "P-09"\\nhemoglobin = 13.1\\n')
+        >>> Person.from_toml(file).hemoglobin
+        13.1
+        """
+        text = _read(path)
+        try:
+            data = tomllib.loads(text)
+        except tomllib.TOMLDecodeError as error:
+            match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
+            line, column = (int(match[1]), int(match[2])) if match else (None, None)
+            raise InputFileError(
+                str(error).split(" (at")[0],
+                path=path,
+                line=line,
+                column=column,
+                remedy='write TOML, such as hemoglobin = 12.9 or arterial_pco2 = "39 mmHg"',
+            ) from None
+        sample = data.pop("sample", None)
+        known = {f.name for f in fields(cls)}
+        for key in data:
+            if key not in known:
+                raise _bad_key(path, text, key, "field of a person", known | {"sample"})
+        if "assumed" in data:
+            data["assumed"] = tuple(data["assumed"])
+        try:
+            if sample is None:
+                return cls(**data)
+            wanted = ("arterial_po2", "fio2", "arterial_pco2", "barometric_pressure")
+            if not isinstance(sample, dict):
+                raise TypeError("sample must be a table [sample]")
+            for key in sample:
+                if key not in wanted:
+                    raise _bad_key(path, text, key, "field of [sample]", wanted)
+            for key in wanted[:3]:
+                if key not in sample:
+                    raise InputFileError(
+                        f"[sample] has no {key}",
+                        path=path,
+                        line=_line_of(text, "[sample]"),
+                        remedy=f"add {key} = ...",
+                    )
+            both = set(sample) & set(data)
+            if both:
+                raise _bad_key(path, text, both.pop(), "field given twice", wanted)
+            return cls.from_sample(**sample, **data)
+        except InputFileError:
+            raise
+        except (GasphysError, TypeError) as error:
+            named = next((k for k in [*(sample or {}), *data] if k in str(error)), "")
+            raise InputFileError(
+                str(error), path=path, line=_line_of(text, named), remedy="correct the value"
+            ) from None
+
+
+@functools.cache
+def measurable() -> tuple[str, ...]:
+    """Return the names of the fields that are quantities.
+
+    Returns
+    -------
+    tuple of str
+        Field names.
+
+    Examples
+    --------
+    >>> "hemoglobin" in measurable()
+    True
+    """
+    return tuple(f.name for f in fields(Person) if f.name not in ("code", "role", "assumed"))
+
+
+def _number(name: str, value: Any) -> float:
+    one = quantity(name)
+    if isinstance(value, str):
+        value = one.from_text(value)
+    if isinstance(value, bool) or not isinstance(value, (int, float)):
+        raise TypeError(f"{name} must be a number in {one.unit} or text with a unit")
+    if not one.possible[0] <= value <= one.possible[1]:
+        raise one.range_error(float(value))
+    return float(value)
+
+
+def _read(path: str | os.PathLike[str]) -> str:
+    try:
+        return Path(path).read_text(encoding="utf-8-sig")
+    except UnicodeDecodeError as error:
+        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from error
+    except OSError as error:
+        raise InputFileError(
+            error.strerror or "cannot be read", path=path, remedy="check the file's name"
+        ) from None
+
+
+def _line_of(text: str, key: str) -> int | None:
+    if not key:
+        return None
+    for number, line in enumerate(text.splitlines(), start=1):
+        if line.strip().startswith(key):
+            return number
+    return None
+
+
+def _bad_key(path: Any, text: str, key: str, what: str, valid: Any) -> InputFileError:
+    return InputFileError(
+        str(unknown_name(what, key, valid)),
+        path=path,
+        line=_line_of(text, key),
+        remedy="correct or remove the line",
+    )

@@ -1,0 +1,232 @@
+"""Oxygen from inspired gas to arterial blood against ambient pressure."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import xarray as xr
+
+from gasphys.errors import GasphysError
+from gasphys.plots.style import ACCENT, INK, caution_line, new_figure, tidy
+from gasphys.quantities import quantity
+from gasphys.units import convert
+
+__all__ = ["OxygenCascade", "oxygen_cascade_figure"]
+
+#: Variable to word, color, width and dashes of its line, from the gas to the blood.
+_LINES: dict[str, tuple[str, str, float, Any]] = {
+    "inspired_po2": ("inspired, moist", INK, 0.9, (0, (6, 3))),
+    "alveolar_po2": ("alveolar", INK, 1.5, "-"),
+    "arterial_po2": ("arterial", ACCENT, 3.0, "-"),
+}
+#: Where the equation is outside the range it was made for.
+_DOTS: Any = (0, (1, 1.6))
+
+
+class OxygenCascade:
+    """The picture on one figure; later calls of :meth:`update` move its artists.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+        An empty figure.
+
+    Examples
+    --------
+    >>> picture = OxygenCascade(new_figure())
+    >>> len(picture.figure.axes)
+    2
+    """
+
+    def __init__(self, figure: Any) -> None:
+        self.figure = figure
+        # Fixed margins: nothing but the data moves between two pictures.
+        figure.set_layout_engine("none")
+        upper, lower = figure.subplots(
+            2,
+            1,
+            sharex=True,
+            gridspec_kw={
+                "height_ratios": [2.4, 1.0],
+                "left": 0.1,
+                "right": 0.83,
+                "top": 0.93,
+                "bottom": 0.17,
+                "hspace": 0.12,
+            },
+        )
+        self.upper, self.lower = upper, lower
+        for axes in (upper, lower):
+            tidy(axes)
+        self.lines = {name: _pair(upper, color, width, dash) for name, (_, color, width, dash) in _LINES.items()}
+        self.lines["arterial_dissolved_o2"] = _pair(lower, ACCENT, 3.0, "-")
+        self.labels = {
+            name: axes.text(
+                1.015,
+                0.0,
+                word,
+                transform=axes.get_yaxis_transform(),
+                fontsize=9,
+                color=color,
+                va="center",
+                clip_on=False,
+            )
+            for axes, name, word, color in [
+                *((upper, name, word, color) for name, (word, color, _, _) in _LINES.items()),
+                (lower, "arterial_dissolved_o2", "dissolved", ACCENT),
+            ]
+        }
+        self.marks = [axes.axvline(0.0, color=INK, linewidth=0.8) for axes in (upper, lower)]
+        self.dots = {
+            name: line[0].axes.plot([], [], "o", color=line[0].get_color(), markersize=5, zorder=5)[0]
+            for name, line in self.lines.items()
+        }
+        self.at = upper.text(
+            0.0, 1.02, "", transform=upper.get_xaxis_transform(), fontsize=9, color=INK, ha="center"
+        )
+        self.values = {
+            name: self.lines[name][0].axes.annotate(
+                "",
+                (0.0, 0.0),
+                xytext=(5, -5),
+                textcoords="offset points",
+                fontsize=9,
+                color=ACCENT,
+                va="top",
+                bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5},
+            )
+            for name in ("arterial_po2", "arterial_dissolved_o2")
+        }
+
+    def update(self, ds: xr.Dataset, at: float, *, pressure_unit: str = "atm", po2_unit: str = "kPa") -> None:
+        """Show another dataset.
+
+        Parameters
+        ----------
+        ds : Dataset
+            Along one dimension: ``ambient_pressure``, ``inspired_po2``, ``alveolar_po2``,
+            ``arterial_po2`` and ``arterial_dissolved_o2``; where it holds ``arterial_po2_valid``,
+            the line is dotted where that is 0.
+        at : float
+            Ambient pressure marked, one of the dataset's own [kPa absolute].
+        pressure_unit, po2_unit : str
+            Units of the axes.
+
+        Raises
+        ------
+        GasphysError
+            If `at` is not among the pressures.
+
+        Examples
+        --------
+        >>> import gasphys as gp
+        >>> pressure = xr.DataArray([101.325, 243.18], dims="pressure", attrs={"units": "kPa"})
+        >>> session = gp.Exposure.start("oxygen", pressure=pressure).stay(1)
+        >>> picture = OxygenCascade(new_figure())
+        >>> picture.update(gp.gas_exchange.oxygenation(session).isel(time=0), at=243.18)
+        >>> picture.at.get_text()
+        '2.4 atm'
+        """
+        pressures = ds["ambient_pressure"].values
+        found = np.flatnonzero(np.isclose(pressures, at, rtol=1e-9))
+        if not found.size:
+            raise GasphysError(f"at = {at:g} kPa is not among the pressures of the dataset")
+        index = int(found[0])
+        x = convert(pressures, "kPa", pressure_unit)
+        valid = ds["arterial_po2_valid"].values == 1 if "arterial_po2_valid" in ds else np.full(x.shape, True)
+        highest = {}
+        for name, (solid, dotted) in self.lines.items():
+            y = ds[name].values
+            if quantity(name).is_pressure:
+                y = convert(y, "kPa", po2_unit)
+            beyond = ~valid if name.startswith("arterial") else np.full(x.shape, False)
+            solid.set_data(x, np.where(beyond, np.nan, y))
+            dotted.set_data(x, np.where(_touching(beyond), y, np.nan))
+            self.dots[name].set_data([x[index]], [y[index]])
+            highest[name] = float(np.nanmax(y, initial=0.0))
+            self.labels[name].set_y(float(y[-1]))
+            if name in self.values:
+                self.values[name].xy = (x[index], y[index])
+                self.values[name].set_text(_short(float(y[index])))
+        top = max(highest[name] for name in _LINES)
+        self.upper.set_ylim(0.0, 1.06 * top or 1.0)
+        self.lower.set_ylim(0.0, 1.12 * highest["arterial_dissolved_o2"] or 1.0)
+        self.upper.set_xlim(float(x[0]), float(x[-1]))
+        self._spread(0.075 * top)
+        for mark in self.marks:
+            mark.set_xdata([x[index], x[index]])
+        self.at.set_x(x[index])
+        self.at.set_text(f"{_short(float(x[index]))} {pressure_unit}")
+        self.upper.set_ylabel(f"PO2, {po2_unit}", fontsize=9)
+        self.lower.set_ylabel(f"dissolved O2,\n{quantity('arterial_dissolved_o2').unit}", fontsize=9)
+        self.lower.set_xlabel(f"{quantity('ambient_pressure').long_name}, {pressure_unit}", fontsize=9)
+        self.figure.align_ylabels()
+
+    def _spread(self, gap: float) -> None:
+        """Move labels apart that would cover each other, the lowest line's label staying lowest."""
+        names = sorted(_LINES, key=lambda name: float(self.labels[name].get_position()[1]))
+        for below, above in zip(names, names[1:], strict=False):
+            floor = float(self.labels[below].get_position()[1]) + gap
+            self.labels[above].set_y(max(float(self.labels[above].get_position()[1]), floor))
+
+
+def _pair(axes: Any, color: str, width: float, dash: Any) -> tuple[Any, Any]:
+    """Return the line within validity and the one beyond."""
+    solid = axes.plot([], [], color=color, linewidth=width, linestyle=dash)[0]
+    dotted = axes.plot([], [], color=color, linewidth=width, linestyle=_DOTS)[0]
+    return solid, dotted
+
+
+def _touching(mask: Any) -> Any:
+    """Extend a mask by one point to each side, so that the parts of a line meet."""
+    wider = mask.copy()
+    wider[1:] |= mask[:-1]
+    wider[:-1] |= mask[1:]
+    return wider
+
+
+def _short(value: float) -> str:
+    return np.format_float_positional(value, precision=3, fractional=False, trim="-")
+
+
+def oxygen_cascade_figure(ds: xr.Dataset, at: float, *, pressure_unit: str = "atm", po2_unit: str = "kPa") -> Any:
+    """Draw inspired, alveolar and arterial PO2 and dissolved O2 against ambient pressure.
+
+    Parameters
+    ----------
+    ds : Dataset
+        As :meth:`OxygenCascade.update` takes it.
+    at : float
+        Ambient pressure marked, one of the dataset's own [kPa absolute].
+    pressure_unit, po2_unit : str
+        Units of the axes.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        The figure, with the caution.
+
+    Raises
+    ------
+    GasphysError
+        If `at` is not among the pressures.
+
+    Notes
+    -----
+    Dashes, widths and words tell the lines, nothing depends on color. A dotted line is outside
+    the range its equation was made for.
+
+    Examples
+    --------
+    >>> import gasphys as gp
+    >>> pressure = xr.DataArray([101.325, 243.18], dims="pressure", attrs={"units": "kPa"})
+    >>> session = gp.Exposure.start("oxygen", pressure=pressure).stay(1)
+    >>> figure = oxygen_cascade_figure(gp.gas_exchange.oxygenation(session).isel(time=0), at=243.18)
+    >>> len(figure.axes)
+    2
+    """
+    figure = new_figure(7.4, 4.8)
+    OxygenCascade(figure).update(ds, at, pressure_unit=pressure_unit, po2_unit=po2_unit)
+    caution_line(figure)
+    return figure
