@@ -43,7 +43,7 @@ myst_heading_anchors = 3
 myst_substitutions = {"caution": CAUTION}
 
 add_module_names = False
-autodoc_default_options = {"members": True, "undoc-members": True, "no-value": True}
+autodoc_default_options = {"members": True, "no-value": True}
 autodoc_member_order = "bysource"
 autodoc_typehints = "none"
 autosummary_generate = False

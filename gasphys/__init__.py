@@ -27,7 +27,7 @@ _NAMES = {
     "validity": "policy",
     "provenance": "policy",
     "review": "reviews",
-    "compare": "reviews",
+    "compare": "comparison",
 }
 
 _MODULES = (
@@ -51,6 +51,7 @@ _MODULES = (
     "schedules",
     "sources",
     "surroundings",
+    "tissues",
     "units",
     "vapor",
     "widgets",

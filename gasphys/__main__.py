@@ -84,6 +84,10 @@ def _parser() -> argparse.ArgumentParser:
     one.add_argument("--attendant", action="store_true", help="the inside attendant's exposure instead")
     one.add_argument("--descent", default="air", metavar="GAS", help="gas breathed on the way down")
     one.set_defaults(run=_treatment)
+    one = commands.add_parser("compare", parents=[common], help="was what was done what was prescribed", epilog=CAUTION)
+    one.add_argument("recorded", metavar="RECORDED", help="log (CSV) or saved exposure (netCDF)")
+    one.add_argument("prescribed", metavar="PRESCRIBED", help="a treatment table's name, a log or a saved exposure")
+    one.set_defaults(run=_compare)
     one = commands.add_parser("equations", help="list every equation, or print them all as JSON")
     one.add_argument("--json", action="store_true", help="as JSON")
     one.set_defaults(run=_equations)
@@ -118,24 +122,43 @@ def _surface(options: argparse.Namespace) -> float | None:
     return value
 
 
-def _review(options: argparse.Namespace) -> int:
+def _exposure(file: str, options: argparse.Namespace) -> Any:
     from gasphys.exposure import Exposure
 
-    if Path(options.file).suffix in (".nc", ".nc4"):
-        import xarray as xr
+    if Path(file).suffix not in (".nc", ".nc4"):
+        return Exposure.from_csv(file, surface_pressure=_surface(options), breathing=options.breathing)
+    import xarray as xr
 
-        try:
-            with xr.open_dataset(options.file) as ds:
-                exposure = Exposure.from_dataset(ds.load())
-        except FileNotFoundError:
-            raise
-        except (ValueError, OSError) as error:
-            raise GasphysError(f"{options.file}: cannot be read as netCDF ({error})") from None
+    try:
+        with xr.open_dataset(file) as ds:
+            return Exposure.from_dataset(ds.load())
+    except (FileNotFoundError, GasphysError):
+        raise
+    except (ValueError, OSError) as error:
+        raise GasphysError(f"{file}: cannot be read as netCDF ({error})") from None
+
+
+def _review(options: argparse.Namespace) -> int:
+    return _show(_exposure(options.file, options), options, role="diver")
+
+
+def _compare(options: argparse.Namespace) -> int:
+    from gasphys.comparison import compare, comparison_text
+    from gasphys.schedules import names, treatment
+
+    recorded = _exposure(options.recorded, options)
+    if options.prescribed in names():
+        prescribed = treatment(options.prescribed, surface_pressure=recorded.surface_pressure)
+    elif Path(options.prescribed).exists():
+        prescribed = _exposure(options.prescribed, options)
     else:
-        exposure = Exposure.from_csv(
-            options.file, surface_pressure=_surface(options), breathing=options.breathing
-        )
-    return _show(exposure, options, role="diver")
+        prescribed = treatment(options.prescribed)
+    found = compare(recorded, prescribed)
+    print(comparison_text(found))
+    if options.save:
+        found.to_netcdf(options.save)
+        print(f"\nsaved: {options.save}")
+    return 0
 
 
 def _treatment(options: argparse.Namespace) -> int:

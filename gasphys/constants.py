@@ -398,3 +398,139 @@ WATER_MOLAR_VOLUME = _constant(
 MOLAR_MASS_H2O = _constant(
     "MOLAR_MASS_H2O", 18.01528, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
 )
+ARIELI_EXPONENT = _constant(
+    "ARIELI_EXPONENT",
+    4.57,
+    "1",
+    "c_p",
+    "power of PO2 in the pulmonary oxygen index",
+    "arieli_2002",
+    "read",
+)
+CNS_ACTIVE_EXPONENT = _constant(
+    "CNS_ACTIVE_EXPONENT", 3.38, "1", "n", "half the power of PO2, active divers", "arieli_2002", "read"
+)
+CNS_ACTIVE_MEDIAN = _constant(
+    "CNS_ACTIVE_MEDIAN", 9.63, "1", "m", "logarithm of the median exposure, active divers", "arieli_2002", "read"
+)
+CNS_ACTIVE_SPREAD = _constant(
+    "CNS_ACTIVE_SPREAD", 2.02, "1", "s", "standard deviation of the logarithm, active divers", "arieli_2002", "read"
+)
+CNS_MODERATE_MEDIAN = _constant(
+    "CNS_MODERATE_MEDIAN",
+    11.19,
+    "1",
+    "m",
+    "logarithm of the median exposure, O2 uptake 0.9 L/min",
+    "arieli_2003",
+    "read",
+)
+CNS_MODERATE_SPREAD = _constant(
+    "CNS_MODERATE_SPREAD",
+    1.35,
+    "1",
+    "s",
+    "standard deviation of the logarithm, O2 uptake 0.9 L/min",
+    "arieli_2003",
+    "read",
+)
+CNS_IMMERSED_EXPONENT = _constant(
+    "CNS_IMMERSED_EXPONENT",
+    10.93 / 2.0,
+    "1",
+    "n",
+    "half the power of PO2, immersed rest",
+    "aviner_2020",
+    "read",
+)
+CNS_IMMERSED_MEDIAN = _constant(
+    "CNS_IMMERSED_MEDIAN", 8.99, "1", "m", "logarithm of the median exposure, immersed rest", "aviner_2020", "read"
+)
+CNS_IMMERSED_SPREAD = _constant(
+    "CNS_IMMERSED_SPREAD",
+    0.81,
+    "1",
+    "s",
+    "standard deviation of the logarithm, immersed rest",
+    "aviner_2020",
+    "read",
+)
+CNS_DRY_EXPONENT = _constant(
+    "CNS_DRY_EXPONENT", 12.99 / 2.0, "1", "n", "half the power of PO2, dry rest", "aviner_2020", "read"
+)
+CNS_DRY_MEDIAN = _constant(
+    "CNS_DRY_MEDIAN", 11.34, "1", "m", "logarithm of the median exposure, dry rest", "aviner_2020", "read"
+)
+CNS_DRY_SPREAD = _constant(
+    "CNS_DRY_SPREAD", 0.65, "1", "s", "standard deviation of the logarithm, dry rest", "aviner_2020", "read"
+)
+SURFACE_MSW = _constant(
+    "SURFACE_MSW",
+    10.0,
+    "msw",
+    "d_s",
+    "surface pressure as a depth, in msw",
+    "equivalent_depth_practice",
+    "secondary",
+    exact=True,
+)
+SURFACE_FSW = _constant(
+    "SURFACE_FSW",
+    33.0,
+    "fsw",
+    "d_s",
+    "surface pressure as a depth, in fsw",
+    "equivalent_depth_practice",
+    "secondary",
+    exact=True,
+)
+SURFACE_METERS = _constant(
+    "SURFACE_METERS",
+    10.0,
+    "m",
+    "d_s",
+    "surface pressure as a depth, in meters",
+    "equivalent_depth_practice",
+    "secondary",
+    exact=True,
+)
+N2_IN_AIR = _constant(
+    "N2_IN_AIR",
+    0.79,
+    "1",
+    "F_{N_2,air}",
+    "nitrogen of the trade's air, argon counted with it",
+    "equivalent_depth_practice",
+    "secondary",
+    exact=True,
+)
+MOLAR_MASS_HYDROXIDE = _constant(
+    "MOLAR_MASS_HYDROXIDE", 74.093, "g/mol", "M_{Ca(OH)_2}", "molar mass of calcium hydroxide", "ciaaw", "memory_high"
+)
+EVA_HALF_TIME = _constant(
+    "EVA_HALF_TIME",
+    360.0,
+    "min",
+    "t_{EVA}",
+    "half-time of the one tissue of the space suit prebreathe trials",
+    "waligora_1984",
+    "memory_high",
+)
+EXERCISE_WASHOUT_SCALE = _constant(
+    "EXERCISE_WASHOUT_SCALE",
+    51.937,
+    "min",
+    r"\tau",
+    "shortest time constant of N2 washout in the exercise prebreathe model",
+    "conkin_2004",
+    "memory_medium",
+)
+EXERCISE_WASHOUT_RISE = _constant(
+    "EXERCISE_WASHOUT_RISE",
+    0.03,
+    "kg*min/mL",
+    r"\lambda",
+    "rise of N2 washout with O2 uptake in the exercise prebreathe model",
+    "conkin_2004",
+    "memory_medium",
+)

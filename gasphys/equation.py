@@ -23,7 +23,7 @@ from typing import Any, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from gasphys.constants import Constant
+from gasphys.constants import CONSTANTS, Constant
 from gasphys.errors import NotReachableError, NotTraceable, unknown_name
 from gasphys.maths import ARRAY, SCALAR, lambdify_names, symbolic_names
 from gasphys.policy import PROVENANCE, STRICT, weakest
@@ -229,7 +229,7 @@ def _constants_of(body: Any) -> tuple[dict[str, Constant], list[str]]:
             found[value.name] = value
         elif getattr(value, "kind", None) in ("formula", "inverse"):
             words.append(value.provenance)
-            if not getattr(value, "stands", False):
+            if value.kind == "formula" and not value.stands:
                 found.update(value.constants)
     return found, words
 
@@ -457,12 +457,20 @@ def _signature(body: Any) -> str:
 # The methods of a formula
 
 
+#: Constants that stand as symbols in traced expressions; a derivative may bring those of an inverse.
+_TRACED: dict[str, Constant] = {}
+
+
 def _trace(f: Any) -> Any:
     """Return the traced expression with arguments and constants as symbols, once."""
     if not hasattr(f, "_expression"):
         import sympy as sp
 
-        body = _rebind(f._body, symbolic_names(), lambda c: sp.Symbol(c.name), _stand_in, True)
+        def symbol(constant: Constant) -> Any:
+            _TRACED[constant.name] = constant
+            return sp.Symbol(constant.name)
+
+        body = _rebind(f._body, symbolic_names(), symbol, _stand_in, True)
         f._expression = sp.sympify(body(*[sp.Symbol(a.name) for a in f.arguments]))
     return f._expression
 
@@ -471,7 +479,7 @@ def _trace(f: Any) -> Any:
 def _stand_in(g: Any) -> Any:
     """Return an inverse, or a formula that stands for itself, as a function of sympy.
 
-    Its derivatives are exact: those of the formula, or by the forward equation of the inverse.
+    Its derivatives are functions too, and exact: of the formula, or by the inverse's forward equation.
     """
     import sympy as sp
 
@@ -482,14 +490,7 @@ def _stand_in(g: Any) -> Any:
         _imp_ = staticmethod(g.raw)  # what lambdify calls
 
         def fdiff(self, argindex: int = 1) -> Any:
-            if g.kind == "formula":
-                return _slope(g, symbols[argindex - 1].name)(*self.args)
-            unknown, forward = sp.Symbol(g.unknown), _trace(g.forward)
-            slope = sp.diff(forward, unknown)
-            if argindex > 1:
-                slope = -slope / sp.diff(forward, symbols[argindex - 1])
-            others = dict(zip(symbols[1:], self.args[1:], strict=True))
-            return 1 / slope.xreplace({unknown: self, **others})
+            return _slope(g, symbols[argindex - 1].name)(*self.args)
 
         def _latex(self, printer: Any, exp: str = "") -> str:
             shown = [printer._print(v) for v, own in zip(self.args, symbols, strict=True) if v != own]
@@ -504,16 +505,17 @@ def _stand_in(g: Any) -> Any:
 
 @functools.cache
 def _slope(g: Any, name: str) -> Any:
-    """Return the derivative of a formula that stands for itself as a function of sympy."""
+    """Return the derivative of an inverse, or of a formula that stands for itself, likewise."""
     import sympy as sp
 
     symbols = [sp.Symbol(a.name) for a in g.arguments]
-    if _derivative(g, name).expression == 0:
+    derivative = g.derivative(name)
+    if derivative.expression == 0:
         return lambda *_: sp.Integer(0)
 
     class Slope(sp.Function):  # type: ignore[misc]
         nargs = len(g.arguments)
-        _imp_ = staticmethod(_derivative(g, name)._function)
+        _imp_ = staticmethod(derivative._function)
 
         def fdiff(self, argindex: int = 1) -> Any:
             raise NotTraceable(f"second derivatives of {g.name} are not traced")
@@ -548,7 +550,7 @@ def _symbolic(f: Any, *, numbers: bool = False) -> Any:
     if numbers:
         import sympy as sp
 
-        expression = expression.subs(
+        expression = expression.xreplace(
             {sp.Symbol(name): sp.Float(float(c), 17) for name, c in f.constants.items()}
         )
     return expression
@@ -558,7 +560,7 @@ def _symbol_names(f: Any) -> dict[Any, str]:
     import sympy as sp
 
     names = {sp.Symbol(a.name): a.quantity.symbol for a in f.arguments}
-    names.update({sp.Symbol(name): c.symbol for name, c in f.constants.items()})
+    names.update({sp.Symbol(name): c.symbol for name, c in {**_TRACED, **f.constants}.items()})
     return names
 
 
@@ -582,38 +584,74 @@ def _latex(f: Any, *, expand: bool = False) -> str:
     everything is written into one line.
     """
     if expand:
-        return f"{f.result.symbol} = {_tex(f, _trace(f))}"
+        return _expanded(f)
     lines: list[str] = []
-    _tex_lines(f, lines, f.result.symbol)
+    taken = {f.result.symbol: f} | {a.quantity.symbol: a for a in f.arguments}
+    _tex_lines(f, lines, f.result.symbol, taken)
     if len(lines) == 1:
         return lines[0]
     return r"\begin{aligned}" + r"\\ ".join(x.replace(" = ", " &= ", 1) for x in lines) + r"\end{aligned}"
 
 
-def _tex_lines(f: Any, lines: list[str], symbol: str) -> None:
+def _expanded(f: Any) -> str:
+    """Return the equation with every called formula written out, inverses with their arguments."""
+    import sympy as sp
+
+    body = _rebind(
+        f._body,
+        symbolic_names(),
+        lambda c: sp.Symbol(c.name),
+        lambda g: sp.Function(g.result.symbol),
+    )
+    expression = sp.sympify(body(*[sp.Symbol(a.name) for a in f.arguments]))
+    constants = {sp.Symbol(name): c.symbol for name, c in CONSTANTS.items()}
+    return f"{f.result.symbol} = {_tex(f, expression, constants)}"
+
+
+def _own_label(g: Any, label: str, taken: dict[str, Any], form: str) -> str:
+    """Return a label for a called formula: with its name where something else has the same one."""
+    if taken.setdefault(label, g) is g:
+        return label
+    named = form.format(label, str(g.name).rsplit(".", 1)[-1].replace("_", " "))
+    taken.setdefault(named, g)
+    return named
+
+
+_TEX_LABEL = r"{}\,[\text{{{}}}]"
+_TEXT_LABEL = "{}[{}]"
+
+
+def _tex_lines(f: Any, lines: list[str], symbol: str, taken: dict[str, Any]) -> None:
     expression, called = _trace_nested(f)
     names = {}
     for stand_in, (g, count) in called.items():
-        names[stand_in] = g.result.symbol + (rf"^{{({count})}}" if count > 1 else "")
+        label = _own_label(g, g.result.symbol, taken, _TEX_LABEL)
+        names[stand_in] = label + (rf"^{{({count})}}" if count > 1 else "")
     lines.append(f"{symbol} = {_tex(f, expression, names)}")
     for stand_in, (g, _) in called.items():
         if g.kind == "inverse":  # its forward equation, in which the root stands
-            g, names[stand_in] = g.forward, g.forward.result.symbol
+            g = g.forward
+            names[stand_in] = _own_label(g, g.result.symbol, taken, _TEX_LABEL)
         if not (g.stands or any(line.startswith(f"{names[stand_in]} = ") for line in lines)):
-            _tex_lines(g, lines, names[stand_in])
+            _tex_lines(g, lines, names[stand_in], taken)
 
 
-def _text_lines(f: Any, lines: list[str]) -> list[str]:
+def _text_lines(f: Any, lines: list[str], label: str = "", taken: dict[str, Any] | None = None) -> list[str]:
     """Write the equation in plain text, formulas that it calls on lines of their own."""
     import sympy as sp
 
+    label = label or f.result.name
+    taken = {label: f} | {a.name: a for a in f.arguments} if taken is None else taken
     expression, called = _trace_nested(f)
-    names = {k: sp.Symbol(g.result.name + (f"_{n}" if n > 1 else "")) for k, (g, n) in called.items()}
-    lines.append(f"{f.result.name} = {expression.subs(names)}")
-    for g, _ in called.values():
-        g = g.forward if g.kind == "inverse" else g
-        if not (g.stands or any(line.startswith(f"{g.result.name} = ") for line in lines)):
-            _text_lines(g, lines)
+    labels = {k: _own_label(g, g.result.name, taken, _TEXT_LABEL) for k, (g, _) in called.items()}
+    names = {k: sp.Symbol(labels[k] + (f"_{n}" if n > 1 else "")) for k, (_, n) in called.items()}
+    lines.append(f"{label} = {expression.subs(names)}")
+    for stand_in, (g, _) in called.items():
+        if g.kind == "inverse":
+            g = g.forward
+            labels[stand_in] = _own_label(g, g.result.name, taken, _TEXT_LABEL)
+        if not (g.stands or any(line.startswith(f"{labels[stand_in]} = ") for line in lines)):
+            _text_lines(g, lines, labels[stand_in], taken)
     return lines
 
 
@@ -657,8 +695,13 @@ def _numeric(f: Any, expression: Any) -> Callable[..., Any]:
     import sympy as sp
 
     symbols = [sp.Symbol(a.name) for a in f.arguments]
-    values = {sp.Symbol(name): sp.Float(float(c), 17) for name, c in f.constants.items()}
-    function = sp.lambdify(symbols, expression.subs(values), modules=lambdify_names())
+    values = {sp.Symbol(name): sp.Float(float(c), 17) for name, c in {**_TRACED, **f.constants}.items()}
+    expression = expression.xreplace(values)
+    # As sympy prints them, numbers beside arrays would not broadcast.
+    for switch, name in ((sp.Max, "maximum"), (sp.Min, "minimum")):
+        pair = sp.Function(name)
+        expression = expression.replace(switch, lambda *of, pair=pair: functools.reduce(pair, of))
+    function = sp.lambdify(symbols, expression, modules=lambdify_names())
 
     def evaluate(*args: Any) -> Any:
         with np.errstate(all="ignore"):
@@ -681,13 +724,36 @@ def _derivative(f: Any, name: str) -> Derivative:
     _argument(f, name)
     cache = f.__dict__.setdefault("_derivatives", {})
     if name not in cache:
-        expression = sp.diff(_trace(f), sp.Symbol(name))
+        expression = _differentiate(_trace(f), sp.Symbol(name))
         right = _tex(f, expression)
         left = rf"\frac{{\partial {f.result.symbol}}}{{\partial {_argument(f, name).quantity.symbol}}}"
         cache[name] = Derivative(
             f, name, expression, _numeric(f, expression), f"{left} = {right}"
         )
     return cache[name]  # type: ignore[no-any-return]
+
+
+def _differentiate(expression: Any, x: Any) -> Any:
+    """Differentiate; branch by branch where a clipped number is raised to a power.
+
+    There the chain rule would multiply the slope zero of the clipped side by zero to a negative power.
+    """
+    import sympy as sp
+
+    switches = (sp.Max, sp.Min, sp.Piecewise)
+    clipped = any(
+        p.base.has(*switches) and not (p.exp.is_Integer and p.exp > 0) for p in expression.atoms(sp.Pow)
+    )
+    if not clipped:
+        return sp.diff(expression, x)
+    branches = sp.piecewise_fold(expression.rewrite((sp.Max, sp.Min), sp.Piecewise))
+    if not isinstance(branches, sp.Piecewise):
+        return sp.diff(branches, x)
+
+    def without(branch: Any) -> Any:
+        return branch.replace(lambda e: e.is_Pow and e.base.is_zero, lambda e: sp.Integer(0))
+
+    return sp.Piecewise(*[(sp.diff(without(b), x), condition) for b, condition in branches.args])
 
 
 def _known(f: Any, name: str, known: dict[str, Any]) -> tuple[float, dict[str, float]]:
@@ -704,6 +770,8 @@ def _known(f: Any, name: str, known: dict[str, Any]) -> tuple[float, dict[str, f
             "result="
         )
     wanted = number(known.pop(keys[0]), Argument(f.result.name, f.result))
+    if not np.isfinite(wanted):
+        raise f.result.range_error(wanted)
     values = {}
     for argument in f.arguments:
         if argument.name == unknown.name:
@@ -712,9 +780,9 @@ def _known(f: Any, name: str, known: dict[str, Any]) -> tuple[float, dict[str, f
             continue
         if argument.name in known:
             values[argument.name] = number(known.pop(argument.name), argument)
-            low, high = argument.quantity.possible
+            low, high = argument.possible
             if not low <= values[argument.name] <= high:
-                raise argument.quantity.range_error(values[argument.name])
+                raise argument.range_error(values[argument.name])
         elif argument.default is not None:
             values[argument.name] = argument.default
         else:
@@ -743,7 +811,9 @@ def _closed_form(f: Any, name: str) -> Callable[..., Any] | None:
                         sp.Symbol(k): sp.Float(float(c), 17) for k, c in f.constants.items()
                     }
                     cache[name] = sp.lambdify(
-                        [y, *inputs], [c.subs(values) for c in coefficients], modules="math"
+                        [y, *inputs],
+                        [c.xreplace(values) for c in coefficients],
+                        modules=[lambdify_names()[0], "math"],
                     )
     return cache[name]  # type: ignore[no-any-return]
 
@@ -791,7 +861,9 @@ def _scan(
     grid = _ends(low, high)
     level = np.broadcast_to(difference(grid), grid.shape)
     roots = [float(x) for x, d in zip(grid, level, strict=True) if d == 0.0]
-    for i in np.flatnonzero(np.sign(level[:-1]) * np.sign(level[1:]) < 0.0):
+    finite = np.isfinite(level)
+    signs = np.where(finite, np.sign(np.where(finite, level, 0.0)), 0.0)
+    for i in np.flatnonzero(signs[:-1] * signs[1:] < 0.0):
         root = brentq(lambda x: float(difference(x)), grid[i], grid[i + 1], xtol=1e-300, rtol=1e-15)
         # A pole changes sign without a root.
         if abs(float(difference(root))) <= 1e-6 * max(abs(level[i]), abs(level[i + 1]), 1e-12):
@@ -895,7 +967,7 @@ def _choice(
         except (KeyError, TypeError):
             for n, (opt, given) in enumerate(zip(options, selected, strict=True)):
                 valid = {k if len(options) == 1 else k[n] for k in registry}
-                if given not in valid:
+                if not isinstance(given, str) or given not in valid:
                     raise unknown_name(word or opt, given, valid) from None
             raise unknown_name(word or " and ".join(options), key, registry) from None
 
@@ -950,7 +1022,7 @@ def _choice(
     g.__doc__ = _docstring(body.__doc__ or "", g, body)
     EQUATIONS[name] = g
     for key, member in registry.items():
-        label = key if isinstance(key, str) else ",".join(key)
+        label = key if isinstance(key, str) else ",".join(map(str, key))
         EQUATIONS.setdefault(f"{name}[{label}]", member)
     return g  # type: ignore[no-any-return]
 
@@ -1008,7 +1080,6 @@ def inverse(
     result: str = "",
     valid: Mapping[str, Valid] | None = None,
     given: str = "",
-    given_default: float | None = None,
     register: bool = True,
 ) -> EquationFunction:
     """Declare the inverse of a formula in one argument.
@@ -1032,8 +1103,6 @@ def inverse(
         Argument to validity range.
     given : str, optional
         Name of the argument that holds the forward result, where it differs from the quantity's.
-    given_default : float, optional
-        Its default.
     register : bool
         Put it into the registry.
 
@@ -1059,7 +1128,7 @@ def inverse(
     position = [a.name for a in forward.arguments].index(argument)
     others = [a for a in forward.arguments if a.name != argument]
     first = given or forward.result.name
-    arguments = (Argument(first, forward.result, given_default, (valid or {}).get(first)), *others)
+    arguments = (Argument(first, forward.result, None, (valid or {}).get(first)), *others)
 
     def root(wanted: Any, *rest: Any) -> Any:
         low, high = target.possible
@@ -1075,7 +1144,8 @@ def inverse(
     body = kernel or root
 
     def one_root(*values: Any) -> float:
-        found = float(body(*[np.float64(v) for v in values]))
+        with np.errstate(all="ignore"):
+            found = float(body(*[np.float64(v) for v in values]))
         if np.isnan(found):
             known = dict(zip([a.name for a in others], values[1:], strict=True))
             raise _not_reachable(forward, argument, values[0], known, [])
@@ -1151,7 +1221,8 @@ def inverse(
             f"put back into {forward.name}: {forward.result.name} = {check:.7g} {forward.result.unit}"
         )
         text = f"{argument} such that {forward.result.name} = {forward.name}(...)"
-        return Working(g, plain, found, text, forward.latex(), (note,))
+        tex = forward.latex() if forward.kind == "formula" else ""
+        return Working(g, plain, found, text, tex, (note,))
 
     g.symbolic = g.latex = not_traceable
     g.derivative, g.working = derivative, working
@@ -1275,7 +1346,8 @@ def _docstring(text: str, f: Any, body: Any) -> str:
         if argument is None:
             valid = sorted(str(v) for v in _option_values(f, name))
             default = inspect.signature(body).parameters[name].default
-            out.append(f"{name} : {{{', '.join(repr(v) for v in valid)}}}, default {default!r}")
+            or_else = "" if default is inspect.Parameter.empty else f", default {default!r}"
+            out.append(f"{name} : {{{', '.join(repr(v) for v in valid)}}}{or_else}")
             out.append("    Name of the formula used.")
             continue
         one = argument.quantity

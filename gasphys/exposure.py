@@ -682,7 +682,7 @@ class Exposure:
             "Conventions": "CF-1.11",
             "title": self.attrs.get("title", "exposure: pressure and breathing gas against time"),
             "source": f"gasphys {__version__}, exposure",
-            "history": "; ".join(self.history) or "as given",
+            "history": "\n".join(self.history) or "as given",
             "references": self.attrs.get("references", ""),
             "comment": CAUTION,
             "depth_unit": self.depth_unit,
@@ -883,7 +883,7 @@ class Exposure:
             pressure=columns["end_pressure"][..., -1],
             setpoint_now=columns["setpoint"][..., -1],
             part_now=part[-1],
-            history=() if history in ("", "as given") else tuple(history.split("; ")),
+            history=() if history in ("", "as given") else tuple(history.split("\n")),
             attrs={str(k): v for k, v in ds.attrs.items() if k not in known},
         )
         new._check()

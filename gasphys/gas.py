@@ -21,6 +21,7 @@ from gasphys.constants import (
     MOLAR_MASS_O2,
 )
 from gasphys.errors import RangeError, UnitError, unknown_name
+from gasphys.policy import outside_validity
 from gasphys.units import convert, parse_quantity
 
 __all__ = ["FORMULAS", "INERT", "Gas", "gas_fractions"]
@@ -136,7 +137,7 @@ class Gas:
         words = " ".join(text.strip().split()).lower()
         if words in _NAMED:
             return cls(**_NAMED[words])
-        number = r"(\d+(?:\.\d*)?|\.\d+)"
+        number = r"([0-9]+(?:\.[0-9]*)?|\.[0-9]+)"
         match = re.fullmatch(rf"(?:nitrox|ean) ?{number} ?%?", words)
         if match:
             return cls(oxygen=_percent(match[1], text))
@@ -150,16 +151,18 @@ class Gas:
                 )
             return cls(oxygen=oxygen, helium=helium)
         if words.startswith("mix "):
-            given: dict[str, Any] = {"oxygen": 0.0}
+            given: dict[str, Any] = {}
             names = {k.lower(): v for k, v in FORMULAS.items() if k != "N2"}
             for part in words[4:].split(" "):
                 key, _, value = part.partition("=")
                 if key not in names:
                     raise unknown_name("gas in a mix", key, [k for k in FORMULAS if k != "N2"])
-                try:
-                    given[names[key]] = float(value)
-                except ValueError:
-                    raise UnitError(f"gas {text!r}: {value!r} is not a fraction") from None
+                if names[key] in given:
+                    raise RangeError(f"gas {text!r}: {key} is given twice")
+                if not re.fullmatch(rf"{number}(?:e[+-]?[0-9]+)?", value):
+                    raise UnitError(f"gas {text!r}: {value!r} is not a fraction")
+                given[names[key]] = float(value)
+            given.setdefault("oxygen", 0.0)
             return cls(**given)
         raise unknown_name(
             "gas", text, ["air", "oxygen", "nitrox 32", "EAN 32", "trimix 18/45", "heliox 16/84"]
@@ -303,6 +306,22 @@ def dry_air_standards() -> dict[str, dict[str, Any]]:
     return tomllib.loads(text)
 
 
+def _summed(gas: Any) -> Any:
+    """Refuse fractions that do not sum to 1: one mixture raises, elements of an array become nan."""
+    if gas.chunks is not None or gas.dtype.kind not in "fiu":
+        return gas
+    total = gas.sum("gas", skipna=False) * convert(1.0, gas.attrs.get("units", "1"), "1")
+    wrong = abs(total - 1.0) > 1e-6
+    if not wrong.any():
+        return gas
+    first = float(total.values[wrong.values].flat[0])
+    text = f"the fractions along dimension gas sum to {first:.6g}, not 1"
+    if not wrong.ndim:
+        raise RangeError(text)
+    outside_validity(f"{int(wrong.sum())} of {wrong.size} mixtures: {text}; those results are nan")
+    return gas.where(~wrong).assign_attrs(gas.attrs)
+
+
 def gas_fractions(gas: Any) -> dict[str, Any]:
     """Spread a gas into mole fractions by field name.
 
@@ -320,6 +339,8 @@ def gas_fractions(gas: Any) -> dict[str, Any]:
     ------
     UnitError
         If it is none of these.
+    RangeError
+        If the fractions of one mixture do not sum to 1 within 1e-6; in arrays they become NaN.
 
     Examples
     --------
@@ -335,6 +356,7 @@ def gas_fractions(gas: Any) -> dict[str, Any]:
         unknown = [g for g in present if g not in FORMULAS]
         if unknown:
             raise unknown_name("gas", unknown[0], FORMULAS)
+        gas = _summed(gas)
         spread: dict[str, Any] = {}
         for formula, field in FORMULAS.items():
             if formula in present:

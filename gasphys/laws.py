@@ -4,13 +4,17 @@ from __future__ import annotations
 
 from gasphys.constants import ATMOSPHERE, BODY_TEMPERATURE, BODY_VAPOR_PRESSURE, ZERO_CELSIUS
 from gasphys.equation import Value, choice, formula
-from gasphys.maths import where
+from gasphys.maths import sqrt, where
 from gasphys.vapor import saturation_pressure
 
 __all__ = [
     "boyle_volume",
+    "charles_volume",
+    "combined_gas_volume",
     "convert_gas_volume",
     "dalton_partial_pressure",
+    "gay_lussac_pressure",
+    "graham_rate_ratio",
     "henry_dissolved_gas",
 ]
 
@@ -30,6 +34,85 @@ def boyle_volume(volume: Value, initial_pressure: Value, final_pressure: Value) 
     0.5
     """
     return volume * initial_pressure / final_pressure
+
+
+@formula(result="final_volume", source="charles_gay_lussac", provenance="read")
+def charles_volume(volume: Value, initial_temperature: Value, final_temperature: Value) -> Value:
+    """Volume of a fixed amount of dry gas after a change of temperature at one pressure.
+
+    Notes
+    -----
+    Charles and Gay-Lussac: V2 = V1 T2/T1, temperatures absolute (given here in degC).
+
+    Examples
+    --------
+    >>> round(charles_volume(1.0, 0.0, 37.0), 4)
+    1.1355
+    """
+    return volume * (final_temperature + ZERO_CELSIUS) / (initial_temperature + ZERO_CELSIUS)
+
+
+@formula(result="final_pressure", source="charles_gay_lussac", provenance="read")
+def gay_lussac_pressure(
+    initial_pressure: Value, initial_temperature: Value, final_temperature: Value
+) -> Value:
+    """Pressure of a fixed amount of dry gas after a change of temperature at one volume.
+
+    Notes
+    -----
+    Gay-Lussac: P2 = P1 T2/T1, pressure absolute, temperatures absolute (given here in degC). Ideal
+    gas: at cylinder pressures the real gas differs by several percent.
+
+    Examples
+    --------
+    >>> round(gay_lussac_pressure(20000.0, 40.0, 10.0), 0)
+    18084.0
+    """
+    return initial_pressure * (final_temperature + ZERO_CELSIUS) / (initial_temperature + ZERO_CELSIUS)
+
+
+@formula(result="final_volume", source="ideal_gas", provenance="read")
+def combined_gas_volume(
+    volume: Value,
+    initial_pressure: Value,
+    final_pressure: Value,
+    initial_temperature: Value,
+    final_temperature: Value,
+) -> Value:
+    """Volume of a fixed amount of dry gas after a change of pressure and temperature.
+
+    Notes
+    -----
+    The combined law, V2 = V1 (P1/P2) (T2/T1), pressures and temperatures absolute.
+
+    Examples
+    --------
+    >>> round(combined_gas_volume(10.0, 202.65, 101.325, 10.0, 20.0), 3)
+    20.706
+    """
+    return (
+        volume
+        * (initial_pressure / final_pressure)
+        * (final_temperature + ZERO_CELSIUS)
+        / (initial_temperature + ZERO_CELSIUS)
+    )
+
+
+@formula(result="rate_ratio", source="graham_1846", provenance="read")
+def graham_rate_ratio(molar_mass: Value, molar_mass_of_other: Value) -> Value:
+    """Ratio of the rates at which two gases effuse.
+
+    Notes
+    -----
+    Graham: r1/r2 = sqrt(M2/M1). Diffusion through tissue follows solubility as well: per unit of
+    partial pressure CO2 passes about 20 times as fast as O2 for its solubility, not its mass.
+
+    Examples
+    --------
+    >>> round(graham_rate_ratio(4.0026, 28.0134), 3)
+    2.646
+    """
+    return sqrt(molar_mass_of_other / molar_mass)
 
 
 @formula(result="partial_pressure", source="dalton_1802", provenance="read")

@@ -21,15 +21,18 @@ __all__ = [
     "ARRAY",
     "SCALAR",
     "exp",
+    "expm1",
     "find_root",
     "log",
     "log10",
     "maximum",
     "mean_log",
     "mean_power",
+    "mean_power_log",
     "mean_power_slope",
     "minimum",
     "normal_cdf",
+    "ramp_gain",
     "sin",
     "sqrt",
     "symbolic_names",
@@ -38,6 +41,7 @@ __all__ = [
 ]
 
 exp = np.exp
+expm1 = np.expm1
 log = np.log
 log10 = np.log10
 sin = np.sin
@@ -124,6 +128,34 @@ def mean_power_slope(start: Any, end: Any, exponent: Any) -> Any:
     return result if result.ndim else float(result)
 
 
+def mean_power_log(start: Any, end: Any, exponent: Any) -> Any:
+    """Derivative of :func:`mean_power` with respect to `exponent`: mean of x^n log(x), x above zero.
+
+    >>> float(mean_power_log(1.0, 1.0, 2.0))
+    0.0
+    """
+    start, end = np.asarray(start, dtype=np.float64), np.asarray(end, dtype=np.float64)
+    n = np.asarray(exponent, dtype=np.float64)
+
+    def power_log(x: Any) -> Any:
+        safe = np.where(x > 0.0, x, 1.0)
+        return safe**n * np.log(safe)
+
+    def integral(x: Any) -> Any:
+        safe = np.where(x > 0.0, x, 1.0)
+        value = safe ** (n + 1.0) * (np.log(safe) - 1.0 / (n + 1.0)) / (n + 1.0)
+        return np.where(x > 0.0, value, 0.0)
+
+    middle, half = 0.5 * (start + end), 0.5 * (end - start)
+    near = np.abs(half) <= _NEAR * np.abs(middle)
+    # Five points of Gauss are exact to the last bits over so short a piece.
+    points, weights = np.polynomial.legendre.leggauss(5)
+    short = sum(0.5 * w * power_log(middle + half * p) for p, w in zip(points, weights, strict=True))
+    closed = (integral(end) - integral(start)) / np.where(near, 1.0, end - start)
+    result = np.where(near, short, closed)
+    return result if result.ndim else float(result)
+
+
 def mean_log(start: Any, end: Any) -> Any:
     """Mean of ``1/x`` while x goes linearly from `start` to `end`: ln(end/start)/(end - start).
 
@@ -138,9 +170,49 @@ def mean_log(start: Any, end: Any) -> Any:
     return result if result.ndim else float(result)
 
 
+#: Argument below which :func:`ramp_gain` takes its series.
+_SHORT = 0.01
+
+
+def ramp_gain(x: Any) -> Any:
+    """``1 - (1 - exp(-x))/x``, regular at zero: the share of a linear change a first-order lag has followed.
+
+    Notes
+    -----
+    `x` is the time over the time constant. With E = 1 - exp(-x) the value is E (1/E - 1/x), and 1/E - 1/x is
+    1/2 + x/12 - x^3/720 + ...; below 0.01 the next term is less than 1e-14 of it.
+
+    >>> float(ramp_gain(0.0))
+    0.0
+    """
+    negative = -np.asarray(x, dtype=np.float64)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        result = ramp_gain_from(negative, np.expm1(negative))
+    return result if result.ndim else float(result)
+
+
+def ramp_gain_from(negative: NDArray[np.float64], change: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return :func:`ramp_gain` of ``-negative`` where ``expm1(negative)`` is known already.
+
+    For kernels; quiet about 0/0 only inside ``np.errstate``.
+
+    >>> x = np.array([0.5])
+    >>> bool(ramp_gain_from(-x, np.expm1(-x))[0] == ramp_gain(0.5))
+    True
+    """
+    series = negative * negative
+    series *= -1.0 / 720.0
+    series += 1.0 / 12.0
+    series *= negative
+    series -= 0.5
+    series *= change
+    return np.where(negative > -_SHORT, series, 1.0 - change / negative)
+
+
 #: Names bound to numpy: the binding of ``f.raw``.
 ARRAY: dict[str, Any] = {
     "exp": np.exp,
+    "expm1": np.expm1,
     "log": np.log,
     "log10": np.log10,
     "sin": np.sin,
@@ -152,6 +224,7 @@ ARRAY: dict[str, Any] = {
     "normal_cdf": normal_cdf,
     "mean_power": mean_power,
     "mean_log": mean_log,
+    "ramp_gain": ramp_gain,
 }
 
 
@@ -174,6 +247,7 @@ def _normal_cdf(x: float) -> float:
 #: Names bound to the math module, for one number.
 SCALAR: dict[str, Any] = {
     "exp": math.exp,
+    "expm1": math.expm1,
     "log": math.log,
     "log10": math.log10,
     "sin": math.sin,
@@ -185,7 +259,13 @@ SCALAR: dict[str, Any] = {
     "normal_cdf": _normal_cdf,
     "mean_power": mean_power,
     "mean_log": mean_log,
+    "ramp_gain": ramp_gain,
 }
+
+
+def _raised(text: str, exp: str) -> str:
+    """Return printed LaTeX, raised to a power where the printer asks for one."""
+    return rf"\left({text}\right)^{{{exp}}}" if exp else str(text)
 
 
 @functools.cache
@@ -213,10 +293,10 @@ def symbolic_names() -> dict[str, Any]:
                 return MeanPowerSlope(b, a, n)
             if argindex == 2:
                 return MeanPowerSlope(a, b, n)
-            return sp.diff(self.doit(), n)
+            return MeanPowerLog(a, b, n)
 
-        def _latex(self, printer: Any) -> str:
-            return str(printer._print(self.doit()))
+        def _latex(self, printer: Any, exp: str = "") -> str:
+            return _raised(printer._print(self.doit()), exp)
 
         def _sympystr(self, printer: Any) -> str:
             a, b, n = (printer._print(x) for x in self.args)
@@ -227,10 +307,19 @@ def symbolic_names() -> dict[str, Any]:
 
         nargs = 3
 
-        def _latex(self, printer: Any) -> str:
+        def _latex(self, printer: Any, exp: str = "") -> str:
             a, b, n = self.args
             slope = (sp.Max(b, 0) ** n - MeanPower(a, b, n).doit()) / (b - a)
-            return str(printer._print(slope))
+            return _raised(printer._print(slope), exp)
+
+    class MeanPowerLog(sp.Function):  # type: ignore[misc]
+        """Derivative of MeanPower with respect to the exponent."""
+
+        nargs = 3
+
+        def _latex(self, printer: Any, exp: str = "") -> str:
+            slope = sp.Derivative(MeanPower(*self.args).doit(), self.args[2])
+            return _raised(printer._print(slope), exp)
 
     class MeanLog(sp.Function):  # type: ignore[misc]
         """Mean of 1/x over a linear ramp."""
@@ -249,18 +338,59 @@ def symbolic_names() -> dict[str, Any]:
                 ((1 / one - MeanLog(a, b)) / (one - other), sp.Ne(a, b)), (near, True)
             )
 
-        def _latex(self, printer: Any) -> str:
-            return str(printer._print(self.doit()))
+        def _latex(self, printer: Any, exp: str = "") -> str:
+            return _raised(printer._print(self.doit()), exp)
 
         def _sympystr(self, printer: Any) -> str:
             a, b = (printer._print(x) for x in self.args)
             return f"mean over the ramp of 1/x, x from {a} to {b}"
+
+    class RampGain(sp.Function):  # type: ignore[misc]
+        """1 - (1 - exp(-x))/x."""
+
+        nargs = 1
+
+        def doit(self, **hints: Any) -> Any:
+            (x,) = self.args
+            return sp.Piecewise((1 - (1 - sp.exp(-x)) / x, sp.Ne(x, 0)), (0, True))
+
+        def fdiff(self, argindex: int = 1) -> Any:
+            (x,) = self.args
+            slope = (1 - (1 + x) * sp.exp(-x)) / x**2
+            return sp.Piecewise((slope, sp.Ne(x, 0)), (sp.Rational(1, 2), True))
+
+        def _latex(self, printer: Any, exp: str = "") -> str:
+            (x,) = self.args
+            text = printer._print(sp.Add(1, -(1 - sp.exp(-x)) / x, evaluate=False))
+            return _raised(rf"\left({text}\right)", exp)  # a sum: it may stand in a product
+
+        def _sympystr(self, printer: Any) -> str:
+            x = printer._print(self.args[0])
+            return f"(1 - (1 - exp(-({x})))/({x}))"
+
+    class NormalCdf(sp.Function):  # type: ignore[misc]
+        """Standard normal distribution function; its own symbol, so that small tails keep their digits."""
+
+        nargs = 1
+
+        def doit(self, **hints: Any) -> Any:
+            return sp.erfc(-self.args[0] / sp.sqrt(2)) / 2
+
+        def fdiff(self, argindex: int = 1) -> Any:
+            return sp.exp(-self.args[0] ** 2 / 2) / sp.sqrt(2 * sp.pi)
+
+        def _latex(self, printer: Any, exp: str = "") -> str:
+            return _raised(rf"\Phi\left({printer._print(self.args[0])}\right)", exp)
+
+        def _sympystr(self, printer: Any) -> str:
+            return f"normal_cdf({printer._print(self.args[0])})"
 
     def sp_where(condition: Any, yes: Any, no: Any) -> Any:
         return sp.Piecewise((yes, condition), (no, True))
 
     return {
         "exp": sp.exp,
+        "expm1": lambda x: sp.exp(x) - 1,
         "log": sp.log,
         "log10": lambda x: sp.log(x) / sp.log(10),
         "sin": sp.sin,
@@ -269,9 +399,10 @@ def symbolic_names() -> dict[str, Any]:
         "where": sp_where,
         "minimum": sp.Min,
         "maximum": sp.Max,
-        "normal_cdf": lambda x: (1 + sp.erf(x / sp.sqrt(2))) / 2,
+        "normal_cdf": NormalCdf,
         "mean_power": MeanPower,
         "mean_log": MeanLog,
+        "ramp_gain": RampGain,
     }
 
 
@@ -279,15 +410,15 @@ def lambdify_names() -> list[Any]:
     """Return the modules that turn a traced expression back into numpy code.
 
     >>> sorted(lambdify_names()[0])
-    ['MeanLog', 'MeanPower', 'MeanPowerSlope', 'erf']
+    ['MeanLog', 'MeanPower', 'MeanPowerLog', 'MeanPowerSlope', 'NormalCdf', 'RampGain']
     """
-    from scipy.special import erf
-
     own = {
         "MeanPower": mean_power,
         "MeanPowerSlope": mean_power_slope,
+        "MeanPowerLog": mean_power_log,
         "MeanLog": mean_log,
-        "erf": erf,
+        "RampGain": ramp_gain,
+        "NormalCdf": normal_cdf,
     }
     return [own, "numpy"]
 

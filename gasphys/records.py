@@ -34,7 +34,7 @@ _Array = NDArray[np.float64]
 #: Header of a time column to the number of its readings in a minute.
 _TIME = {"time_min": 1.0, "time_s": 60.0, "time_hms": 60.0, "time": 60.0}
 _START = {"start_min": 1.0, "start_s": 60.0, "start_hms": 60.0, "start": 60.0}
-_END = {"end_min": 1.0, "end_s": 60.0, "end_hms": 60.0, "end": 60.0}
+_END = ("end_min", "end_s", "end_hms", "end")
 
 
 def _absolute(unit: str) -> Callable[[_Array, float], _Array]:
@@ -190,7 +190,8 @@ def read_log(path: _File, surface_pressure: float | str | None = None, breathing
     the field is quoted; a clock passing midnight; a clock set back in a regular log, whose row is
     placed one median step after the row before; a duplicate time whose pressures agree within
     1 kPa (another gas or set-point there is a switch at that time). A gap of more than three median
-    steps stays one straight line of pressure. A clock set forward looks like a gap and is one.
+    steps stays one straight line of pressure, noted in the history; a clock set forward cannot be
+    told from a gap.
 
     The second file holds ``start_min`` and ``end_min``, ``start_s`` and ``end_s`` (both on the
     log's own count, or from its first row if the log has a clock), ``start_hms`` and ``end_hms``,
@@ -407,7 +408,14 @@ class _Table:
         number, line, match = next(
             (number, line, match) for number, line in enumerate(lines, 1) if (match := _FOREIGN.search(line))
         )
-        what = "a NUL character" if match[0] == "\0" else f"byte 0x{ord(match[0]) & 0xFF:02X}"
+        code = ord(match[0])
+        what = (
+            f"byte 0x{code & 0xFF:02X}"
+            if code >= 0xDC80
+            else "half a character"
+            if code
+            else "a NUL character"
+        )
         return self.refuse(
             f"{what} does not belong into UTF-8 text",
             line=number,
@@ -696,8 +704,7 @@ def _elapsed(table: _Table, header: str) -> tuple[_Clock, _Array]:
                     f"repaired: clock passed midnight, 24 h added from there on ({table.places(midnights)})"
                 )
         set_back = _mend_set_back(table, header, np.diff(raw) + shift[1:], shift)
-    # The sum is rounded, so that steps near 1e-11 s may come out reversed: they are duplicates then.
-    time = np.maximum.accumulate((raw - raw[0] + np.cumsum(shift)) / _TIME[header])
+    time = (raw - raw[0] + np.cumsum(shift)) / _TIME[header]
     longest = quantity("time").possible[1]
     for row in np.flatnonzero(time > longest)[:1]:
         raise table.refuse(

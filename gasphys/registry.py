@@ -21,6 +21,7 @@ MODULES = (
     "blood",
     "gas_exchange.equations",
     "doses.equations",
+    "tissues.equations",
 )
 
 

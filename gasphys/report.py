@@ -18,7 +18,7 @@ from gasphys.reviews import levers
 from gasphys.sources import cite, sources
 from gasphys.units import convert, unit
 
-__all__ = ["Units", "review_text", "summary_text"]
+__all__ = ["Units", "minutes_text", "review_text", "summary_text"]
 
 _WIDTH = 100
 
@@ -104,7 +104,24 @@ def _round(value: float) -> str:
     return text.rstrip("0").rstrip(".") if "." in text else text
 
 
-def _minutes(value: float) -> str:
+def minutes_text(value: float) -> str:
+    """Return a time in words, seconds where it is short.
+
+    Parameters
+    ----------
+    value : float
+        Time [min].
+
+    Returns
+    -------
+    str
+        Such as ``"12.5 min"`` or ``"24 s"``.
+
+    Examples
+    --------
+    >>> minutes_text(0.4)
+    '24 s'
+    """
     return f"{value * 60.0:.0f} s" if 0.0 < value < 0.95 else f"{value:.1f} min"
 
 
@@ -275,20 +292,20 @@ def _group_text(
     letters = dict(zip((x.id for x in ordered), _letters(), strict=False))
     first = rows[ordered[0].id]
     worst, when = float(first["worst"].values), float(first["time_of_worst"].values)
-    heading, right = f"  {_heading(group, units)}", f"worst at {_minutes(when)}"
+    heading, right = f"  {_heading(group, units)}", f"worst at {minutes_text(when)}"
     lines = [f"{heading:<{_WIDTH - len(right) - 1}} {right}", f"    {_ruler(ordered, letters, worst, units)}"]
     state = []
     for limit in ordered:
         row = rows[limit.id]
         if status[limit.id] == "beyond":
-            state.append(f"beyond {letters[limit.id]} {_minutes(float(row['time_beyond'].values))}")
+            state.append(f"beyond {letters[limit.id]} {minutes_text(float(row['time_beyond'].values))}")
         else:
             margin, shown = units.show(float(row["margin"].values), name)
             state.append(f"within {letters[limit.id]} by {_round(margin)}")
     lines += _wrapped(", ".join(state), "    ")
     crossed = [float(rows[x.id]["first_crossing"].values) for x in ordered if status[x.id] == "beyond"]
     if crossed:
-        lines.append(f"    first crossed at {_minutes(min(crossed))}")
+        lines.append(f"    first crossed at {minutes_text(min(crossed))}")
     lines += _lever_lines(exposure, ordered, letters, status, units)
     for limit in ordered:
         own = " (this site)" if limit.site else ""

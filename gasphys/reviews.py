@@ -14,8 +14,9 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from gasphys.constants import ATMOSPHERE
-from gasphys.doses.model import piece_doses
+from gasphys.constants import ATMOSPHERE, MSW
+from gasphys.doses.carbon_dioxide import surface_equivalent
+from gasphys.doses.model import MEASURES, closed_circuit, outside_fit, piece_doses
 from gasphys.errors import ExposureError, unknown_name
 from gasphys.exposure import Exposure, Pieces
 from gasphys.gas import FORMULAS, Gas
@@ -48,6 +49,10 @@ class Trace:
         Why it cannot be judged; "" where it can.
     status : str
         Status that goes with the reason.
+    undefined : array of bool
+        Scenarios for which the quantity is not defined, and `why` not.
+    why : str
+        Reason that goes with them.
     """
 
     start: Array
@@ -55,6 +60,8 @@ class Trace:
     within: Callable[[Array], Array] | None = None
     reason: str = ""
     status: str = "not judged"
+    undefined: NDArray[np.bool_] | bool = False
+    why: str = ""
 
 
 def _breathing_gas_po2(exposure: Exposure, pieces: Pieces) -> Trace:
@@ -96,6 +103,7 @@ def _compression_rate(exposure: Exposure, pieces: Pieces) -> Trace:
 
 def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
     def trace(exposure: Exposure, pieces: Pieces) -> Trace:
+        dose = MEASURES[measure].dose
         each = piece_doses(measure, pieces)
         reached = np.cumsum(each, axis=-1)
         before = reached - each
@@ -110,8 +118,11 @@ def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
                 ),
                 status="not applicable",
             )
-        if measure == "noaa_cns_day" and np.max(pieces.times) > 24.0 * 60.0:
+        if measure in _OF_A_DAY and np.max(pieces.times) > 24.0 * 60.0:
             return Trace(before, reached, reason="the exposure lasts longer than the 24 h of this total")
+        outside = outside_fit(measure, pieces, np.ones(each.shape[-1], dtype=bool)) >= 1.0 - _ROUNDING
+        low = MEASURES[measure].fit[0] / ATMOSPHERE
+        why = f"breathing gas PO2 stays below {low:.2g} atm, where the model was fitted" if np.any(outside) else ""
 
         def within(share: Array) -> Array:
             partial = replace(
@@ -119,11 +130,42 @@ def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
                 duration=pieces.duration * share,
                 end_po2=pieces.start_po2 + (pieces.end_po2 - pieces.start_po2) * share,
             )
-            return before + piece_doses(measure, partial)
+            return dose(before + piece_doses(measure, partial))
 
-        return Trace(before, reached, within)
+        return Trace(dose(before), dose(reached), within, undefined=outside, why=why)
 
     return trace
+
+
+def _closed_circuit_o2(exposure: Exposure, pieces: Pieces) -> Trace:
+    found = closed_circuit(pieces, np.ones(pieces.duration.shape[-1], dtype=bool))
+    duration = np.broadcast_to(pieces.duration, found.on.shape)
+    nothing = np.zeros(found.on.shape)
+    if found.reason:
+        return Trace(nothing, nothing, reason=found.reason, status="not applicable")
+    start, end = found.used(nothing, duration), found.used(nothing + 1.0, duration)
+    return Trace(start, end, lambda share: found.used(share, duration))
+
+
+def _co2(exposure: Exposure, pieces: Pieces) -> Trace:
+    nothing = np.zeros_like(pieces.duration)
+    fraction = pieces.fractions.get("CO2", nothing)
+    if not np.any(fraction > 0.0):
+        return Trace(nothing, nothing, reason="the CO2 of the breathing gas is not given")
+    ends = [surface_equivalent.raw(fraction, p) for p in (pieces.start_pressure, pieces.end_pressure)]
+    return Trace(np.asarray(ends[0]), np.asarray(ends[1]))
+
+
+def _depth_on_helium(exposure: Exposure, pieces: Pieces) -> Trace:
+    nothing = np.zeros_like(pieces.duration)
+    helium = pieces.fractions.get("He", nothing) > 0.0
+    if not np.any(helium & (pieces.duration > 0.0)):
+        return Trace(nothing, nothing, reason="no helium is breathed", status="not applicable")
+    surface = np.asarray(exposure.surface_pressure, dtype=float)
+    surface = surface[..., None] if surface.ndim else surface
+    ends = (pieces.start_pressure, pieces.end_pressure)
+    start, end = (np.where(helium, np.maximum(p - surface, 0.0) / MSW, 0.0) for p in ends)
+    return Trace(start, end)
 
 
 def _without(what: str) -> Callable[[Exposure, Pieces], Trace]:
@@ -142,12 +184,19 @@ TRACES: dict[str, Callable[[Exposure, Pieces], Trace]] = {
     "noaa_cns_single_fraction": _dose("noaa_cns"),
     "noaa_cns_day_fraction": _dose("noaa_cns_day"),
     "uptd": _dose("uptd"),
+    "arieli_pulmonary_index": _dose("arieli_pulmonary_index"),
+    "usn_closed_circuit_o2_fraction": _closed_circuit_o2,
+    "breathing_gas_co2_surface_equivalent": _co2,
+    "depth_on_helium": _depth_on_helium,
     "chamber_o2_fraction": _without("no chamber atmosphere is part of the exposure; measure it"),
     "chamber_co2_surface_equivalent": _without("no chamber atmosphere is part of the exposure; measure it"),
 }
 
 #: Doses only grow: these traces have one crossing.
-_CUMULATIVE = ("noaa_cns_single_fraction", "noaa_cns_day_fraction", "uptd")
+_CUMULATIVE = ("noaa_cns_single_fraction", "noaa_cns_day_fraction", "uptd", "arieli_pulmonary_index")
+
+#: Measures whose limits are for a day.
+_OF_A_DAY = ("noaa_cns_day", "arieli_pulmonary_index")
 
 
 def review(
@@ -236,13 +285,17 @@ def _judge(limit: Limit, trace: Trace | None, pieces: Pieces, role: str) -> dict
         reason = f"made for {_listed(limit.roles)}, not for {_with_article(role)}"
         if trace.status == "not applicable" and trace.reason:
             reason = f"{reason}; {trace.reason}"
-        shown = nothing if trace.reason else _measured(limit, trace, pieces)
+        shown = nothing if trace.reason or np.any(trace.undefined) else _measured(limit, trace, pieces)
         return shown | {"status": "not applicable", "reason": reason}
     if trace.reason:
         return nothing | {"status": trace.status, "reason": trace.reason}
     found = _measured(limit, trace, pieces)
     beyond = ~np.isnan(found["first_crossing"])
-    return found | {"status": np.where(beyond, "beyond", "within").astype(object), "reason": ""}
+    status = np.where(trace.undefined, "not applicable", np.where(beyond, "beyond", "within"))
+    if np.any(trace.undefined):
+        kept = {k: v for k, v in found.items() if k != "limit_value"}
+        found |= {k: np.where(trace.undefined, np.nan, v) for k, v in kept.items()}
+    return found | {"status": status.astype(object), "reason": trace.why}
 
 
 def _listed(words: tuple[str, ...]) -> str:
@@ -362,7 +415,7 @@ def _dataset(
         "Conventions": "CF-1.11",
         "title": f"review of {exposure.attrs.get('title', 'an exposure')}",
         "source": f"gasphys {__version__}, review",
-        "history": "; ".join(exposure.history) or "as given",
+        "history": "\n".join(exposure.history) or "as given",
         "references": "; ".join(dict.fromkeys(x.source for x in chosen)),
         "comment": CAUTION,
         "role": role,

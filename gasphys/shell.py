@@ -338,17 +338,16 @@ def _doubtful(
     if not result.size or _all_within(result, low, high):
         return []
     beyond = (result < low) | (result > high)
-    if target is None:
-        return [(beyond, lambda value: _result_text(spec, f"{value:g}"))] if beyond.any() else []
     lost = np.isnan(result)
     for value in arrays:
         lost = lost & ~np.isnan(value)
     found: list[tuple[NDArray[np.bool_], Callable[[float], str]]] = []
     if lost.any():
-        found.append(
-            (lost, lambda _: f"{spec.name}: not reached by any possible {target.name}; they are nan")
-        )
-    if beyond.any():
+        why = "no result from these inputs" if target is None else f"not reached by any possible {target.name}"
+        found.append((lost, lambda _: f"{spec.name}: {why}; they are nan"))
+    if beyond.any() and target is None:
+        found.append((beyond, lambda value: _result_text(spec, f"{value:g}")))
+    elif beyond.any():
         found.append((beyond, lambda value: _root_text(spec, target, value)))
     return found
 

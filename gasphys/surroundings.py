@@ -16,8 +16,9 @@ from gasphys.constants import (
     MSW,
     STANDARD_GRAVITY,
 )
+from gasphys.equation import EquationFunction, Value, choice, formula, inverse, table
+from gasphys.errors import GasphysError, NotTraceable
 from gasphys.maths import sin
-from gasphys.equation import EquationFunction, Value, choice, formula, inverse
 
 __all__ = [
     "WATERS",
@@ -89,12 +90,64 @@ def _unesco_1983_depth(
     return (((-1.82e-15 * p + 2.279e-10) * p - 2.2512e-5) * p + 9.72659) * p / gravity
 
 
+def _gsw() -> Any:
+    try:
+        import gsw
+    except ImportError:
+        raise GasphysError(
+            "water 'teos10' needs the library gsw; install it with: pip install 'gasphys[ocean]'"
+        ) from None
+    return gsw
+
+
+def _teos10_evaluate(ambient_pressure: Any, latitude: Any, surface_pressure: Any) -> Any:
+    return -_gsw().z_from_p((ambient_pressure - surface_pressure) / 10.0, latitude)
+
+
+def _teos10_root(depth: Any, latitude: Any, surface_pressure: Any) -> Any:
+    return surface_pressure + 10.0 * _gsw().p_from_z(-depth, latitude)
+
+
+def _teos10_slope(name: str) -> Any:
+    """Hydrostatic balance of the same standard ocean: dz/dp = 1/(density gravity)."""
+
+    def by_pressure(ambient_pressure: Any, latitude: Any, surface_pressure: Any) -> Any:
+        gsw = _gsw()
+        p = (ambient_pressure - surface_pressure) / 10.0
+        slope = 1e3 / (gsw.rho(35.16504, 0.0, p) * gsw.grav(latitude, p))
+        return slope if name == "ambient_pressure" else -slope
+
+    if name == "latitude":
+        raise NotTraceable("surroundings.depth_at_pressure[teos10]: no derivative by latitude")
+    return by_pressure
+
+
+def _teos10_explain(**inputs: float) -> str:
+    p = (inputs["ambient_pressure"] - inputs["surface_pressure"]) / 10.0
+    return f"depth = -gsw.z_from_p({p:.7g} dbar, {inputs['latitude']:g})"
+
+
+@table(
+    result="depth",
+    source="teos_10",
+    provenance="read",
+    array=_teos10_evaluate,
+    slope=_teos10_slope,
+    explain=_teos10_explain,
+    register=False,
+)
+def _teos10_depth(
+    ambient_pressure: Value, latitude: Value = 45.0, surface_pressure: Value = ATMOSPHERE
+) -> Value:
+    """Depth in the standard ocean of TEOS-10 (35.16504 g/kg, 0 degC), as the library gsw gives it."""
+
+
 _INVERSE_DOC = """The other way round, found from the forward equation."""
 
 
-def _turned(forward: EquationFunction, argument: str, name: str) -> EquationFunction:
+def _turned(forward: EquationFunction, argument: str, name: str, kernel: Any = None) -> EquationFunction:
     return inverse(
-        forward, argument, name=name, module=__name__, doc=_INVERSE_DOC, register=False
+        forward, argument, name=name, module=__name__, doc=_INVERSE_DOC, kernel=kernel, register=False
     )
 
 
@@ -112,12 +165,14 @@ _FORWARD = {
 WATERS: dict[str, EquationFunction] = {
     **_FORWARD,
     "unesco_1983": _turned(_unesco_1983_depth, "ambient_pressure", "pressure_at_depth"),
+    "teos10": _turned(_teos10_depth, "ambient_pressure", "pressure_at_depth", _teos10_root),
 }
 
 #: Every water by name: depth at a pressure.
 _DEPTHS: dict[str, EquationFunction] = {
     **{name: _turned(f, "depth", "depth_at_pressure") for name, f in _FORWARD.items()},
     "unesco_1983": _unesco_1983_depth,
+    "teos10": _teos10_depth,
 }
 
 

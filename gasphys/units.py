@@ -340,7 +340,7 @@ def parse_quantity(text: str) -> tuple[float, str]:
     (2.4, 'atm')
     """
     match = _NUMBER.fullmatch(text)
-    if match is None:
+    if match is None or match[2].startswith(","):
         hint = " (write a decimal point, not a comma)" if re.search(r"\d,\d", text) else ""
         raise UnitError(f"cannot read {text!r} as a number with a unit, such as '2.4 atm'{hint}")
     return float(match[1]), match[2]

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import functools
-from typing import Any
 
 from gasphys.constants import (
     ATMOSPHERE,
@@ -19,7 +18,7 @@ from gasphys.maths import exp, log, tanh
 
 __all__ = ["VAPOR_FORMULAS", "enhancement_factor", "poynting_factor", "saturation_pressure"]
 
-_vapor: Any = functools.partial(formula, result="water_vapor_pressure", register=False)
+_vapor = functools.partial(formula, result="water_vapor_pressure", register=False)
 
 
 @_vapor(valid={"temperature": (0.0, 100.0)}, source="wagner_pruss_1993", provenance="memory_high")
@@ -201,9 +200,7 @@ VAPOR_FORMULAS: dict[str, EquationFunction] = {
 
 @formula(
     result="enhancement_factor",
-    valid={
-        "ambient_pressure": (50.0, 110.0, "fitted near 1 atm, at more pressure it is an extrapolation")
-    },
+    valid={"ambient_pressure": (50.0, 110.0, "fitted near 1 atm, at more pressure it is an extrapolation")},
     source="buck_1981",
     provenance="memory_high",
 )

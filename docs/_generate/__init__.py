@@ -9,12 +9,25 @@ import importlib
 import os
 from pathlib import Path
 
+import gasphys
+
 #: Generators, in the order they run.
-GENERATORS = ("words", "equations", "provenance", "limits", "schedules", "validation", "api", "examples")
+GENERATORS = (
+    "words",
+    "equations",
+    "provenance",
+    "limits",
+    "schedules",
+    "tissue_sets",
+    "validation",
+    "api",
+    "examples",
+)
 
 
 def write(folder: Path) -> None:
     """Write every generated page; leave unchanged ones alone and remove what is no longer made."""
+    gasphys.equations()  # imports every module that adds constants
     pages: dict[str, str | bytes] = {}
     for name in GENERATORS:
         pages |= importlib.import_module(f"_generate.{name}").pages()

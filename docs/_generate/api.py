@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import importlib
+from typing import Any
 
+from sphinx.pycode import ModuleAnalyzer
 from sphinx.util import logging
 
 import gasphys
@@ -12,7 +14,7 @@ from _generate.markdown import page
 logger = logging.getLogger(__name__)
 
 
-def modules() -> dict[str, object]:
+def modules() -> dict[str, Any]:
     """Return every public module by name; one that is listed but missing is a warning."""
     found = {}
     extra = {m for m in gasphys._NAMES.values() if m not in gasphys._MODULES}
@@ -29,13 +31,21 @@ def modules() -> dict[str, object]:
     return found
 
 
+def _data(module: Any) -> list[str]:
+    """Return entries for public data that a package takes over from an inner module."""
+    own = ModuleAnalyzer.for_module(module.__name__).find_attr_docs()
+    names = [n for n in module.__all__ if not callable(getattr(module, n)) and ("", n) not in own]
+    return [f"\n.. autodata:: {module.__name__}.{n}\n   :no-value:" for n in names]
+
+
 def pages() -> dict[str, str | bytes]:
     """Return a page a module, and the index with the names at the top level."""
     out: dict[str, str | bytes] = {}
     found = modules()
-    for name in found:
+    for name, module in found.items():
+        lines = [f".. automodule:: gasphys.{name}", *_data(module)]
         out[f"api/{name}.md"] = page(
-            f"gasphys.{name}", f"```{{eval-rst}}\n.. automodule:: gasphys.{name}\n```", anchor=f"api-{name}"
+            f"gasphys.{name}", "```{eval-rst}\n" + "\n".join(lines) + "\n```", anchor=f"api-{name}"
         )
     top = [".. currentmodule:: gasphys", ""]
     for name, module in gasphys._NAMES.items():

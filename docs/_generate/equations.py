@@ -7,6 +7,8 @@ import re
 from importlib import resources
 from typing import Any
 
+import sympy
+
 from _generate.markdown import (
     anchor_of,
     escape,
@@ -21,30 +23,34 @@ from _generate.markdown import (
     tex,
 )
 from gasphys.equation import EQUATIONS
-from gasphys.errors import NotTraceable
+from gasphys.errors import GasphysError, NotTraceable
 from gasphys.gas import FORMULAS, Gas
 from gasphys.policy import validity
-from gasphys.registry import equations
+from gasphys.registry import MODULES, equations
 
 #: Gas of the worked examples that need a mixture.
 EXAMPLE_GAS = "trimix 17/48"
 
 TITLES = {
     "laws": "Gas laws and gas volumes",
+    "vapor": "Water vapor",
     "surroundings": "Pressure, depth, altitude",
     "real_gas": "Gas density",
     "lungs": "Alveolar gas",
     "blood": "Oxygen in blood",
+    "breathing_gas": "Breathing gas at an instant",
     "gas_exchange": "From alveolus to arterial blood",
-    "doses": "Oxygen dose",
+    "doses": "Oxygen dose, narcosis, carbon dioxide",
+    "tissues": "Dissolved gas in tissues",
 }
 
 
 def pages() -> dict[str, str | bytes]:
     """Return the equation pages and their index."""
-    modules: dict[str, list[str]] = {}
+    modules: dict[str, list[str]] = {module.split(".")[0]: [] for module in MODULES}
     for name in equations():
         modules.setdefault(name.split(".")[0], []).append(name)
+    modules = {module: names for module, names in modules.items() if names}
     out: dict[str, str | bytes] = {
         f"equations/{module}.md": _module(module, names) for module, names in modules.items()
     }
@@ -136,7 +142,7 @@ def _body(name: str, f: Any) -> str:
 def _members(name: str, f: Any) -> str:
     rows = []
     for key, member in f.registry.items():
-        label = key if isinstance(key, str) else ",".join(key)
+        label = key if isinstance(key, str) else ",".join(map(str, key))
         rows.append(
             (link(f"{name}[{label}]"), member.kind, escape(summary(member)), f"`{member.provenance}`")
         )
@@ -172,8 +178,8 @@ def _arguments(f: Any) -> str:
                 f"`{q.unit}`",
                 escape(q.long_name),
                 "required" if a.default is None else f"{a.default:.6g}",
-                span(*q.possible),
-                "" if a.valid is None else span(a.low, a.high),
+                span(*a.possible),
+                _valid(a),
             )
         )
     r = f.result
@@ -189,6 +195,12 @@ def _arguments(f: Any) -> str:
         )
     )
     return table(("argument", "symbol", "unit", "meaning", "default", "possible", "valid"), rows)
+
+
+def _valid(a: Any) -> str:
+    if a.valid is None:
+        return ""
+    return "; ".join([span(a.low, a.high), *(escape(reason) for reason in a.valid[2:])])
 
 
 def _constants(f: Any) -> str:
@@ -208,19 +220,33 @@ def _constants(f: Any) -> str:
     return "Constants:\n\n" + table(("constant", "symbol", "value", "meaning", "source", "provenance"), rows)
 
 
+#: Inputs that must fit together where the middles of their ranges do not.
+EXAMPLES = {
+    "tissues.time_to_tissue_pressure": {
+        "initial_tissue_pressure": 80.0,
+        "inert_pressure": 220.0,
+        "tissue_pressure": 170.0,
+        "half_time": 40.0,
+    },
+}
+
 #: Where in its usual range an argument of a change is taken; all others at the middle.
 _SHARE = {"start": 0.75, "initial": 0.75, "end": 0.25, "final": 0.25}
 
 
 def example_inputs(f: Any) -> dict[str, float]:
     """Return inputs of everyday size: defaults where there are any, mid of the usual range otherwise."""
-    gas = Gas.parse(EXAMPLE_GAS)
+    if f.name in EXAMPLES:
+        return EXAMPLES[f.name]
     if f.kind == "inverse":
         forward = example_inputs(f.forward)
+        given = f.arguments[0]
         with validity("ignore"):
-            wanted = f.forward(**forward)
-        known = {a.name: forward[a.name] for a in f.arguments if a.name in forward}
-        return {f.arguments[0].name: float(f"{wanted:.6g}"), **known}
+            wanted = float(f"{f.forward(**forward):.6g}")
+        if not given.low <= wanted <= given.high:
+            wanted = _everyday(given)
+        return {given.name: wanted, **{a.name: forward[a.name] for a in f.arguments[1:]}}
+    gas = Gas.parse(EXAMPLE_GAS)
     fields = {field: gas.fraction(formula) for formula, field in FORMULAS.items()}
     mixture = {"oxygen", "nitrogen"} <= {a.name for a in f.arguments}
     inputs = {}
@@ -230,35 +256,44 @@ def example_inputs(f: Any) -> dict[str, float]:
         elif mixture and a.name in fields:
             inputs[a.name] = fields[a.name]
         else:
-            low, high = a.quantity.usual
-            low, high = max(low, a.low), min(high, a.high)
-            if not low <= high:
-                low, high = a.low, a.high
-            share = _SHARE.get(a.name.split("_")[0], 0.5)
-            inputs[a.name] = float(f"{low + (high - low) * share:.3g}")
+            inputs[a.name] = _everyday(a)
     return inputs
+
+
+def _everyday(a: Any) -> float:
+    """Return a value of the usual range that the equation is valid for."""
+    low, high = a.quantity.usual
+    low, high = max(low, a.low), min(high, a.high)
+    if not low <= high:
+        low, high = a.low, a.high
+    share = _SHARE.get(a.name.split("_")[0], 0.5)
+    return float(f"{low + (high - low) * share:.3g}")
 
 
 def _example(name: str, f: Any) -> str:
     inputs = example_inputs(f)
-    with validity("raise"):
-        text = str(f.working(**inputs))
+    try:
+        with validity("raise"):
+            text = str(f.working(**inputs))
+    except GasphysError as error:
+        raise RuntimeError(f"{name}: no worked example of {inputs}; give it inputs in EXAMPLES") from error
     return f"Worked, with inputs of everyday size (not advice):\n\n```text\n{text}\n```"
 
 
+#: Operations in a traced equation beyond which its derivatives fill pages and help nobody.
+_LONG = 60
+
+
 def _derivatives(f: Any) -> str:
-    lines = []
-    for a in f.arguments:
-        try:
-            latex = f.derivative(a.name).latex()
-        except NotTraceable:
-            continue
-        if latex:
-            lines.append(f"$$\n{tex(latex)}\n$$")
-    if not lines:
+    if f.kind == "inverse":
+        return "The derivative is 1 over that of the forward equation, exactly."
+    if f.kind == "table":
+        return ""
+    traced = f.symbolic()
+    # What stands for itself (an inverse, a long formula) counts as long: its derivative writes it out.
+    if traced.count_ops() > _LONG or any(hasattr(one, "_imp_") for one in traced.atoms(sympy.Function)):
         return (
-            "The derivative is evaluated numerically from the forward equation."
-            if f.kind == "inverse"
-            else ""
+            "The derivatives are too long to print; `derivative(name)` gives each, traced from the same code."
         )
+    lines = [f"$$\n{tex(f.derivative(a.name).latex())}\n$$" for a in f.arguments]
     return "````{details} Derivatives, traced from the same code\n\n" + "\n\n".join(lines) + "\n\n````"

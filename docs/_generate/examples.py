@@ -7,9 +7,13 @@ import os
 from pathlib import Path
 from typing import Any
 
+from sphinx.util import logging
+
 import gasphys as gp
 from _generate.markdown import svg
 from gasphys.plots import exposure_figure
+
+logger = logging.getLogger(__name__)
 
 DOCS = Path(__file__).resolve().parents[1]
 OPTIONS = doctest.ELLIPSIS | doctest.NORMALIZE_WHITESPACE
@@ -58,7 +62,14 @@ def run(path: Path) -> dict[str, Any]:
 
 def pages() -> dict[str, str | bytes]:
     """Run every page; return the pictures that pages show of their own examples."""
-    spaces = {path.name: run(path) for path in handwritten()}
+    spaces: dict[str, dict[str, Any]] = {}
+    for path in handwritten():
+        try:
+            spaces[path.name] = run(path)
+        except RuntimeError as error:
+            logger.warning("%s", error)
+    if not {"diver.md", "schedules.md"} <= set(spaces):
+        return {}
     dive, table = spaces["diver.md"], spaces["schedules.md"]["table"]
     return {
         "dive.svg": svg(exposure_figure(dive["dive"], dive["found"])),

@@ -27,16 +27,14 @@ def pages() -> dict[str, str | bytes]:
         )
         parts.append(
             table(
-                ("limit", "value", "authority, edition", "for", "conditions", "source", "provenance"),
+                ("limit", "value", "whose, when it holds", "for", "source"),
                 [
                     (
                         f"[`{limit.id}`]{{#limit-{limit.id}}} {escape(limit.title)}",
                         _value(limit),
-                        escape(f"{limit.authority}, {limit.edition}"),
+                        escape(f"{limit.authority}, {limit.edition}. {limit.conditions}"),
                         ", ".join(limit.roles),
-                        escape(limit.conditions),
-                        source_link(limit.source),
-                        f"`{limit.provenance}`",
+                        f"{source_link(limit.source)} `{limit.provenance}`",
                     )
                     for limit in sorted(limits, key=lambda limit: limit.value)
                 ],

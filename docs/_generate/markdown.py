@@ -9,6 +9,7 @@ from collections.abc import Iterable, Sequence
 from matplotlib import rc_context
 from matplotlib.figure import Figure
 
+from gasphys.constants import CONSTANTS, Constant
 from gasphys.equation import EQUATIONS, EquationFunction
 
 GENERATED = "<!-- Generated at build; edit the data or docs/_generate instead. -->\n"
@@ -77,6 +78,15 @@ def quantity_link(name: str) -> str:
 def source_link(key: str) -> str:
     """Return a link to a reference."""
     return f"[{key}](#source-{key})"
+
+
+def constants() -> dict[str, Constant]:
+    """Return every constant: those with a name of their own, then the coefficients of equations."""
+    found = dict(CONSTANTS)
+    for f in EQUATIONS.values():
+        for name, constant in f.constants.items():
+            found.setdefault(name, constant)
+    return found
 
 
 def svg(figure: Figure) -> bytes:

@@ -5,14 +5,13 @@ from __future__ import annotations
 from collections import Counter
 
 from _generate.limits import remembered as remembered_limits
-from _generate.markdown import escape, first_name, link, page, table
+from _generate.markdown import constants, escape, first_name, link, page, table
 from _generate.schedules import remembered as remembered_schedules
+from _generate.tissue_sets import remembered as remembered_sets
 from _generate.words import person_defaults
-from gasphys.constants import CONSTANTS
 from gasphys.equation import EQUATIONS
 from gasphys.gas import dry_air_standards
 from gasphys.policy import PROVENANCE
-from gasphys.registry import equations
 from gasphys.sources import cite
 
 _WEAKEST_FIRST = {word: -rank for rank, word in enumerate(PROVENANCE)}
@@ -20,9 +19,8 @@ _WEAKEST_FIRST = {word: -rank for rank, word in enumerate(PROVENANCE)}
 
 def pages() -> dict[str, str | bytes]:
     """Return the provenance page."""
-    equations()
-    constants = sorted(
-        (c for c in CONSTANTS.values() if c.provenance.startswith("memory")),
+    weak = sorted(
+        (c for c in constants().values() if c.provenance.startswith("memory")),
         key=lambda c: _WEAKEST_FIRST[c.provenance],
     )
     own = [(name, f) for name, f in EQUATIONS.items() if first_name(name) == name and f.kind != "choice"]
@@ -31,7 +29,7 @@ def pages() -> dict[str, str | bytes]:
         key=lambda pair: _WEAKEST_FIRST[pair[1].provenance],
     )
     count = Counter(f.provenance for _, f in own)
-    count_constants = Counter(c.provenance for c in CONSTANTS.values())
+    count_constants = Counter(c.provenance for c in constants().values())
     parts = [
         "Some numbers in this library were written down from memory because the printed source was not at "
         "hand. They carry a word that says so, the review prints which it used, and "
@@ -52,7 +50,7 @@ def pages() -> dict[str, str | bytes]:
                     ", ".join(link(n) for n, f in own if c.name in f.constants) or "nothing yet",
                     escape(cite(c.source)),
                 )
-                for c in constants
+                for c in weak
             ],
         ),
         "## Equations from memory\n\nAn equation is as weak as the weakest number in it. Where a constant "
@@ -71,6 +69,7 @@ def pages() -> dict[str, str | bytes]:
         ),
         *remembered_limits(),
         *remembered_schedules(),
+        *remembered_sets(),
     ]
     return {
         "provenance.md": page("What would settle each remembered number", *parts, anchor="provenance-page")

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import tomllib
+from collections.abc import Iterable
 from importlib import resources
 from typing import Any
 
-from _generate.markdown import escape, math, page, quantity_link, source_link, span, table
+from _generate.markdown import constants, escape, math, page, quantity_link, source_link, span, table
 from gasphys.constants import CONSTANTS
 from gasphys.gas import dry_air_standards
 from gasphys.person import measurable
@@ -81,20 +82,28 @@ def _units() -> str:
     )
 
 
-def _constants() -> str:
-    rows = [
-        (
-            f"[`{name}`]{{#constant-{name.lower()}}}",
-            math(c.symbol),
-            f"{float(c):.10g} {'' if c.unit == '1' else c.unit}",
-            ("exact by definition" if c.exact else "")
-            or (f"± {c.uncertainty:g}" if c.uncertainty else "not stated"),
-            escape(c.meaning),
-            source_link(c.source),
-            f"`{c.provenance}`",
+def _constant_rows(names: Iterable[str]) -> str:
+    every = constants()
+    rows = []
+    for name in names:
+        c = every[name]
+        sure = "exact by definition" if c.exact else f"± {c.uncertainty:g}" if c.uncertainty else "not stated"
+        rows.append(
+            (
+                f"[`{name}`]{{#constant-{name.lower()}}}",
+                math(c.symbol),
+                f"{float(c):.10g} {'' if c.unit == '1' else c.unit}",
+                sure,
+                escape(c.meaning),
+                source_link(c.source),
+                f"`{c.provenance}`",
+            )
         )
-        for name, c in CONSTANTS.items()
-    ]
+    return table(("name", "symbol", "value", "uncertainty", "meaning", "source", "provenance"), rows)
+
+
+def _constants() -> str:
+    coefficients = [name for name in constants() if name not in CONSTANTS]
     air = [
         (
             f"`{name}`",
@@ -108,7 +117,9 @@ def _constants() -> str:
         "Constants",
         "Each with its value, source and provenance; derived ones are computed from these. What the "
         "provenance words mean stands in [Conventions](#provenance-words).",
-        table(("name", "symbol", "value", "uncertainty", "meaning", "source", "provenance"), rows),
+        _constant_rows(CONSTANTS),
+        "## Coefficients of single equations",
+        _constant_rows(coefficients) if coefficients else "None.",
         "## Dry air\n\n"
         '`Gas.parse("air")` is the trade\'s air, O2 0.21 and N2 0.79, as dose tables and decompression sets '
         "mean it. `Gas.dry_air(standard)` is atmospheric air with argon as its own gas; nitrogen is the "

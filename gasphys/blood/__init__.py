@@ -2,5 +2,17 @@
 
 from __future__ import annotations
 
-from gasphys.blood.oxygen import *  # noqa: F403
+from gasphys.blood import carbon_dioxide, carbon_monoxide, inert_gas, krogh, oxygen
 from gasphys.blood.carbon_dioxide import *  # noqa: F403
+from gasphys.blood.carbon_monoxide import *  # noqa: F403
+from gasphys.blood.inert_gas import *  # noqa: F403
+from gasphys.blood.krogh import *  # noqa: F403
+from gasphys.blood.oxygen import *  # noqa: F403
+
+__all__ = [
+    *oxygen.__all__,
+    *carbon_dioxide.__all__,
+    *carbon_monoxide.__all__,
+    *inert_gas.__all__,
+    *krogh.__all__,
+]

@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import functools
 from typing import Any
+
+import numpy as np
 
 from gasphys.constants import CO2_PLASMA_SOLUBILITY, MMHG, PK_CO2
 from gasphys.equation import EquationFunction, Value, choice, formula, inverse
 from gasphys.maths import exp, log, log10
+from gasphys.quantities import quantity
 
 __all__ = [
     "base_excess",
@@ -209,9 +213,7 @@ def co2_content(
     source="lang_zander_2002",
     provenance="read",
 )
-def base_excess(
-    pco2: Value, ph: Value, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97
-) -> Value:
+def base_excess(pco2: Value, ph: Value, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97) -> Value:
     """Base excess of blood, Lang & Zander 2002.
 
     Notes
@@ -229,9 +231,6 @@ def base_excess(
     carbonate = 0.0304 * pco2 / MMHG * exp(log(10) * (ph - 6.1)) - 24.26
     return (1.0 - 0.0143 * hemoglobin) * (carbonate + buffers) - 0.2 * hemoglobin * (1.0 - o2_saturation)
 
-
-#: The same equation under a name that no argument hides.
-_base_excess = base_excess
 
 ph_at_base_excess = inverse(
     base_excess,
@@ -253,30 +252,42 @@ Examples
 )
 
 
-@formula(
-    result="buffered_pco2",
+def _linear(wanted: Any, ph: Any, hemoglobin: Any, o2_saturation: Any) -> Any:
+    """PCO2 of a base excess: the equation is linear in it, so that two evaluations tell."""
+    at_zero = base_excess.raw(0.0, ph, hemoglobin, o2_saturation)
+    for_each = base_excess.raw(1.0, ph, hemoglobin, o2_saturation) - at_zero
+    return (wanted - at_zero) / for_each
+
+
+def _linear_within(wanted: Any, *state: Any) -> Any:
+    low, high = quantity("pco2").possible
+    found = _linear(wanted, *state)
+    return np.where((found >= low) & (found <= high), found, np.nan)
+
+
+_buffered = functools.partial(
+    inverse,
+    base_excess,
+    "pco2",
+    module=__name__,
     valid={"base_excess": (-30.0, 30.0)},
-    source="lang_zander_2002",
-    provenance="read",
-    check_result=True,
+    result="buffered_pco2",
+    doc="""PCO2 of blood of a base excess at a pH.
+
+Notes
+-----
+The inverse of :func:`base_excess`, exact because that is linear in PCO2.
+
+Examples
+--------
+>>> round(pco2_at_base_excess(0.0, 7.4, 15.0, 1.0) / 0.1333224, 1)
+40.0
+""",
 )
-def pco2_at_base_excess(
-    base_excess: Value, ph: Value, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97
-) -> Value:
-    """PCO2 of blood of a base excess at a pH.
+pco2_at_base_excess = _buffered(name="pco2_at_base_excess", kernel=_linear_within)
 
-    Notes
-    -----
-    The equation of Lang & Zander is linear in PCO2, so that two evaluations of it give the answer.
-
-    Examples
-    --------
-    >>> round(pco2_at_base_excess(0.0, 7.4, 15.0, 1.0) / 0.1333224, 1)
-    40.0
-    """
-    at_zero = _base_excess(0.0, ph, hemoglobin, o2_saturation)
-    for_each = _base_excess(1.0, ph, hemoglobin, o2_saturation) - at_zero
-    return (base_excess - at_zero) / for_each
+#: The same without bounds: a search may look where there is no PCO2 and turn back.
+_pco2_at_base_excess = _buffered(name="unbounded_pco2_at_base_excess", kernel=_linear, register=False)
 
 
 @formula(
@@ -290,7 +301,7 @@ def content_of_buffered_blood(
     ph: Value, base_excess: Value = 0.0, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97
 ) -> Value:
     """CO2 content of blood of a base excess at a pH, which fixes its PCO2."""
-    pco2 = pco2_at_base_excess(base_excess, ph, hemoglobin, o2_saturation)
+    pco2 = _pco2_at_base_excess(base_excess, ph, hemoglobin, o2_saturation)
     return douglas_1988(pco2, ph, hemoglobin, o2_saturation, 37.0)
 
 
@@ -317,6 +328,7 @@ Examples
     result="pco2",
     source=("douglas_1988", "kelman_1967", "lang_zander_2002"),
     provenance="secondary",
+    check_result=True,
 )
 def pco2_at_co2_content(
     co2_content: Value, base_excess: Value = 0.0, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97
@@ -340,6 +352,7 @@ def pco2_at_co2_content(
     result="venous_pco2",
     source=("douglas_1988", "kelman_1967", "lang_zander_2002"),
     provenance="secondary",
+    check_result=True,
 )
 def venous_pco2(
     arterial_pco2: Value,
@@ -372,6 +385,7 @@ def venous_pco2(
     result="haldane_penalty",
     source=("douglas_1988", "kelman_1967", "lang_zander_2002"),
     provenance="secondary",
+    check_result=True,
 )
 def haldane_penalty(
     arterial_pco2: Value,

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gasphys.constants import ATMOSPHERE, HUEFNER, MMHG, O2_SOLUBILITY
+from gasphys.constants import HUEFNER, MMHG, O2_SOLUBILITY
 from gasphys.equation import EquationFunction, Value, choice, formula, inverse
 from gasphys.maths import exp, find_root, log, log10, where
 
@@ -23,7 +23,6 @@ __all__ = [
     "o2_extraction",
     "o2_saturation",
     "p50",
-    "p50_under_pressure",
     "po2_at_content",
     "po2_at_saturation",
     "po2_for_dissolved_o2",
@@ -37,8 +36,8 @@ Array = NDArray[np.float64]
 #: text "10 mmHg" on the flagged side.
 _KELMAN_FLOOR = 10.0 * float(MMHG) * (1.0 + 1e-12)
 
-_curve: Any = functools.partial(formula, result="o2_saturation", register=False)
-_content: Any = functools.partial(formula, result="o2_content", register=False)
+_curve = functools.partial(formula, result="o2_saturation", register=False)
+_content = functools.partial(formula, result="o2_content", register=False)
 
 # ---------------------------------------------------------------------------------------------
 # Severinghaus 1979
@@ -90,9 +89,7 @@ def severinghaus_temperature_coefficient(po2: Value) -> Value:
 def severinghaus_virtual_po2(po2: Value, ph: Value = 7.4, temperature: Value = 37.0) -> Value:
     """PO2 that gives the same saturation at pH 7.40 and 37 degC, Severinghaus 1979."""
     return (
-        po2
-        * exp(log(10) * 0.024 * (37.0 - temperature))
-        * exp(severinghaus_ph_coefficient(po2) * (7.4 - ph))
+        po2 * exp(log(10) * 0.024 * (37.0 - temperature)) * exp(severinghaus_ph_coefficient(po2) * (7.4 - ph))
     )
 
 
@@ -126,13 +123,10 @@ def severinghaus_1979(po2: Value, ph: Value = 7.4, temperature: Value = 37.0) ->
 
 
 @formula(result="virtual_po2", source="kelman_1966", provenance="secondary", register=False)
-def kelman_virtual_po2(
-    po2: Value, ph: Value = 7.4, temperature: Value = 37.0, pco2: Value = 5.333
-) -> Value:
+def kelman_virtual_po2(po2: Value, ph: Value = 7.4, temperature: Value = 37.0, pco2: Value = 5.333) -> Value:
     """PO2 that gives the same saturation at pH 7.40, 37 degC and PCO2 40 mmHg, Kelman 1966."""
     return po2 * exp(
-        log(10)
-        * (0.024 * (37.0 - temperature) + 0.40 * (ph - 7.4) + 0.06 * log10(40.0 * MMHG / pco2))
+        log(10) * (0.024 * (37.0 - temperature) + 0.40 * (ph - 7.4) + 0.06 * log10(40.0 * MMHG / pco2))
     )
 
 
@@ -248,9 +242,7 @@ def dash_bassingthwaighte_2016(
 @formula(
     result="siggaard_andersen_acidity", source="siggaard_andersen_1984", provenance="read", register=False
 )
-def siggaard_andersen_acidity(
-    ph: Value = 7.4, base_excess: Value = 0.0, dpg_excess: Value = 0.0
-) -> Value:
+def siggaard_andersen_acidity(ph: Value = 7.4, base_excess: Value = 0.0, dpg_excess: Value = 0.0) -> Value:
     """Shift of Siggaard-Andersen's curve by pH, base excess and DPG, its a."""
     return 1.04 * (7.4 - ph) + 0.005 * base_excess + 0.07 * dpg_excess
 
@@ -258,9 +250,7 @@ def siggaard_andersen_acidity(
 @formula(
     result="siggaard_andersen_center", source="siggaard_andersen_1984", provenance="read", register=False
 )
-def siggaard_andersen_center(
-    temperature: Value = 37.0, siggaard_andersen_acidity: Value = 0.0
-) -> Value:
+def siggaard_andersen_center(temperature: Value = 37.0, siggaard_andersen_acidity: Value = 0.0) -> Value:
     """PO2 at the point of symmetry of Siggaard-Andersen's curve, exp(x0)."""
     return exp(1.946 + siggaard_andersen_acidity + 0.055 * (temperature - 37.0))
 
@@ -584,7 +574,7 @@ def _content_kernel(forward: EquationFunction) -> Callable[..., Array]:
         width = nodes[1]
         po2_rise, slope_rise = np.diff(po2, append=po2[-1]), np.diff(slope, append=slope[-1])
 
-        def solve(content: Array) -> Array:
+        def solve(content: Array) -> Any:
             place = np.cbrt(content) / width
             cell = place.astype(np.intp)
             place -= cell
@@ -655,24 +645,41 @@ def po2_at_saturation(
     """
 
 
-_P50: dict[str, EquationFunction] = {
-    name: inverse(
-        curve,
-        "po2",
-        name="p50",
-        module=__name__,
-        given_default=0.5,
-        kernel=_saturation_kernel(curve),
-        result="p50",
-        doc="PO2 at which half of the hemoglobin carries O2, found from the curve.",
-        register=False,
-    )
-    for name, curve in CURVES.items()
-    if curve is not hill  # which takes it as an argument
-}
+_half = functools.partial(formula, result="p50", register=False)
+_severinghaus_po2 = _PO2_AT_SATURATION["severinghaus_1979"]
+_kelman_po2 = _PO2_AT_SATURATION["kelman_1966"]
+_siggaard_andersen_po2 = _PO2_AT_SATURATION["siggaard_andersen_1984"]
 
 
-@choice(option="model", registry=_P50)
+@_half(source="severinghaus_1979", provenance="read")
+def severinghaus_p50(ph: Value = 7.4, temperature: Value = 37.0) -> Value:
+    """P50 of Severinghaus 1979, found from the curve."""
+    return _severinghaus_po2(0.5, ph, temperature)
+
+
+@_half(source="kelman_1966", provenance="secondary")
+def kelman_p50(ph: Value = 7.4, temperature: Value = 37.0, pco2: Value = 5.333) -> Value:
+    """P50 of Kelman 1966, found from the curve."""
+    return _kelman_po2(0.5, ph, temperature, pco2)
+
+
+@_half(source="siggaard_andersen_1984", provenance="read")
+def siggaard_andersen_p50(
+    ph: Value = 7.4, temperature: Value = 37.0, base_excess: Value = 0.0, dpg_excess: Value = 0.0
+) -> Value:
+    """P50 of Siggaard-Andersen 1984, found from the curve."""
+    return _siggaard_andersen_po2(0.5, ph, temperature, base_excess, dpg_excess)
+
+
+@choice(
+    option="model",
+    registry={
+        "severinghaus_1979": severinghaus_p50,
+        "kelman_1966": kelman_p50,
+        "dash_bassingthwaighte_2016": dash_p50,
+        "siggaard_andersen_1984": siggaard_andersen_p50,
+    },
+)
 def p50(
     model: str = "severinghaus_1979",
     ph: Value = 7.4,
@@ -681,13 +688,12 @@ def p50(
     *,
     base_excess: Value = 0.0,
     dpg_excess: Value = 0.0,
-    o2_saturation: Value = 0.5,
 ) -> Value:
     """PO2 at which half of the hemoglobin carries O2.
 
     Notes
     -----
-    ``o2_saturation`` is 0.5 by definition.
+    By the curve named, in the state of the blood. Hill's equation takes its P50 as given.
 
     Examples
     --------
@@ -770,6 +776,10 @@ Examples
 def dissolved_o2_share(po2: Value, o2_content: Value) -> Value:
     """Share of the O2 content that is in solution.
 
+    Notes
+    -----
+    1.5 % in arterial blood on air at the surface, about a fifth on O2 at 2.5 atm.
+
     Examples
     --------
     >>> round(dissolved_o2_share("1800 mmHg", 25.7), 3)
@@ -779,7 +789,7 @@ def dissolved_o2_share(po2: Value, o2_content: Value) -> Value:
 
 
 # ---------------------------------------------------------------------------------------------
-# Flow, and pressure itself
+# Flow
 
 
 @formula(result="o2_delivery_stpd", source="fick_1870", provenance="secondary")
@@ -803,6 +813,10 @@ def o2_delivery(cardiac_output: Value, arterial_o2_content: Value) -> Value:
 def arteriovenous_o2_difference(o2_uptake_stpd: Value, cardiac_output: Value) -> Value:
     """Arterial minus mixed venous O2 content by Fick's principle.
 
+    Notes
+    -----
+    O2 uptake over cardiac output: about 5 mL/dL at rest. Mixed venous, of the whole body.
+
     Examples
     --------
     >>> arteriovenous_o2_difference(0.25, 5.0)
@@ -821,35 +835,14 @@ def arteriovenous_o2_difference(o2_uptake_stpd: Value, cardiac_output: Value) ->
 def o2_extraction(arteriovenous_difference: Value, arterial_o2_content: Value) -> Value:
     """Share of the O2 delivered that the tissues take.
 
+    Notes
+    -----
+    Arteriovenous difference over arterial content, about a quarter at rest. Of the whole body: single
+    organs take from a tenth (kidney) to two thirds (heart).
+
     Examples
     --------
     >>> o2_extraction(5.0, 20.0)
     0.25
     """
     return arteriovenous_difference / arterial_o2_content
-
-
-@formula(
-    result="p50",
-    quantities={"standard_p50": "p50"},
-    valid={"ambient_pressure": (101.325, 12767.0)},
-    source="reeves_morin_1986",
-    provenance="read",
-)
-def p50_under_pressure(
-    standard_p50: Value, ambient_pressure: Value, p50_pressure_slope: Value = 0.0
-) -> Value:
-    """P50 at an ambient pressure, with the caller's slope.
-
-    Notes
-    -----
-    High hydrostatic pressure lowers P50 slightly and linearly, in N2 as in He, with the CO2 Bohr effect
-    unchanged (Reeves & Morin, 1 to 126 atm). No size is offered as a default: at treatment pressure
-    the change is far below the spread between the curves, it matters beyond some 20 atm.
-
-    Examples
-    --------
-    >>> p50_under_pressure(3.57, 303.975)
-    3.57
-    """
-    return standard_p50 + p50_pressure_slope * (ambient_pressure - ATMOSPHERE)

@@ -10,7 +10,10 @@ __all__ = ["arterial_po2_from_ratio"]
 @formula(
     result="arterial_po2",
     quantities={"ratio": "arterial_alveolar_ratio"},
-    valid={"ratio": (0.75, 1.0), "alveolar_po2": (0.0, 266.6448)},
+    valid={
+        "ratio": (0.75, 1.0, "below it the ratio found at 1 atm did not carry over (Weaver & Howe 1994)"),
+        "alveolar_po2": (0.0, 333.306),
+    },
     source=("gilbert_keighley_1974", "paganini_review"),
     provenance="memory_high",
 )

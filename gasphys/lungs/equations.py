@@ -164,9 +164,7 @@ def alveolar_po2(
     """
     dry = ambient_pressure - water_vapor_pressure
     o2 = (
-        respiratory_exchange_ratio * fio2 * (dry - alveolar_pco2)
-        - alveolar_pco2 * (1.0 - fio2)
-        + fico2 * dry
+        respiratory_exchange_ratio * fio2 * (dry - alveolar_pco2) - alveolar_pco2 * (1.0 - fio2) + fico2 * dry
     )
     return o2 / (respiratory_exchange_ratio * (1.0 - fico2) + fico2)
 
@@ -185,14 +183,10 @@ def alveolar_pco2(co2_output_stpd: Value, alveolar_ventilation_btps: Value) -> V
     >>> round(alveolar_pco2(0.2, 4.3), 2)
     5.35
     """
-    return (
-        ATMOSPHERE * BODY_TEMPERATURE / ZERO_CELSIUS * co2_output_stpd / alveolar_ventilation_btps
-    )
+    return ATMOSPHERE * BODY_TEMPERATURE / ZERO_CELSIUS * co2_output_stpd / alveolar_ventilation_btps
 
 
-@formula(
-    result="alveolar_pn2", source="dalton_1802", provenance="read", check_result=True
-)
+@formula(result="alveolar_pn2", source="dalton_1802", provenance="read", check_result=True)
 def alveolar_pn2(
     ambient_pressure: Value,
     alveolar_po2: Value,

@@ -56,9 +56,7 @@ def exercise_o2_uptake() -> xr.Dataset:
         return np.array([float(row[name] or "nan") for row in rows])
 
     keys = [row["source"] for row in rows]
-    variables = {
-        name: ("task", column(name), attributes(quantity)) for name, quantity in _COLUMNS.items()
-    }
+    variables = {name: ("task", column(name), attributes(quantity)) for name, quantity in _COLUMNS.items()}
     return xr.Dataset(
         {
             **variables,

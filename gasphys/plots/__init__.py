@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from gasphys.plots.course import course_figure
 from gasphys.plots.exposure import exposure_figure
+from gasphys.plots.oxygen_cascade import oxygen_cascade_figure
 from gasphys.plots.style import save_figure
 
-__all__ = ["exposure_figure", "save_figure"]
+__all__ = ["course_figure", "exposure_figure", "oxygen_cascade_figure", "save_figure"]

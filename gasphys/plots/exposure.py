@@ -10,7 +10,7 @@ import xarray as xr
 from gasphys.errors import ExposureError
 from gasphys.exposure import Exposure
 from gasphys.plots.style import ACCENT, HATCH, INK, WORDS, caution_line, new_figure, tidy
-from gasphys.report import Units
+from gasphys.report import Units, minutes_text
 from gasphys.units import convert
 
 __all__ = ["exposure_figure"]
@@ -148,10 +148,10 @@ def _draw_lanes(axes: Any, lanes: list[tuple[str, float, float]]) -> None:
     end = axes.get_xlim()[1]
     for k, (label, first, minutes) in enumerate(lanes):
         level = len(lanes) - k
-        left = first < 0.45 * end
+        left = first < 0.36 * end
         axes.plot([first], [level], marker="|", markersize=9, color=INK, markeredgewidth=2)
         text = axes.annotate(
-            f"{label}, first beyond at {first:.1f} min, {minutes:.1f} min in all",
+            f"{label}: beyond from {first:.1f} min, {minutes_text(minutes)} in all",
             (first, level),
             xytext=(6 if left else -6, 0),
             textcoords="offset points",

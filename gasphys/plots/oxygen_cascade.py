@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from typing import Any
 
 import numpy as np
@@ -14,14 +15,22 @@ from gasphys.units import convert
 
 __all__ = ["OxygenCascade", "oxygen_cascade_figure"]
 
-#: Variable to word, color, width and dashes of its line, from the gas to the blood.
-_LINES: dict[str, tuple[str, str, float, Any]] = {
-    "inspired_po2": ("inspired, moist", INK, 0.9, (0, (6, 3))),
-    "alveolar_po2": ("alveolar", INK, 1.5, "-"),
-    "arterial_po2": ("arterial", ACCENT, 3.0, "-"),
-}
+#: Variable to word, color, width and dashes of its line: upper axes, lower axes.
+_LINES: tuple[dict[str, tuple[str, str, float, Any]], ...] = (
+    {
+        "inspired_po2": ("inspired, moist", INK, 0.9, (0, (6, 3))),
+        "alveolar_po2": ("alveolar", INK, 1.5, "-"),
+        "arterial_po2": ("arterial", ACCENT, 3.0, "-"),
+    },
+    {
+        "arterial_o2_content": ("carried in all", INK, 1.5, "-"),
+        "arterial_dissolved_o2": ("dissolved", ACCENT, 3.0, "-"),
+    },
+)
 #: Where the equation is outside the range it was made for.
 _DOTS: Any = (0, (1, 1.6))
+#: Where the value at the mark stands, from its point [points].
+_UNDER, _OVER = -13, 5
 
 
 class OxygenCascade:
@@ -31,6 +40,8 @@ class OxygenCascade:
     ----------
     figure : matplotlib.figure.Figure
         An empty figure.
+    below : float
+        Room under the axes for a line of text [share of the height].
 
     Examples
     --------
@@ -39,7 +50,7 @@ class OxygenCascade:
     2
     """
 
-    def __init__(self, figure: Any) -> None:
+    def __init__(self, figure: Any, below: float = 0.0) -> None:
         self.figure = figure
         # Fixed margins: nothing but the data moves between two pictures.
         figure.set_layout_engine("none")
@@ -48,35 +59,30 @@ class OxygenCascade:
             1,
             sharex=True,
             gridspec_kw={
-                "height_ratios": [2.4, 1.0],
+                "height_ratios": [1.9, 1.0],
                 "left": 0.1,
                 "right": 0.83,
                 "top": 0.93,
-                "bottom": 0.17,
+                "bottom": 0.12 + below,
                 "hspace": 0.12,
             },
         )
         self.upper, self.lower = upper, lower
-        for axes in (upper, lower):
+        self.lines: dict[str, tuple[Any, Any]] = {}
+        self.labels: dict[str, Any] = {}
+        for axes, lines in zip((upper, lower), _LINES, strict=True):
             tidy(axes)
-        self.lines = {name: _pair(upper, color, width, dash) for name, (_, color, width, dash) in _LINES.items()}
-        self.lines["arterial_dissolved_o2"] = _pair(lower, ACCENT, 3.0, "-")
-        self.labels = {
-            name: axes.text(
-                1.015,
-                0.0,
-                word,
-                transform=axes.get_yaxis_transform(),
-                fontsize=9,
-                color=color,
-                va="center",
-                clip_on=False,
-            )
-            for axes, name, word, color in [
-                *((upper, name, word, color) for name, (word, color, _, _) in _LINES.items()),
-                (lower, "arterial_dissolved_o2", "dissolved", ACCENT),
-            ]
-        }
+            for name, (word, color, width, dash) in lines.items():
+                self.lines[name] = _pair(axes, color, width, dash)
+                self.labels[name] = axes.text(
+                    1.015,
+                    0.0,
+                    word,
+                    transform=axes.get_yaxis_transform(),
+                    fontsize=9,
+                    color=color,
+                    va="center",
+                )
         self.marks = [axes.axvline(0.0, color=INK, linewidth=0.8) for axes in (upper, lower)]
         self.dots = {
             name: line[0].axes.plot([], [], "o", color=line[0].get_color(), markersize=5, zorder=5)[0]
@@ -89,14 +95,15 @@ class OxygenCascade:
             name: self.lines[name][0].axes.annotate(
                 "",
                 (0.0, 0.0),
-                xytext=(5, -5),
+                xytext=(5, 0),
                 textcoords="offset points",
                 fontsize=9,
                 color=ACCENT,
-                va="top",
+                va=side,
                 bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5},
             )
-            for name in ("arterial_po2", "arterial_dissolved_o2")
+            # Where no other line runs: under the lowest one, or over the one near the axis.
+            for name, side in (("arterial_po2", "top"), ("arterial_dissolved_o2", "bottom"))
         }
 
     def update(self, ds: xr.Dataset, at: float, *, pressure_unit: str = "atm", po2_unit: str = "kPa") -> None:
@@ -105,9 +112,10 @@ class OxygenCascade:
         Parameters
         ----------
         ds : Dataset
-            Along one dimension: ``ambient_pressure``, ``inspired_po2``, ``alveolar_po2``,
-            ``arterial_po2`` and ``arterial_dissolved_o2``; where it holds ``arterial_po2_valid``,
-            the line is dotted where that is 0.
+            Along one dimension, as :func:`gasphys.gas_exchange.oxygenation` names them:
+            ``ambient_pressure``, ``inspired_po2``, ``alveolar_po2``, ``arterial_po2``,
+            ``arterial_o2_content``, ``arterial_dissolved_o2``. Where it holds
+            ``arterial_po2_valid``, arterial lines are dotted where that is 0.
         at : float
             Ambient pressure marked, one of the dataset's own [kPa absolute].
         pressure_unit, po2_unit : str
@@ -147,26 +155,31 @@ class OxygenCascade:
             highest[name] = float(np.nanmax(y, initial=0.0))
             self.labels[name].set_y(float(y[-1]))
             if name in self.values:
+                late = x[index] > x[0] + 0.88 * (x[-1] - x[0])
                 self.values[name].xy = (x[index], y[index])
                 self.values[name].set_text(_short(float(y[index])))
-        top = max(highest[name] for name in _LINES)
-        self.upper.set_ylim(0.0, 1.06 * top or 1.0)
-        self.lower.set_ylim(0.0, 1.12 * highest["arterial_dissolved_o2"] or 1.0)
+                self.values[name].set_ha("right" if late else "left")
+                self.values[name].set_position(
+                    (-5 if late else 5, _UNDER if name == "arterial_po2" else _OVER)
+                )
+        for axes, lines, gap in zip((self.upper, self.lower), _LINES, (0.08, 0.15), strict=True):
+            top = max(highest[name] for name in lines) or 1.0
+            axes.set_ylim(0.0, 1.06 * top)
+            self._spread(list(lines), gap * top)
         self.upper.set_xlim(float(x[0]), float(x[-1]))
-        self._spread(0.075 * top)
         for mark in self.marks:
             mark.set_xdata([x[index], x[index]])
         self.at.set_x(x[index])
         self.at.set_text(f"{_short(float(x[index]))} {pressure_unit}")
         self.upper.set_ylabel(f"PO2, {po2_unit}", fontsize=9)
-        self.lower.set_ylabel(f"dissolved O2,\n{quantity('arterial_dissolved_o2').unit}", fontsize=9)
+        self.lower.set_ylabel(f"O2 in blood, {quantity('arterial_o2_content').unit}", fontsize=9)
         self.lower.set_xlabel(f"{quantity('ambient_pressure').long_name}, {pressure_unit}", fontsize=9)
         self.figure.align_ylabels()
 
-    def _spread(self, gap: float) -> None:
+    def _spread(self, names: list[str], gap: float) -> None:
         """Move labels apart that would cover each other, the lowest line's label staying lowest."""
-        names = sorted(_LINES, key=lambda name: float(self.labels[name].get_position()[1]))
-        for below, above in zip(names, names[1:], strict=False):
+        names = sorted(names, key=lambda name: float(self.labels[name].get_position()[1]))
+        for below, above in itertools.pairwise(names):
             floor = float(self.labels[below].get_position()[1]) + gap
             self.labels[above].set_y(max(float(self.labels[above].get_position()[1]), floor))
 
@@ -190,7 +203,9 @@ def _short(value: float) -> str:
     return np.format_float_positional(value, precision=3, fractional=False, trim="-")
 
 
-def oxygen_cascade_figure(ds: xr.Dataset, at: float, *, pressure_unit: str = "atm", po2_unit: str = "kPa") -> Any:
+def oxygen_cascade_figure(
+    ds: xr.Dataset, at: float, *, pressure_unit: str = "atm", po2_unit: str = "kPa"
+) -> Any:
     """Draw inspired, alveolar and arterial PO2 and dissolved O2 against ambient pressure.
 
     Parameters
@@ -227,6 +242,6 @@ def oxygen_cascade_figure(ds: xr.Dataset, at: float, *, pressure_unit: str = "at
     2
     """
     figure = new_figure(7.4, 4.8)
-    OxygenCascade(figure).update(ds, at, pressure_unit=pressure_unit, po2_unit=po2_unit)
+    OxygenCascade(figure, below=0.05).update(ds, at, pressure_unit=pressure_unit, po2_unit=po2_unit)
     caution_line(figure)
     return figure

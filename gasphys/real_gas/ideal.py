@@ -20,7 +20,7 @@ from gasphys.equation import Value, formula, inverse
 __all__ = ["ideal_density", "ideal_pressure", "mixture_molar_mass"]
 
 
-@formula(result="molar_mass", source="ciaaw", provenance="computed", register=False, stands=True)
+@formula(result="molar_mass", source="ciaaw", provenance="computed", stands=True)
 def mixture_molar_mass(
     oxygen: Value,
     nitrogen: Value,

@@ -45,7 +45,8 @@ def _judged(method: str) -> Callable[[Mapping[str, Any]], dict[str, str]]:
 
     def judge(inputs: Mapping[str, Any]) -> dict[str, str]:
         rows = data("transport")["gas"]
-        return {"provenance": weakest([method, *(rows[g]["word"] for g in present_gases(inputs))])}
+        present = [g for g, x in present_gases(inputs).items() if x > 1e-4]
+        return {"provenance": weakest([method, *(rows[g]["word"] for g in present)])}
 
     return judge
 
@@ -217,9 +218,10 @@ def wilke_mean(
 
     Notes
     -----
-    sum_i x_i q_i/sum_j x_j phi_ij, phi_ij = [1 + (mu_i/mu_j)^(1/2) (M_j/M_i)^(1/4)]^2/[8 (1 + M_i/M_j)]^(1/2).
-    The quarter power has M_j/M_i, the denominator M_i/M_j: inverted, air is hardly wrong, heliox 3 %. With
-    a = mu^(1/2)/M^(1/4) the sum over j is w_j (a_i + a_j)^2/[8 (M_i + M_j)]^(1/2), w_j = x_j M_j/mu_j: the same,
+    sum_i x_i q_i/sum_j x_j phi_ij with
+    phi_ij = [1 + (mu_i/mu_j)^(1/2) (M_j/M_i)^(1/4)]^2/[8 (1 + M_i/M_j)]^(1/2). The quarter power has
+    M_j/M_i, the denominator M_i/M_j: inverted, air is hardly wrong, heliox 3 %. Written here with
+    a = mu^(1/2)/M^(1/4) and w_j = x_j M_j/mu_j as sum_j w_j (a_i + a_j)^2/[8 (M_i + M_j)]^(1/2): the same,
     symmetric but for the weights, and regular where a gas is absent.
     """
     a_o2 = sqrt(mu_o2 / sqrt(MOLAR_MASS_O2))

@@ -180,7 +180,6 @@ TOLERANCE_RELATIVE_2 = _tolerance("relative", 2, "1")
     result="second_virial",
     valid=WARM | TRACE,
     refuse=REFUSE,
-    register=False,
     stands=True,
     judged=judged,
     **VIRIAL,
@@ -249,7 +248,7 @@ def second_virial(
     )
 
 
-@formula(result="third_virial", valid=WARM | TRACE, refuse=REFUSE, register=False, stands=True, **VIRIAL)
+@formula(result="third_virial", valid=WARM | TRACE, refuse=REFUSE, stands=True, **VIRIAL)
 def third_virial(
     oxygen: Value,
     nitrogen: Value,
@@ -284,7 +283,7 @@ def third_virial(
     return root * root * root
 
 
-@formula(result="fourth_virial", valid=TRACE, register=False, stands=True, **VIRIAL)
+@formula(result="fourth_virial", stands=True, **VIRIAL)
 def fourth_virial(
     oxygen: Value,
     nitrogen: Value,
@@ -292,18 +291,17 @@ def fourth_virial(
     argon: Value,
     hydrogen: Value,
     neon: Value,
-    carbon_dioxide: Value,
 ) -> Value:
     """Fourth coefficient of the series, effective, of a mixture.
 
     Notes
     -----
     D = (sum_i x_i D_i^(1/4))^4, without dependence on temperature. Fitted together with E; not a true
-    virial coefficient. Carbon dioxide, a trace, has none.
+    virial coefficient. Carbon dioxide, a trace, has none, nor E.
 
     Examples
     --------
-    >>> round(fourth_virial(0.2096, 0.7812, 0.0, 0.0092, 0.0, 0.0, 0.0), 0)
+    >>> round(fourth_virial(0.2096, 0.7812, 0.0, 0.0092, 0.0, 0.0), 0)
     5459.0
     """
     root = (
@@ -313,13 +311,12 @@ def fourth_virial(
         + argon * ROOT_D_AR
         + hydrogen * ROOT_D_H2
         + neon * ROOT_D_NE
-        + 0.0 * carbon_dioxide
     )
     square = root * root
     return square * square
 
 
-@formula(result="fifth_virial", valid=WARM | TRACE, refuse=REFUSE, register=False, stands=True, **VIRIAL)
+@formula(result="fifth_virial", valid=WARM | TRACE, refuse=REFUSE, stands=True, **VIRIAL)
 def fifth_virial(
     oxygen: Value,
     nitrogen: Value,
@@ -357,7 +354,7 @@ def virial_series(
     return 1.0 + c * (second_virial + c * (third_virial + c * (fourth_virial + c * fifth_virial)))
 
 
-@formula(result="virial_slope", register=False, **VIRIAL)
+@formula(result="virial_slope", register=False, stands=True, **VIRIAL)
 def virial_stiffness(
     molar_density: Value, second_virial: Value, third_virial: Value, fourth_virial: Value, fifth_virial: Value
 ) -> Value:
@@ -403,7 +400,7 @@ def virial_pressure(
             molar_density,
             second_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide, temperature),
             third_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide, temperature),
-            fourth_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide),
+            fourth_virial(oxygen, nitrogen, helium, argon, hydrogen, neon),
             fifth_virial(oxygen, nitrogen, argon, temperature),
         )
     )
@@ -417,7 +414,7 @@ def virial_root(ambient_pressure: Any, *rest: Any) -> Any:
     series = (
         second_virial.raw(*fractions, temperature),
         third_virial.raw(*fractions, temperature),
-        fourth_virial.raw(*fractions),
+        fourth_virial.raw(*fractions[:-1]),
         fifth_virial.raw(oxygen, nitrogen, argon, temperature),
     )
     ideal = ambient_pressure / thermal
@@ -495,6 +492,6 @@ def virial_uncertainty(
         molar_density,
         second_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide, temperature),
         third_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide, temperature),
-        fourth_virial(oxygen, nitrogen, helium, argon, hydrogen, neon, carbon_dioxide),
+        fourth_virial(oxygen, nitrogen, helium, argon, hydrogen, neon),
         fifth_virial(oxygen, nitrogen, argon, temperature),
     )

@@ -113,8 +113,8 @@ class Number:
 
         Examples
         --------
-        >>> Number("arterial_pco2").read("39 mmHg", "kPa")
-        5.199573...
+        >>> round(Number("arterial_pco2").read("39 mmHg", "kPa"), 3)
+        5.2
         """
         number, given = parse_quantity(text)
         value = float(self.quantity.from_unit(number, given or unit))
@@ -170,6 +170,30 @@ class Number:
         high = math.ceil(high / step - 1e-9) * step
         return round(low, 9), round(high, 9), round(step, 9)
 
+    def place(self, value: float, unit: str) -> float:
+        """Return the place of the slider that is nearest to a value.
+
+        Parameters
+        ----------
+        value : float
+            In the canonical unit.
+        unit : str
+            Unit shown.
+
+        Returns
+        -------
+        float
+            A whole number of steps from the lower end, within the ends.
+
+        Examples
+        --------
+        >>> Number("hemoglobin").place(12.9, "g/dL")
+        13.0
+        """
+        low, high, step = self.span(unit)
+        steps = round((float(convert(value, self.quantity.unit, unit)) - low) / step)
+        return min(max(round(low + steps * step, 9), low), high)
+
 
 @dataclass(frozen=True)
 class Name:
@@ -194,11 +218,42 @@ class Name:
     units: tuple[str, ...] = ()
 
     def read(self, text: str, unit: str) -> str:
-        """Return the name meant by what was typed."""
+        """Return the name meant by what was typed.
+
+        Parameters
+        ----------
+        text : str
+            What was typed.
+        unit : str
+            Not used.
+
+        Returns
+        -------
+        str
+            The name.
+
+        Raises
+        ------
+        GasphysError
+            If there is no such name.
+        """
         return self.reads(text)
 
     def show(self, value: str, unit: str) -> str:
-        """Return the name as the blank shows it."""
+        """Return the name as the blank shows it.
+
+        Parameters
+        ----------
+        value : str
+            The name.
+        unit : str
+            Not used.
+
+        Returns
+        -------
+        str
+            The same.
+        """
         return value
 
 
@@ -206,7 +261,7 @@ class App:
     """One question as a sentence with blanks, a computed answer and a picture.
 
     A concrete app sets :attr:`sentence`, :attr:`blanks` and :attr:`name`, and writes
-    :meth:`compute`, :meth:`draw`, :meth:`answer` and :meth:`lines`.
+    :meth:`compute`, :meth:`draw`, :meth:`figure`, :meth:`answer` and :meth:`lines`.
 
     Parameters
     ----------
@@ -316,27 +371,97 @@ class App:
     # -- what a concrete app writes ----------------------------------------------------------
 
     def compute(self) -> xr.Dataset:
-        """Return the dataset of :attr:`params`."""
+        """Return the dataset of :attr:`params`.
+
+        Returns
+        -------
+        Dataset
+            With units, sources and the caution.
+
+        Raises
+        ------
+        GasphysError
+            If the values cannot stand together.
+        """
         raise NotImplementedError
 
     def draw(self, figure: Any, ds: xr.Dataset) -> None:
-        """Draw the dataset; on a figure drawn before, move its artists."""
+        """Draw the dataset; on a figure drawn before, move its artists.
+
+        Parameters
+        ----------
+        figure : matplotlib.figure.Figure
+            Empty at first.
+        ds : Dataset
+            As :meth:`compute` returns it.
+        """
+        raise NotImplementedError
+
+    def figure(self) -> Any:
+        """Return the picture of :attr:`params` on a figure of its own, with the caution.
+
+        Returns
+        -------
+        matplotlib.figure.Figure
+            The figure.
+        """
         raise NotImplementedError
 
     def answer(self, ds: xr.Dataset) -> str:
-        """Return the answer in one sentence."""
+        """Return the answer in one sentence.
+
+        Parameters
+        ----------
+        ds : Dataset
+            As :meth:`compute` returns it.
+
+        Returns
+        -------
+        str
+            With units.
+        """
         raise NotImplementedError
 
     def notes(self, ds: xr.Dataset) -> list[str]:
-        """Return what speaks against the answer, and what it assumes."""
-        return []
+        """Return what speaks against the answer, and what it assumes.
+
+        Parameters
+        ----------
+        ds : Dataset
+            As :meth:`compute` returns it.
+
+        Returns
+        -------
+        list of str
+            One sentence each.
+        """
+        raise NotImplementedError
 
     def explain(self, ds: xr.Dataset, name: str) -> str:
-        """Return the working of one number of the answer."""
+        """Return the working of one number of the answer.
+
+        Parameters
+        ----------
+        ds : Dataset
+            As :meth:`compute` returns it.
+        name : str
+            A key of :attr:`explained`.
+
+        Returns
+        -------
+        str
+            Equations, inputs, constants, sources.
+        """
         raise NotImplementedError
 
     def lines(self) -> str:
-        """Return the Python lines that reproduce ``ds`` and ``figure``."""
+        """Return the Python lines that reproduce ``ds`` and ``figure``.
+
+        Returns
+        -------
+        str
+            To paste into a cell or a script.
+        """
         raise NotImplementedError
 
     # -- what every app can do ---------------------------------------------------------------
@@ -354,27 +479,6 @@ class App:
         'oxygen'
         """
         self.params, self.units = dict(self._begin[0]), dict(self._begin[1])
-
-    def figure(self) -> Any:
-        """Return the picture of :attr:`params` on a new figure, with the caution.
-
-        Returns
-        -------
-        matplotlib.figure.Figure
-            The figure.
-
-        Examples
-        --------
-        >>> import gasphys as gp
-        >>> len(gp.widgets.OxygenAtPressure().figure().axes)
-        2
-        """
-        from gasphys.plots.style import caution_line, new_figure
-
-        figure = new_figure(*self.size)
-        self.draw(figure, self.compute())
-        caution_line(figure)
-        return figure
 
     def png(self, figure: Any) -> bytes:
         """Return a figure as PNG, for a view.
@@ -396,9 +500,16 @@ class App:
         >>> app.png(app.figure())[:4]
         b'\\x89PNG'
         """
+        from matplotlib.backends.backend_agg import FigureCanvasAgg
+        from PIL import Image
+
+        canvas: Any = FigureCanvasAgg(figure)
+        figure.set_dpi(192)
+        canvas.draw()
+        full = Image.frombuffer("RGBA", canvas.get_width_height(), canvas.buffer_rgba(), "raw", "RGBA", 0, 1)
         with io.BytesIO() as file:
-            # The least compression: time counts more than size between a kernel and its page.
-            figure.savefig(file, format="png", dpi=192, pil_kwargs={"compress_level": 1})
+            # Few colors and the least compression: what a moving slider waits for.
+            full.convert("P", palette=Image.Palette.ADAPTIVE, colors=64).save(file, "png", compress_level=1)
             return file.getvalue()
 
     def export(self, path: str | os.PathLike[str]) -> None:
@@ -459,11 +570,15 @@ class App:
         ds = self.compute()
         if ending == ".nc":
             return bytes(ds.to_netcdf(engine="scipy"))
-        table = ds.to_dataframe().reset_index()
-        table.columns = [f"{c} [{ds[c].attrs['units']}]" if "units" in ds[c].attrs else c for c in table.columns]
+        along = [n for n in ds.data_vars if len(ds[n].dims) == 1]
+        table = ds[along].to_dataframe().reset_index()
+        table.columns = [
+            f"{c} [{ds[c].attrs['units']}]" if "units" in ds[c].attrs else c for c in table.columns
+        ]
         head = [ds.attrs["title"], *self.notes(ds), CAUTION]
         lines = [f"# {line}" for line in head]
-        return ("\n".join(lines) + "\n" + table.to_csv(index=False, lineterminator="\n")).encode()
+        text: str = table.to_csv(index=False, lineterminator="\n")
+        return ("\n".join(lines) + "\n" + text).encode()
 
     @cached_property
     def _shown(self) -> Any:

@@ -16,7 +16,7 @@ from gasphys.exposure import Exposure
 from gasphys.gas import Gas
 from gasphys.gas_exchange import oxygenation
 from gasphys.person import Person
-from gasphys.plots.oxygen_cascade import OxygenCascade
+from gasphys.plots.oxygen_cascade import OxygenCascade, oxygen_cascade_figure
 from gasphys.quantities import attributes, quantity
 from gasphys.units import convert, parse_quantity
 from gasphys.widgets.base import App, Name, Number, shown, start_values
@@ -24,17 +24,6 @@ from gasphys.widgets.base import App, Name, Number, shown, start_values
 __all__ = ["OxygenAtPressure"]
 
 _START = start_values()["oxygen_at_pressure"]
-
-_VARIABLES = (
-    "breathing_gas_po2",
-    "fio2",
-    "inspired_po2",
-    "alveolar_po2",
-    "arterial_po2",
-    "arterial_o2_saturation",
-    "arterial_dissolved_o2",
-    "arterial_o2_content",
-)
 
 
 class OxygenAtPressure(App):
@@ -84,12 +73,12 @@ class OxygenAtPressure(App):
         "arterial_dissolved_o2": "dissolved O2",
         "arterial_o2_content": "O2 content",
     }
-    #: Blanks that are fields of the person.
-    fields: ClassVar = ("hemoglobin", "arterial_pco2", "arterial_alveolar_ratio")
+    #: Blanks that describe the person.
+    personal: ClassVar = ("hemoglobin", "arterial_pco2", "arterial_alveolar_ratio")
 
     def __init__(self, person: Person | None = None, **start: Any) -> None:
         self.person = Person() if person is None else person
-        given = {name: self.person.value(name) for name in self.fields}
+        given = {name: self.person.value(name) for name in self.personal}
         super().__init__(
             **{**given, "gas": _START["gas"], "ambient_pressure": _START["ambient_pressure"], **start}
         )
@@ -109,7 +98,7 @@ class OxygenAtPressure(App):
         False
         """
         changed = {
-            name: self.params[name] for name in self.fields if self.params[name] != self.person.value(name)
+            name: self.params[name] for name in self.personal if self.params[name] != self.person.value(name)
         }
         assumed = tuple(name for name in self.person.assumed if name not in changed)
         return replace(self.person, **changed, assumed=assumed)
@@ -133,8 +122,8 @@ class OxygenAtPressure(App):
             high *= 2.0
         while chosen < low:
             low /= 2.0
-        grid = np.linspace(low, min(high, quantity("ambient_pressure").possible[1]), 81)
-        return np.union1d(grid[~np.isclose(grid, chosen, rtol=1e-9)], [chosen])
+        high = min(high, quantity("ambient_pressure").possible[1])
+        return np.union1d(np.linspace(low, high, 81), [chosen])
 
     def compute(self) -> xr.Dataset:
         """Return oxygen from inspired gas to arterial blood along ambient pressure.
@@ -159,9 +148,11 @@ class OxygenAtPressure(App):
             self.pressures(), dims="pressure", attrs=attributes("ambient_pressure"), name="ambient_pressure"
         )
         session = Exposure.start(self.params["gas"], pressure=pressure).stay(1)
-        ds = oxygenation(session, self.described()).isel(time=0, drop=True)
-        ds = ds.swap_dims(pressure="ambient_pressure").set_coords("ambient_pressure")[list(_VARIABLES)]
-        ds = ds.drop_vars([c for c in ds.coords if c != "ambient_pressure"])
+        ds = oxygenation(session, self.described()).isel(time=0, segment=0, drop=True)
+        ds = ds.swap_dims(pressure="ambient_pressure").set_coords("ambient_pressure").drop_vars("pressure")
+        ds["ambient_pressure"].attrs = attributes("ambient_pressure")  # given, not computed from a piece
+        kept = [n for n in ds.data_vars if "equation" in ds[n].attrs or n in ("gas_fraction", "setpoint")]
+        ds = ds[kept]
         ds["arterial_po2_valid"] = _valid(ds, "arterial_po2")
         ds.attrs["chosen_pressure"] = self.params["ambient_pressure"]
         ds.attrs["gas"] = self.params["gas"]
@@ -186,6 +177,21 @@ class OxygenAtPressure(App):
         if figure not in self._pictures:
             self._pictures[figure] = OxygenCascade(figure)
         self._pictures[figure].update(ds, ds.attrs["chosen_pressure"], **self._axes())
+
+    def figure(self) -> Any:
+        """Return the picture on a figure of its own, with the caution.
+
+        Returns
+        -------
+        matplotlib.figure.Figure
+            The figure.
+
+        Examples
+        --------
+        >>> len(OxygenAtPressure().figure().axes)
+        2
+        """
+        return oxygen_cascade_figure(self.compute(), self.params["ambient_pressure"], **self._axes())
 
     def _axes(self) -> dict[str, str]:
         return {"pressure_unit": self.units["ambient_pressure"], "po2_unit": self.units["arterial_pco2"]}
@@ -216,7 +222,9 @@ class OxygenAtPressure(App):
         alveolar, arterial = (
             shown(float(convert(float(row[name]), "kPa", unit))) for name in ("alveolar_po2", "arterial_po2")
         )
-        content, dissolved = (shown(float(row[n]), 3) for n in ("arterial_o2_content", "arterial_dissolved_o2"))
+        content, dissolved = (
+            shown(float(row[n]), 3) for n in ("arterial_o2_content", "arterial_dissolved_o2")
+        )
         return (
             f"Alveolar PO2 is {alveolar} {unit} and arterial PO2 {arterial} {unit}; arterial blood then "
             f"carries {content} mL/dL of O2, {dissolved} mL/dL of it dissolved."
@@ -245,7 +253,8 @@ class OxygenAtPressure(App):
         notes = [f"Beyond the evidence (dotted): {text}." for text in _beyond(row, "arterial_po2")]
         assumed = str(ds.attrs["assumed"]).replace("_", " ")
         notes.append(f"Assumed, not measured: {assumed}." if assumed else "Nothing is assumed.")
-        notes.append(f"Steady state. Weakest provenance of the numbers used: {ds.attrs['provenance']}.")
+        known = str(ds.attrs["provenance"]).replace("_", ", ")
+        notes.append(f"Steady state. Weakest provenance of the numbers used: {known}.")
         return notes
 
     def explain(self, ds: xr.Dataset, name: str) -> str:
@@ -271,8 +280,8 @@ class OxygenAtPressure(App):
         Examples
         --------
         >>> app = OxygenAtPressure()
-        >>> print(app.explain(app.compute(), "alveolar_po2").splitlines()[0])
-        alveolar_po2 = 231.5811 (stored 231.5811)
+        >>> app.explain(app.compute(), "alveolar_po2").splitlines()[0][:22]
+        'alveolar_po2 = 231.581'
         """
         return str(explain(ds, name, ambient_pressure=ds.attrs["chosen_pressure"]))
 
@@ -295,7 +304,7 @@ class OxygenAtPressure(App):
             for one in fields(person)
             if getattr(person, one.name) != one.default
         ]
-        grid = self.pressures()
+        low, high = (float(end) for end in self.pressures()[[0, -1]])
         chosen = self.params["ambient_pressure"]
         axes = ", ".join(f"{name}={unit!r}" for name, unit in self._axes().items())
         return (
@@ -304,7 +313,7 @@ class OxygenAtPressure(App):
             "import gasphys as gp\n"
             "\n"
             f"person = gp.Person({', '.join(given)})\n"
-            f"pressures = np.union1d(np.linspace({float(grid[0])!r}, {float(grid[-1])!r}, 81), [{chosen!r}])\n"
+            f"pressures = np.union1d(np.linspace({low!r}, {high!r}, 81), [{chosen!r}])\n"
             'pressures = xr.DataArray(pressures, dims="pressure", attrs={"units": "kPa"})\n'
             f"session = gp.Exposure.start({self.params['gas']!r}, pressure=pressures).stay(1)\n"
             "ds = gp.gas_exchange.oxygenation(session, person).isel(time=0)\n"
@@ -328,9 +337,10 @@ def _valid(ds: xr.Dataset, name: str) -> xr.DataArray:
     good = xr.ones_like(ds[name], dtype=bool)
     for argument, value in _inputs(ds, name):
         good = good & (argument.low <= value) & (value <= argument.high)
-    return good.astype(np.int8).assign_attrs(
-        long_name=f"1 where {quantity(name).long_name} is within the range its equation was made for"
-    )
+    meaning = f"1 where {quantity(name).long_name} is within the range its equation was made for"
+    flag = good.astype(np.int8)
+    flag.attrs = {"units": "1", "long_name": meaning}
+    return flag
 
 
 def _beyond(row: xr.Dataset, name: str) -> list[str]:

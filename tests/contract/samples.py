@@ -16,6 +16,10 @@ from gasphys.units import UNITS, Unit, unit
 REGISTRY = gp.equations()
 
 
+#: What a choice spreads into several arguments, by the name of its argument.
+SPREAD = {"gas": gp.Gas(oxygen=0.18, helium=0.4, argon=0.01), "pair": "O2-He"}
+
+
 def _once(kinds: tuple[str, ...]) -> dict[str, Any]:
     """Return the equations of these kinds, each under its first name."""
     found: dict[int, tuple[str, Any]] = {}

@@ -81,7 +81,7 @@ def pages(built: Path) -> dict[str, _Page]:
 def _public() -> list[str]:
     """Return the dotted name of every public function and class."""
     found = []
-    for name in gp._MODULES:
+    for name in sorted({*gp._MODULES, *gp._NAMES.values()}):
         module = importlib.import_module(f"gasphys.{name}")
         for public in module.__all__:
             if callable(getattr(module, public)) and not isinstance(getattr(module, public), dict):

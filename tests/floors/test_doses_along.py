@@ -127,5 +127,5 @@ def test_splitting_changes_no_dose(exposure: Exposure) -> None:
 def test_noaa_not_applicable_above_the_table_is_no_error() -> None:
     found = oxygen(treatment("usn_6"), ["uptd", "noaa_cns"])
     assert np.isnan(found.dose.sel(measure="noaa_cns"))
-    assert found.status.values.tolist() == ["computed", "not applicable"]
+    assert found.status.values.tolist() == ["within", "not applicable"]
     assert "1.60 atm" in str(found.reason.sel(measure="noaa_cns").values)

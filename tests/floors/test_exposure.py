@@ -247,3 +247,23 @@ def test_gas_names_read_back(oxygen: float, share: float) -> None:
     gas = Gas(oxygen=round(oxygen, 4), helium=round((1 - oxygen) * share, 4) * 0.999)
     assert Gas.parse(str(gas)) == gas
     assert gas.nitrogen + gas.oxygen + gas.helium == pytest.approx(1.0, abs=1e-12)
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["nitrox ３２", "mix O2=0.2_1", "mix O2=0.2 O2=0.3", "mix N2=0.7", "nitrox 132", "heliox 20/70", "trimix 60/50", "", "nitrox", "mix O2"],
+)
+def test_gas_names_that_are_refused(text: str) -> None:
+    with pytest.raises(GasphysError):
+        Gas.parse(text)
+
+
+def test_dry_air_has_its_argon() -> None:
+    """CIPM-2007: O2 0.20939, Ar 0.009332; M 28.96546 g/mol at 400 ppm CO2, trace gases counted as nitrogen here."""
+    air = Gas.dry_air("cipm_2007")
+    assert air.fraction("Ar") == 0.009332
+    assert air.molar_mass == pytest.approx(28.96546, rel=2e-5)
+    assert Gas.parse(str(air)) == air
+    assert sum(air.fractions.values()) == pytest.approx(1.0, abs=1e-12)
+    # CRC Handbook, 83rd edition: M 28.965 g/mol.
+    assert Gas.dry_air("crc_83").molar_mass == pytest.approx(28.965, abs=1e-3)

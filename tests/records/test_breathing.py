@@ -95,12 +95,13 @@ def test_whole_log_and_last_instant() -> None:
     assert not any("inserted" in entry for entry in result.history)
 
 
-def test_instants_computed_in_two_ways_are_one() -> None:
-    # (33.1 - 5.1) min and (1986 - 306)/60 min differ in the last bit.
-    log = "time_s,pressure_abs_kPa\n306,101\n1986,241\n3000,241\n"
-    result = overlay(log, "start_min,end_min,gas\n33.1,50.0,oxygen\n")
-    assert len(result.time) == 3
-    assert result.gas == ("air", "oxygen", "oxygen")
+@pytest.mark.parametrize(("minute", "second"), [("16.4", 984), ("11.3", 678)], ids=["below", "above"])
+def test_instants_computed_in_two_ways_are_one(minute: str, second: int) -> None:
+    # minute - 5.1 and (second - 306)/60 differ in the last bit, one pair below and one above.
+    log = f"time_s,pressure_abs_kPa\n306,101\n{second},241\n{second + 60},241\n5400,241\n"
+    result = overlay(log, f"start_min,end_min,gas\n{minute},90,oxygen\n")
+    assert len(result.time) == 4
+    assert result.gas == ("air", "oxygen", "oxygen", "oxygen")
 
 
 def test_mask_leak() -> None:
@@ -117,6 +118,11 @@ def test_mask_leak() -> None:
     assert len(leaks) == 3
     assert "line 2: mask leak 0.1" in leaks[0]
     assert "FiO2 0.921" in leaks[0]
+
+
+def test_small_mask_leak() -> None:
+    result = overlay(LOG, "start_min,end_min,gas,mask_leak\n5,20,oxygen,0.005\n")
+    assert Gas.parse(result.gas[1]).oxygen == pytest.approx(0.99605, abs=1e-12)  # 0.995 + 0.005 x 0.21
 
 
 def test_set_point() -> None:

@@ -5,6 +5,7 @@
 from __future__ import annotations
 
 import io
+import time
 from pathlib import Path
 from typing import Any
 
@@ -93,6 +94,7 @@ REFUSED: dict[str, tuple[str | bytes, int | None, int | None, str, str]] = {
     "unit in the cell": (HEAD + TAIL + "12,18 msw,air\n", 4, 2, "not a number", "units"),
     "mark inside": ("\ufeff" + HEAD + TAIL + "12,\ufeff18,air\n", 4, 2, "not a number", "digits"),
     "exponent without end": (HEAD + TAIL + "12,1e999,air\n", 4, 2, "larger than", "correct"),
+    "seconds without end": ("time_s,depth_msw,gas\n0,0,air\n1.005e9,9,air\n", 3, 1, "larger than", "correct"),
     "time without end": (HEAD + TAIL + "1e8,18,air\n", 4, 1, "possible is 1e+07 min", "correct"),
     # pressures
     "too deep": (HEAD + TAIL + "12,2000,air\n", 4, 2, "20101.3 kPa", "unit in the header"),
@@ -140,6 +142,8 @@ REFUSED: dict[str, tuple[str | bytes, int | None, int | None, str, str]] = {
     "ISO date": ("time;depth_msw;gas\n2042-02-29T08:00;0;air\n2042-03-04T08:00;0;air\n", 2, 1, "date", "ISO"),
     "ISO year 0": ("time;depth_msw;gas\n0000-01-01T08:00;0;air\n2042-03-04T08:00;0;air\n", 2, 1, "date", "ISO"),
     "ISO offset": ("time;depth_msw;gas\n2042-03-04T08:00+25:00;0;air\n2042-03-04T08:00Z;0;air\n", 2, 1, "+25:00", "ISO"),
+    "ISO offset of a day": ("time;depth_msw;gas\n2042-03-04T08:00+24:00;0;air\n2042-03-04T08:00Z;0;air\n", 2, 1, "+24:00", "ISO"),
+    "ISO offset of 60 min": ("time;depth_msw;gas\n2042-03-04T08:00-0160;0;air\n2042-03-04T08:00Z;0;air\n", 2, 1, "-0160", "ISO"),
     "ISO, offset missing": (
         "time;depth_msw;gas\n2042-03-03T08:00Z;0;air\n2042-03-03T08:01;0;air\n", 3, 1, "without a UTC", "all"
     ),
@@ -181,6 +185,7 @@ def test_refused(name: str, tmp_path: Path) -> None:
 def test_the_same_from_an_open_file(name: str) -> None:
     text, line, column, message, _ = REFUSED[name]
     assert isinstance(text, str)
+    message = {"lone surrogate": "half a character"}.get(name, message)
     with pytest.raises(InputFileError) as caught:
         read_log(io.StringIO(text))
     assert (caught.value.line, caught.value.column) == (line, column)
@@ -199,6 +204,8 @@ def test_file_missing(tmp_path: Path) -> None:
             read_log(file)
         assert caught.value.path == str(file)
         assert "check name" in caught.value.remedy
+    with pytest.raises(InputFileError, match="No such file"):
+        read_log(tmp_path / "none.csv")
 
 
 def test_text_file_opened_in_another_encoding(tmp_path: Path) -> None:
@@ -237,9 +244,7 @@ def test_barometer_of_another_kind(value: Any) -> None:
     ids=["open quote", "spaces", "doubled", "delimiters", "quotes", "header", "digits", "columns", "returns"],
 )
 def test_no_text_is_slow(text: str) -> None:
-    import time
-
-    start = time.perf_counter()
+    start = time.process_time()
     with pytest.raises(InputFileError):
         read_log(io.StringIO(text))
-    assert time.perf_counter() - start < 5.0  # a quadratic reader takes minutes
+    assert time.process_time() - start < 5.0  # a quadratic reader takes minutes
