@@ -802,20 +802,32 @@ def _closed_form(f: Any, name: str) -> Callable[..., Any] | None:
         cache[name] = None
         expression = _trace(f)
         if not expression.has(sp.Piecewise, sp.Min, sp.Max) and expression.has(x):
-            numerator, _ = sp.fraction(sp.together(y - expression))
-            if numerator.is_polynomial(x):
-                coefficients = sp.Poly(numerator, x).all_coeffs()
-                if 2 <= len(coefficients) <= 3:
-                    inputs = [sp.Symbol(a.name) for a in f.arguments if a.name != name]
-                    values = {
-                        sp.Symbol(k): sp.Float(float(c), 17) for k, c in f.constants.items()
-                    }
-                    cache[name] = sp.lambdify(
-                        [y, *inputs],
-                        [c.xreplace(values) for c in coefficients],
-                        modules=[lambdify_names()[0], "math"],
-                    )
+            coefficients = _coefficients(y - expression, x)
+            if 2 <= len(coefficients) <= 3:
+                inputs = [sp.Symbol(a.name) for a in f.arguments if a.name != name]
+                values = {sp.Symbol(k): sp.Float(float(c), 17) for k, c in f.constants.items()}
+                cache[name] = sp.lambdify(
+                    [y, *inputs],
+                    [c.xreplace(values) for c in coefficients],
+                    modules=[lambdify_names()[0], "math"],
+                )
     return cache[name]  # type: ignore[no-any-return]
+
+
+def _coefficients(expression: Any, x: Any) -> list[Any]:
+    """Return the coefficients of the polynomial in x whose roots are those of the expression, or none."""
+    import sympy as sp
+
+    if any(function.has(x) for function in expression.atoms(sp.Function)):
+        return []
+    slope = sp.diff(expression, x)
+    if not slope.has(x):
+        return [slope, expression.subs(x, 0)]
+    bend = sp.diff(slope, x)
+    if not bend.has(x):
+        return [bend / 2, slope.subs(x, 0), expression.subs(x, 0)]
+    numerator, _ = sp.fraction(sp.together(expression))
+    return list(sp.Poly(numerator, x).all_coeffs()) if numerator.is_polynomial(x) else []
 
 
 def _solve_for(f: Any, name: str, **known: Any) -> NDArray[np.float64]:
@@ -832,25 +844,25 @@ def _solve_for(f: Any, name: str, **known: Any) -> NDArray[np.float64]:
         except (ArithmeticError, ValueError):
             roots = []
     if not roots:
-        roots = _scan(f, name, wanted, values, low, high)
+        roots = _scan(f, name, wanted, values)
     inside = sorted(r for r in roots if low <= r <= high)
     if not inside:
         raise _not_reachable(f, name, wanted, values, roots)
     return np.asarray(inside)
 
 
-def _ends(low: float, high: float) -> NDArray[np.float64]:
-    """Sample a possible range evenly, and evenly in the logarithm where it spans decades."""
-    grid = np.linspace(low, high, 257)
-    if high > 0.0:
-        start = max(low, high * 1e-9) if low >= 0.0 else high * 1e-9
+def _ends(argument: Argument) -> NDArray[np.float64]:
+    """Sample the possible and the usual range evenly, and evenly in the logarithm over decades."""
+    low, high = argument.possible
+    usual = argument.quantity.usual
+    grid = np.union1d(np.linspace(low, high, 257), np.clip(np.linspace(*usual, 65), low, high))
+    start = max(low, min(high * 1e-9, abs(usual[1]) * 1e-6))
+    if 0.0 < start < high:
         grid = np.union1d(grid, np.geomspace(start, high, 400))
     return grid
 
 
-def _scan(
-    f: Any, name: str, wanted: float, values: dict[str, float], low: float, high: float
-) -> list[float]:
+def _scan(f: Any, name: str, wanted: float, values: dict[str, float]) -> list[float]:
     from scipy.optimize import brentq
 
     def difference(x: Any) -> Any:
@@ -858,7 +870,7 @@ def _scan(
         with np.errstate(all="ignore"):
             return np.asarray(f.raw(*inputs), dtype=float) - wanted
 
-    grid = _ends(low, high)
+    grid = _ends(_argument(f, name))
     level = np.broadcast_to(difference(grid), grid.shape)
     roots = [float(x) for x, d in zip(grid, level, strict=True) if d == 0.0]
     finite = np.isfinite(level)
@@ -876,7 +888,7 @@ def _not_reachable(
 ) -> NotReachableError:
     low, high = _argument(f, name).possible
     unit = _argument(f, name).quantity.unit
-    inputs = [_ends(low, high) if a.name == name else values[a.name] for a in f.arguments]
+    inputs = [_ends(a) if a.name == name else values[a.name] for a in f.arguments]
     with np.errstate(all="ignore"):
         reached = np.asarray(f.raw(*inputs), dtype=float)
     reached = reached[np.isfinite(reached)]

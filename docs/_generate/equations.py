@@ -35,7 +35,7 @@ TITLES = {
     "laws": "Gas laws and gas volumes",
     "vapor": "Water vapor",
     "surroundings": "Pressure, depth, altitude",
-    "real_gas": "Gas density",
+    "real_gas": "Gas density, cylinders, viscosity",
     "lungs": "Alveolar gas",
     "blood": "Oxygen in blood",
     "breathing_gas": "Breathing gas at an instant",
@@ -154,26 +154,29 @@ def _equation(f: Any) -> str:
     try:
         return f"$$\n{tex(f.latex())}\n$$"
     except NotTraceable as reason:
-        if f.kind == "inverse":
-            try:
-                text = f"$$\n{tex(f.forward.latex())}\n$$"
-            except NotTraceable:
-                text = ""
-            return (
-                f"Not traced: {escape(str(reason))}. Found as the {quantity_link(f.unknown)} "
-                f"for which the forward equation gives the wanted value:\n\n{text}"
-            )
-        return f"Not traced: {escape(str(reason))}."
+        said = f"Not traced: {escape(str(reason))}."
+    if f.kind != "inverse":
+        return said
+    unknown = next(a for a in f.forward.arguments if a.name == f.unknown)
+    said += f" Found as the {_named(unknown)} for which the forward equation gives the wanted value."
+    if f.forward.kind != "formula":
+        return said
+    return f"{said}\n\n$$\n{tex(f.forward.latex())}\n$$"
+
+
+def _named(a: Any) -> str:
+    """Return a link to an argument's quantity, with the argument's own name where it differs."""
+    q = a.quantity
+    return quantity_link(q.name) if q.name == a.name else f"`{a.name}`, a {quantity_link(q.name)}"
 
 
 def _arguments(f: Any) -> str:
     rows = []
     for a in f.arguments:
         q = a.quantity
-        named = quantity_link(q.name) if q.name == a.name else f"`{a.name}`, a {quantity_link(q.name)}"
         rows.append(
             (
-                named,
+                _named(a),
                 math(q.symbol),
                 f"`{q.unit}`",
                 escape(q.long_name),

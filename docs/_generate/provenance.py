@@ -9,7 +9,8 @@ from _generate.markdown import constants, escape, first_name, link, page, table
 from _generate.schedules import remembered as remembered_schedules
 from _generate.tissue_sets import remembered as remembered_sets
 from _generate.words import person_defaults
-from gasphys.equation import EQUATIONS
+from gasphys.constants import Constant
+from gasphys.equation import EQUATIONS, EquationFunction
 from gasphys.gas import dry_air_standards
 from gasphys.policy import PROVENANCE
 from gasphys.sources import cite
@@ -40,19 +41,7 @@ def pages() -> dict[str, str | bytes]:
             [(f"`{w}`", count.get(w, 0), count_constants.get(w, 0)) for w in PROVENANCE],
         ),
         "## Constants from memory\n\n"
-        + table(
-            ("constant", "value", "provenance", "used by", "compare with"),
-            [
-                (
-                    f"[`{c.name}`](#constant-{c.name.lower()})",
-                    f"{float(c):.10g} {'' if c.unit == '1' else c.unit}",
-                    f"`{c.provenance}`",
-                    ", ".join(link(n) for n, f in own if c.name in f.constants) or "nothing yet",
-                    escape(cite(c.source)),
-                )
-                for c in weak
-            ],
-        ),
+        + table(("compare with", "constants", "provenance", "used by"), _constants(weak, own)),
         "## Equations from memory\n\nAn equation is as weak as the weakest number in it. Where a constant "
         "is the reason, settling the constant settles the equation.\n\n"
         + table(
@@ -76,7 +65,24 @@ def pages() -> dict[str, str | bytes]:
     }
 
 
-def _equation(name: str, f: object) -> tuple[str, ...]:
-    weak = [c for c in f.constants.values() if c.provenance == f.provenance]  # type: ignore[attr-defined]
+def _equation(name: str, f: EquationFunction) -> tuple[str, ...]:
+    weak = [c for c in f.constants.values() if c.provenance == f.provenance]
     because = ", ".join(f"[`{c.name}`](#constant-{c.name.lower()})" for c in weak) or "the equation itself"
-    return (link(name), f"`{f.provenance}`", because, "; ".join(escape(cite(k)) for k in f.sources))  # type: ignore[attr-defined]
+    return (link(name), f"`{f.provenance}`", because, "; ".join(escape(cite(k)) for k in f.sources))
+
+
+def _constants(weak: list[Constant], own: list[tuple[str, EquationFunction]]) -> list[tuple[str, ...]]:
+    """Return a row for each source and word: whoever holds the source settles them together."""
+    groups: dict[tuple[str, str], list[Constant]] = {}
+    for c in weak:
+        groups.setdefault((c.source, c.provenance), []).append(c)
+    rows = []
+    for (source, word), members in groups.items():
+        names = {c.name for c in members}
+        shown = "; ".join(
+            f"[`{c.name}`](#constant-{c.name.lower()}) {float(c):.8g} {c.unit if c.unit != '1' else ''}".rstrip()
+            for c in members
+        )
+        used = ", ".join(link(n) for n, f in own if names & set(f.constants)) or "nothing yet"
+        rows.append((escape(cite(source)), shown, f"`{word}`", used))
+    return rows

@@ -57,8 +57,8 @@ def _facts(one: TissueSet) -> str:
         "Refuses": one.refuses,
         "Does not claim": one.does_not_claim,
     }
-    shown = "\n\n".join(f"{k if k[0] == '`' else escape(k)}\n: {escape(v)}" for k, v in lines.items() if v)
-    return f"{shown}\n\nProvenance\n: {known}"
+    rows = [(k, escape(v)) for k, v in lines.items() if v]
+    return table(("", "what the file says"), [*rows, ("Provenance", known)])
 
 
 def _numbers(one: TissueSet) -> str:

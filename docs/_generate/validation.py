@@ -111,7 +111,7 @@ def _mark(provenance: str) -> dict[str, Any]:
 
 def _picture(files: dict[str, list[dict[str, Any]]]) -> bytes:
     labels = [TITLES.get(name, name.removesuffix(".csv").replace("_", " ")) for name in files]
-    figure = Figure(figsize=(8.0, 0.6 + 0.5 * len(files)), layout="constrained")
+    figure = Figure(figsize=(8.0, 0.6 + 0.36 * len(files)), layout="constrained")
     axes = figure.add_subplot()
     for y, rows in enumerate(files.values()):
         for k, r in enumerate(rows):

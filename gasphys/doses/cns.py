@@ -580,14 +580,21 @@ POPULATIONS: dict[str, Population] = {
     ),
 }
 
-# The four bodies below are templates: EXPONENT, MEDIAN, SPREAD and the formulas they call are bound
+# The bodies below are templates: EXPONENT, MEDIAN, SPREAD and the formulas they call are bound
 # for each population. The names only stand here so that the file reads as code.
 EXPONENT, MEDIAN, SPREAD = CNS_ACTIVE_EXPONENT, CNS_ACTIVE_MEDIAN, CNS_ACTIVE_SPREAD
+PROBIT: Any = None
+HELD: Any = None
 
 
 def _exposure(start_po2: Value, end_po2: Value, duration: Value) -> Value:
     """Exposure X on a linear ramp of PO2: the integral of P^(c/2) dt, P in atm and t in min."""
     return duration * mean_power(start_po2 / ATMOSPHERE, end_po2 / ATMOSPHERE, EXPONENT)
+
+
+def _held(po2: Value, duration: Value) -> Value:
+    """Exposure X at a constant PO2."""
+    return duration * (po2 / ATMOSPHERE) ** EXPONENT
 
 
 def _probit(cns_exposure: Value) -> Value:
@@ -602,7 +609,7 @@ def _risk_of_exposure(cns_exposure: Value) -> Value:
 
 def _risk(po2: Value, duration: Value) -> Value:
     """Risk of any sign after a constant PO2."""
-    return normal_cdf(PROBIT(duration * (po2 / ATMOSPHERE) ** EXPONENT))
+    return normal_cdf(PROBIT(HELD(po2, duration)))
 
 
 def _bound(body: Any, called: str, **names: Any) -> Any:
@@ -633,6 +640,9 @@ def _family() -> dict[str, dict[str, EquationFunction]]:
             _bound(_probit, f"cns_probit_{name}", **names)
         )
         names["PROBIT"] = found["probit"][name]
+        names["HELD"] = formula(
+            result="cns_exposure", quantities={"po2": "breathing_gas_po2"}, valid={"po2": _FIT}, **common
+        )(_bound(_held, f"cns_exposure_held_{name}", **names))
         found["of"][name] = formula(result="cns_symptom_risk", **common)(
             _bound(_risk_of_exposure, f"cns_symptom_risk_of_exposure_{name}", **names)
         )
@@ -646,12 +656,11 @@ def _family() -> dict[str, dict[str, EquationFunction]]:
 
 
 _FAMILY = _family()
-PROBIT = _FAMILY["probit"]["active"]
 
 
 @choice(option="population", registry=_FAMILY["risk"])
 def cns_symptom_risk(po2: Value, duration: Value, population: str = "active") -> Value:
-    """Risk of *any* nervous system sign after a constant PO2 without air breaks.
+    """Risk of any nervous system sign after a constant PO2 without air breaks.
 
     Notes
     -----
@@ -704,7 +713,7 @@ def cns_probit(cns_exposure: Value, population: str = "active") -> Value:
 
 @choice(option="population", registry=_FAMILY["of"])
 def cns_symptom_risk_of_exposure(cns_exposure: Value, population: str = "active") -> Value:
-    """Risk of *any* nervous system sign at an exposure X summed over the pieces.
+    """Risk of any nervous system sign at an exposure X summed over the pieces.
 
     Notes
     -----

@@ -12,7 +12,7 @@ __all__ = ["arterial_po2_from_ratio"]
     quantities={"ratio": "arterial_alveolar_ratio"},
     valid={
         "ratio": (0.75, 1.0, "below it the ratio found at 1 atm did not carry over (Weaver & Howe 1994)"),
-        "alveolar_po2": (0.0, 333.306),
+        "alveolar_po2": (0.0, 333.306, "seen up to an arterial PO2 of 2000 mmHg, an alveolar one of 2500"),
     },
     source=("gilbert_keighley_1974", "paganini_review"),
     provenance="memory_high",

@@ -345,7 +345,7 @@ def wilke_mean(
 
 @formula(
     result="viscosity",
-    valid=_VALID | {"density": (0.0, 100.0)},
+    valid=_VALID | {"density": (0.0, 115.0)},
     refuse=_REFUSE,
     source=("wilke_1950", "transport_reference_correlations"),
     provenance="memory_high",

@@ -176,6 +176,12 @@ TOLERANCE_RELATIVE_2 = _tolerance("relative", 2, "1")
 # ---- Equations -----------------------------------------------------------------------------------
 
 
+@formula(result="reciprocal_temperature", register=False, **VIRIAL)
+def reciprocal_temperature(temperature: Value) -> Value:
+    """Variable of the temperature polynomials: xi = T_r/T - 1, T_r = 25 degC."""
+    return REFERENCE_TEMPERATURE / (temperature + ZERO_CELSIUS) - 1.0
+
+
 @formula(
     result="second_virial",
     valid=WARM | TRACE,
@@ -211,7 +217,7 @@ def second_virial(
     >>> round(second_virial(0.2096, 0.7812, 0.0, 0.0092, 0.0, 0.0, 0.0, 25.0), 2)
     -7.42
     """
-    xi = REFERENCE_TEMPERATURE / (temperature + ZERO_CELSIUS) - 1.0
+    xi = reciprocal_temperature(temperature)
     o2 = B_O2_0 + xi * (B_O2_1 + xi * B_O2_2)
     n2 = B_N2_0 + xi * (B_N2_1 + xi * B_N2_2)
     he = B_HE_0 + xi * (B_HE_1 + xi * B_HE_2)
@@ -270,7 +276,7 @@ def third_virial(
     >>> round(third_virial(0.2096, 0.7812, 0.0, 0.0092, 0.0, 0.0, 0.0, 25.0), 0)
     1302.0
     """
-    xi = REFERENCE_TEMPERATURE / (temperature + ZERO_CELSIUS) - 1.0
+    xi = reciprocal_temperature(temperature)
     root = (
         oxygen * (C_O2_0 + xi * (C_O2_1 + xi * C_O2_2)) ** ONE_THIRD
         + nitrogen * (C_N2_0 + xi * (C_N2_1 + xi * C_N2_2)) ** ONE_THIRD
@@ -334,7 +340,7 @@ def fifth_virial(
     >>> round(fifth_virial(0.2096, 0.7812, 0.0092, 25.0), -3)
     2007000.0
     """
-    xi = REFERENCE_TEMPERATURE / (temperature + ZERO_CELSIUS) - 1.0
+    xi = reciprocal_temperature(temperature)
     return (
         oxygen * (E_O2_0 + xi * E_O2_1) + nitrogen * (E_N2_0 + xi * E_N2_1) + argon * (E_AR_0 + xi * E_AR_1)
     )

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from gasphys.tissues.equations import (
-    alveolar_inert_pressure,
     altitude_stop_depth,
+    alveolar_inert_pressure,
     arterial_inert_pressure,
     ceiling_pressure,
     exercise_half_time,

@@ -20,8 +20,8 @@ from gasphys.equation import Value, formula, inverse
 from gasphys.maths import exp, expm1, log, maximum, ramp_gain, sqrt, where
 
 __all__ = [
-    "alveolar_inert_pressure",
     "altitude_stop_depth",
+    "alveolar_inert_pressure",
     "arterial_inert_pressure",
     "ceiling_pressure",
     "exercise_half_time",
@@ -286,7 +286,12 @@ def linear_washout_time(
     fall = x * (start_threshold - start_inert_pressure) + change
     end_fall = x * (end_threshold - end_inert_pressure) + change
     above = initial_tissue_pressure - start_threshold
-    return segment_duration * 2.0 * above / (fall + sqrt(maximum(fall * fall + 2.0 * above * (end_fall - fall), 0.0)))
+    return (
+        segment_duration
+        * 2.0
+        * above
+        / (fall + sqrt(maximum(fall * fall + 2.0 * above * (end_fall - fall), 0.0)))
+    )
 
 
 @formula(

@@ -154,7 +154,7 @@ def inert_pressure(model: TissueSet, pressure: Any, breath: Breath) -> Array:
         rest = (1.0 - breath.oxygen)[..., None]
         share = np.where(rest > 0.0, breath.inert / np.where(rest > 0.0, rest, 1.0), 0.0)
         on_loop = loop_alveolar_inert_pressure.raw(pressure[..., None], held[..., None], share, vapor)
-    return np.where(loop[..., None], on_loop, open_circuit)
+    return np.asarray(np.where(loop[..., None], on_loop, open_circuit))
 
 
 def _zero_pressure(model: TissueSet, breath: Breath) -> Array:
@@ -283,7 +283,9 @@ def stretches(
         duration = np.where(first, full * part, np.where(second, full - full * part, full))
         start = np.where(second, meets, start_there)
         end = np.where(first, meets, end_there)
-        breath = Breath(breath.oxygen[..., copies], breath.inert[..., copies, :], breath.setpoint[..., copies])
+        breath = Breath(
+            breath.oxygen[..., copies], breath.inert[..., copies, :], breath.setpoint[..., copies]
+        )
         before = before + np.append(0, np.cumsum(cut))[np.minimum(before, len(where))]
     made = Stretches(
         duration, start, end, inert_pressure(model, start, breath), inert_pressure(model, end, breath)
@@ -357,7 +359,7 @@ def _exponential_linear(
     todo = ~simple
 
     def lanes(values: Any) -> Array:
-        return np.broadcast_to(values, shape)[todo]
+        return np.asarray(np.broadcast_to(values, shape)[todo])
 
     half_time, t, begins, ends = lanes(model.half_time), lanes(t), lanes(begins), lanes(ends)
     first, last, low, high = lanes(first), lanes(last), lanes(low), lanes(high)
@@ -367,7 +369,14 @@ def _exponential_linear(
     middle_first = np.where(turns, first + (last - first) * share, last)
     middle_low = np.where(turns, low + (high - low) * share, high)
     p = _one_crossing(
-        lanes(state), t * share, first, middle_first, low, middle_low, half_time, np.where(turns, begins, begins + ends) > 0.0
+        lanes(state),
+        t * share,
+        first,
+        middle_first,
+        low,
+        middle_low,
+        half_time,
+        np.where(turns, begins, begins + ends) > 0.0,
     )
     if turns.any():
         p = _one_crossing(p, t * (1.0 - share), middle_first, last, middle_low, high, half_time, ends > 0.0)
@@ -412,7 +421,9 @@ def _one_crossing(
         share = find_root(over, np.zeros_like(q), np.ones_like(q))
         share = np.where(np.isnan(share), 0.0, share)
         at = l0 + (l1 - l0) * share
-        result[up] = linear_tissue_pressure.raw(at, a + (b - a) * share, b, at, l1, time * (1.0 - share), half)
+        result[up] = linear_tissue_pressure.raw(
+            at, a + (b - a) * share, b, at, l1, time * (1.0 - share), half
+        )
     return np.asarray(result)
 
 
@@ -435,7 +446,7 @@ _TOLERANCE = 1e-12
 def _serial(
     model: TissueSet, state: Array, duration: Array, start: Array, end: Array, first: Array, last: Array
 ) -> Array:
-    """Slip flow through compartments in series: an embedded Runge-Kutta pair, each scenario with its own steps."""
+    """Slip flow through compartments in series: embedded Runge-Kutta, each scenario with its own steps."""
     coefficient, offset = model.convention["flow_coefficient"], model.convention["flow_offset"]
     lead = np.broadcast_shapes(state.shape[:-2], duration.shape, start.shape)
     count = state.shape[-2]
@@ -446,11 +457,15 @@ def _serial(
         ambient = low[lane] + (high[lane] - low[lane]) * share
         chain = np.concatenate([ambient, p], axis=-1)
         flow = slip_flow.raw(chain[:, :-1], chain[:, 1:], coefficient, offset)
-        return np.asarray(minutes[lane] * (flow - np.concatenate([flow[:, 1:], np.zeros((len(p), 1))], axis=-1)))
+        return np.asarray(
+            minutes[lane] * (flow - np.concatenate([flow[:, 1:], np.zeros((len(p), 1))], axis=-1))
+        )
 
     done = np.where(minutes > 0.0, 0.0, 1.0)
     # First step: a tenth of the fastest time constant, or the whole stretch.
-    fastest = 4.0 * coefficient * (offset + 2.0 * np.maximum(np.maximum(low, high), p.max(axis=-1, keepdims=True)))
+    fastest = (
+        4.0 * coefficient * (offset + 2.0 * np.maximum(np.maximum(low, high), p.max(axis=-1, keepdims=True)))
+    )
     step = np.minimum(1.0, 0.1 / np.maximum(fastest * minutes, 1e-300))
     while True:
         lane = np.flatnonzero(done[:, 0] < 1.0)
@@ -461,7 +476,9 @@ def _serial(
         here = p[lane]
         trial = here
         for weights, node in zip(_STAGES, _NODES, strict=True):
-            trial = here + h * sum((w * r for w, r in zip(weights, rates, strict=True) if w), np.zeros_like(here))
+            trial = here + h * sum(
+                (w * r for w, r in zip(weights, rates, strict=True) if w), np.zeros_like(here)
+            )
             rates.append(slope(done[lane] + node * h, trial, lane))
         error = np.abs(h * sum(w * r for w, r in zip(_ERROR, rates, strict=True) if w))
         worst = (error / (_TOLERANCE * np.maximum(np.abs(trial), 1.0))).max(axis=-1, keepdims=True)
@@ -603,8 +620,7 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
         for k in range(block):
             x = rate * t[k]
             share = np.expm1(x)  # what is lost, negative
-            followed = ramp_gain_from(x, share)
-            followed *= change[k]
+            followed = change[k] * ramp_gain_from(x, share)
             if k:
                 np.subtract(total[k - 1], first[k], out=total[k])
                 total[k] *= share

@@ -213,15 +213,13 @@ def check_gases(model: TissueSet, pieces: Pieces, shape: tuple[int, ...]) -> NDA
         found = np.broadcast_to(((fraction > 0.0) & real).any(axis=-1), shape)
         if found.any():
             reason = reason or f"it is breathed with {formula}, and the set takes {', '.join(accepted)}"
-            bad = bad | found
+            bad = np.asarray(bad | found)
     if model.air_only:
-        oxygen = pieces.fractions["O2"]
-        on_loop = ~np.isnan(pieces.setpoint)
-        found = ((((oxygen < _AIR[0]) | (oxygen > _AIR[1])) | on_loop) & real).any(axis=-1)
-        found = np.broadcast_to(found, shape)
-        if found.any():
+        oxygen, on_loop = pieces.fractions["O2"], ~np.isnan(pieces.setpoint)
+        other = ((oxygen < _AIR[0]) | (oxygen > _AIR[1]) | on_loop) & real
+        if other.any():
             reason = reason or "the set takes air only"
-            bad = bad | found
+            bad = np.asarray(bad | np.broadcast_to(other.any(axis=-1), shape))
     if bad.any():
         message = f"{model.name} refuses this exposure: {reason}. It refuses: {model.refuses}"
         if bad.all():
@@ -235,8 +233,7 @@ def check_gases(model: TissueSet, pieces: Pieces, shape: tuple[int, ...]) -> NDA
 def _present(model: TissueSet, pieces: Pieces) -> list[str]:
     """Return the tracked gases an exposure contains; the first always."""
     inert = breath_of(model, pieces).inert
-    there = (inert > 0.0).reshape(-1, inert.shape[-1]).any(axis=0)
-    return [g for k, g in enumerate(model.inert_gases) if k == 0 or there[k]]
+    return [g for k, g in enumerate(model.inert_gases) if k == 0 or (inert[..., k] > 0.0).any()]
 
 
 def _check_pressures(model: TissueSet, pieces: Pieces, surface: Any) -> list[str]:
@@ -246,12 +243,14 @@ def _check_pressures(model: TissueSet, pieces: Pieces, surface: Any) -> list[str
     over = highest.max(initial=0.0)
     if not over <= model.highest_pressure * (1.0 + 1e-9):
         flags.append(
-            f"{model.name}: ambient pressure reaches {over:.1f} kPa; made for up to {model.highest_pressure:.1f} kPa"
+            f"{model.name}: ambient pressure reaches {over:.1f} kPa; "
+            f"made for up to {model.highest_pressure:.1f} kPa"
         )
     gauge = float((highest - np.asarray(surface, dtype=float)[..., None]).max(initial=0.0))
     if not gauge <= model.deepest * (1.0 + 1e-9):
         flags.append(
-            f"{model.name}: {gauge:.1f} kPa above the surface; made for up to {model.deepest:.1f} kPa above it"
+            f"{model.name}: {gauge:.1f} kPa above the surface; "
+            f"made for up to {model.deepest:.1f} kPa above it"
         )
     for flag in flags:
         outside_validity(flag)
@@ -321,7 +320,7 @@ def initial_state(model: TissueSet, initial: Any, exposure: Exposure) -> Array:
         pressure = float(initial)
     else:
         raise ExposureError(
-            "initial must be an earlier result, its final, or a pressure in kPa at which air was breathed long"
+            "initial must be an earlier result, its final, or a pressure in kPa at which air was breathed"
         )
     if not one.possible[0] <= pressure <= one.possible[1]:
         raise one.range_error(pressure)
@@ -356,7 +355,8 @@ def _dataset(run: _Run) -> xr.Dataset:
         ds = ds.assign_coords(time=view["time"])
     else:
         ds["time"] = view["time"]
-    ds["ambient_pressure"] = view["ambient_pressure"]
+    given = view["ambient_pressure"]
+    ds["ambient_pressure"] = (given.dims, given.values, attributes("ambient_pressure"))
     with np.errstate(invalid="ignore", divide="ignore"):
         share = limit_fraction.raw(judged.total, judged.limit)
         over = gradient_fraction.raw(judged.total, run.pressure[..., None, :], judged.limit)
@@ -397,7 +397,11 @@ def _dataset(run: _Run) -> xr.Dataset:
     if model.kinetics == "serial":
         refs = [model.source]
     ds.attrs = {
-        **{k: v for k, v in view.attrs.items() if k in ("Conventions", "depth_unit", "water", "surface_pressure")},
+        **{
+            k: v
+            for k, v in view.attrs.items()
+            if k in ("Conventions", "depth_unit", "water", "surface_pressure")
+        },
         "title": f"inert gas in the tissues of the model {model.name}",
         "source": f"gasphys {__version__}, tissues, model {model.name}"
         + (f" variant {model.variant}" if model.variant else "")
@@ -419,7 +423,10 @@ def _record(ds: xr.Dataset, run: _Run) -> None:
     """Add what :func:`gasphys.explain` needs to evaluate one instant again with the plain equations."""
     model, row, judged = run.model, run.row, run.judged
     equations: dict[str, tuple[str, dict[str, Any]]] = {
-        "limit_fraction": ("limit_fraction", {"tissue_pressure": "@total_tissue_pressure", "m_value": "@m_value"}),
+        "limit_fraction": (
+            "limit_fraction",
+            {"tissue_pressure": "@total_tissue_pressure", "m_value": "@m_value"},
+        ),
         "gradient_fraction": (
             "gradient_fraction",
             {
@@ -442,7 +449,10 @@ def _record(ds: xr.Dataset, run: _Run) -> None:
             np.ascontiguousarray(run.states[..., last]),
             attributes("initial_tissue_pressure"),
         )
-        for name, values in (("start_inert_pressure", row.start_inert), ("end_inert_pressure", row.end_inert)):
+        for name, values in (
+            ("start_inert_pressure", row.start_inert),
+            ("end_inert_pressure", row.end_inert),
+        ):
             ds[name] = (("inert_gas", "time"), np.ascontiguousarray(values[last].T), attributes(name))
         equations["tissue_pressure"] = (
             "tissue_pressure",

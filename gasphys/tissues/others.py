@@ -1,4 +1,4 @@
-"""Along an exposure besides the limits: counterdiffusion at switches, the oxygen window, the suit's tissue."""
+"""Besides the limits: counterdiffusion at switches, the oxygen window, the tissue of prebreathe."""
 
 from __future__ import annotations
 
@@ -74,7 +74,9 @@ def counterdiffusion(
     """
     chosen = load(model)
     if chosen.kinetics != "exponential" or len(chosen.inert_gases) != 2:
-        raise ValidityError(f"{chosen.name}: counterdiffusion needs exponential compartments with two inert gases")
+        raise ValidityError(
+            f"{chosen.name}: counterdiffusion needs exponential compartments with two inert gases"
+        )
     if exposure.dims:
         raise ExposureError("counterdiffusion takes one scenario; pick one first")
     if not exposure.part:
@@ -84,7 +86,9 @@ def counterdiffusion(
     row, before = stretches(chosen, pieces)
     states = along(chosen, initial_state(chosen, initial, exposure), row)
     breath = breath_of(chosen, pieces)
-    here = np.concatenate([breath.oxygen[:, None], breath.inert, np.nan_to_num(breath.setpoint, nan=-1.0)[:, None]], axis=1)
+    here = np.concatenate(
+        [breath.oxygen[:, None], breath.inert, np.nan_to_num(breath.setpoint, nan=-1.0)[:, None]], axis=1
+    )
     switches = np.flatnonzero((here[1:] != here[:-1]).any(axis=1)) + 1
     ends = before[switches]
     after, previous = row.start_inert[ends], row.end_inert[ends - 1]
@@ -118,14 +122,24 @@ def counterdiffusion(
             "total_tissue_pressure": (
                 cells,
                 state.sum(axis=-1),
-                attributes("tissue_pressure") | {"long_name": "inert gas pressure in a compartment, both gases"},
+                attributes("tissue_pressure")
+                | {"long_name": "inert gas pressure in a compartment, both gases"},
             ),
-            "total_rate": (cells, total_rate, attributes("pressure_rate") | {"long_name": "rate of the sum just after the switch"}),
-            "rise": (cells, rise, {"units": "kPa", "long_name": "further rise of the sum at constant pressure"}),
+            "total_rate": (
+                cells,
+                total_rate,
+                attributes("pressure_rate") | {"long_name": "rate of the sum just after the switch"},
+            ),
+            "rise": (
+                cells,
+                rise,
+                {"units": "kPa", "long_name": "further rise of the sum at constant pressure"},
+            ),
             "rise_time": (
                 cells,
                 np.where(never, np.inf, np.where(rising, when, 0.0)),
-                attributes("duration") | {"long_name": "time until the sum is highest; infinite: it only rises"},
+                attributes("duration")
+                | {"long_name": "time until the sum is highest; infinite: it only rises"},
             ),
         },
         coords={
@@ -176,7 +190,7 @@ def window(exposure: Exposure, *, at: Any = None) -> xr.Dataset:
     8.5
     """
     ds = exposure.to_dataset(at=at)
-    out = ds[["ambient_pressure", "breathing_gas_po2"]]
+    out = ds.copy()
     inputs = {
         "ambient_pressure": "@ambient_pressure",
         "fio2": "@breathing_gas_po2 / @ambient_pressure",
@@ -194,7 +208,12 @@ def window(exposure: Exposure, *, at: Any = None) -> xr.Dataset:
     out["oxygen_window"] = (
         ds["breathing_gas_po2"].dims,
         values,
-        attributes("oxygen_window", equation=oxygen_window.name, inputs=json.dumps(inputs), provenance=oxygen_window.provenance),
+        attributes(
+            "oxygen_window",
+            equation=oxygen_window.name,
+            inputs=json.dumps(inputs),
+            provenance=oxygen_window.provenance,
+        ),
     )
     out.attrs = {
         **ds.attrs,
@@ -275,23 +294,36 @@ def prebreathe(
         for value in uptake[known]:
             _number(value, "o2_uptake_per_mass")
         minutes = np.where(known, exercise_half_time.raw(np.where(known, uptake, 3.5)), minutes)
-    first, last = (a + b for a, b in zip(pieces.inert_pressure("N2"), pieces.inert_pressure("Ar"), strict=True))
+    first, last = (
+        a + b for a, b in zip(pieces.inert_pressure("N2"), pieces.inert_pressure("Ar"), strict=True)
+    )
     if initial is None:
         held = 0.79 * float(exposure.surface_pressure)
     else:
         held = _number(initial, "tissue_pressure")
     boundary = [held]
     for k in range(len(pieces.duration)):
-        boundary.append(float(tissue_pressure.raw(boundary[-1], first[k], last[k], pieces.duration[k], minutes[k])))
+        boundary.append(
+            float(tissue_pressure.raw(boundary[-1], first[k], last[k], pieces.duration[k], minutes[k]))
+        )
     start = np.array(boundary)[index]
     there = first[index] + (last - first)[index] * share
     values = tissue_pressure.raw(start, first[index], there, pieces.duration[index] * share, minutes[index])
-    out = ds[["ambient_pressure"]]
-    known_as = weakest([tissue_pressure.provenance, exercise_half_time.provenance if body_mass is not None else "memory_high"])
+    out = xr.Dataset(
+        {"ambient_pressure": ("time", ds["ambient_pressure"].values, attributes("ambient_pressure"))}
+    )
+    out = out.assign_coords(time=ds["time"])
+    known_as = weakest(
+        [
+            tissue_pressure.provenance,
+            exercise_half_time.provenance if body_mass is not None else "memory_high",
+        ]
+    )
     out["tissue_pressure"] = (
         "time",
         np.asarray(values),
-        attributes("tissue_pressure", provenance=known_as) | {"long_name": "N2 pressure in the slow tissue, absolute"},
+        attributes("tissue_pressure", provenance=known_as)
+        | {"long_name": "N2 pressure in the slow tissue, absolute"},
     )
     if suit_pressure is not None:
         suit = _number(suit_pressure, "suit_pressure")
@@ -299,7 +331,12 @@ def prebreathe(
         out["supersaturation_ratio"] = (
             "time",
             np.asarray(supersaturation_ratio.raw(np.asarray(values), suit)),
-            attributes("supersaturation_ratio", equation=supersaturation_ratio.name, inputs=inputs, provenance=known_as),
+            attributes(
+                "supersaturation_ratio",
+                equation=supersaturation_ratio.name,
+                inputs=inputs,
+                provenance=known_as,
+            ),
         )
     out["half_time"] = ("segment", minutes, attributes("half_time", provenance=known_as))
     out.attrs = {

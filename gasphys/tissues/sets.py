@@ -48,7 +48,7 @@ MIXED = ("weighted", "smallest")
 TESTED = ("before_leaving", "on_arrival")
 
 _TEXTS = ("title", "edition", "source", "depth", "refuses", "does_not_claim")
-_TOP = {
+_TOP: dict[str, type | tuple[type, ...]] = {
     **dict.fromkeys(_TEXTS, str),
     "based_on": str,
     "kinetics": str,
@@ -226,7 +226,9 @@ class TissueSet:
         return tuple(f for f in FORMULAS if f in own or f in ("O2", "CO2"))
 
     def __repr__(self) -> str:
-        return f"<TissueSet {self.name}: {len(self.compartments)} compartments, {', '.join(self.inert_gases)}>"
+        return (
+            f"<TissueSet {self.name}: {len(self.compartments)} compartments, {', '.join(self.inert_gases)}>"
+        )
 
     def __str__(self) -> str:
         reference = cite(self.source) if self.source in sources() else self.source
@@ -245,7 +247,10 @@ class TissueSet:
             "file": self.digest,
         }
         variant = f", variant {self.variant}" if self.variant else ""
-        return "\n".join([f"{self.name}{variant}: {self.title} ({self.edition})"] + [f"  {k}: {v}" for k, v in words.items()])
+        return "\n".join(
+            [f"{self.name}{variant}: {self.title} ({self.edition})"]
+            + [f"  {k}: {v}" for k, v in words.items()]
+        )
 
 
 # -- Names and files ------------------------------------------------------------------------------
@@ -354,7 +359,7 @@ class _Reader:
     def __init__(self, name: str, text: str, path: str, shipped: bool) -> None:
         self.name, self.path, self.shipped = name, path, shipped
         self.texts = [text]
-        data = self._parse(text)
+        data: dict[str, Any] = self._parse(text)
         if "based_on" in data:
             base = data.pop("based_on")
             if base not in _shipped():
@@ -365,14 +370,18 @@ class _Reader:
             if not shipped:  # a changed number breaks the sums of the set it changes
                 inherited = {k: v for k, v in inherited.items() if k != "integrity"}
             data = _merged(inherited, data)
-        self.data = data
+        self.data: dict[str, Any] = data
 
     def refuse(self, key: str, message: str, remedy: str = "") -> InputFileError:
         """Return the error for one key, with its line where it can be found."""
         last = re.escape(key.rsplit(".", 1)[-1])
         lines = self.texts[0].splitlines()
-        line = next((n for n, text in enumerate(lines, 1) if re.search(rf"(^|[\s.{{\[,]){last}\s*(=|\])", text)), None)
-        return InputFileError(f"{key}: {message}", path=self.path, line=line, remedy=remedy or f"correct {key}")
+        line = next(
+            (n for n, text in enumerate(lines, 1) if re.search(rf"(^|[\s.{{\[,]){last}\s*(=|\])", text)), None
+        )
+        return InputFileError(
+            f"{key}: {message}", path=self.path, line=line, remedy=remedy or f"correct {key}"
+        )
 
     def _parse(self, text: str) -> dict[str, Any]:
         try:
@@ -427,7 +436,9 @@ class _Reader:
             start=str(data["start"]["state"]),
             on_the_way=str(data["limit"].get("on_the_way", "")),
             tested=tuple(data["limit"].get("tested", ())),
-            highest_pressure=self._pressure(data, "highest_pressure", data.get("highest_pressure", float("inf"))),
+            highest_pressure=self._pressure(
+                data, "highest_pressure", data.get("highest_pressure", float("inf"))
+            ),
             deepest=self._pressure(data, "deepest", data.get("deepest", float("inf"))),
             short_deep=self._short_deep(data),
             provenance_of=provenance_of,
@@ -464,13 +475,17 @@ class _Reader:
                 raise self.refuse("inert_gases", str(unknown_name("inert gas", gas, [*inert, "total"])))
         for gas in data.get("counted_as", {}).values():
             if gas not in data["inert_gases"]:
-                raise self.refuse("counted_as", str(unknown_name("inert gas of this set", gas, data["inert_gases"])))
+                raise self.refuse(
+                    "counted_as", str(unknown_name("inert gas of this set", gas, data["inert_gases"]))
+                )
         total, ambient = data["inert_gases"] == ["total"], data["convention"]["alveolar"] == "ambient"
         if total != ambient or (total and not data.get("air_only", False)):
             raise self.refuse("inert_gases", "'total', alveolar = 'ambient' and air_only = true go together")
         linear = data["kinetics"] == "exponential_linear"
         if linear != (data["convention"]["alveolar"] == "thalmann"):
-            raise self.refuse("convention.alveolar", "exponential_linear and alveolar = 'thalmann' go together")
+            raise self.refuse(
+                "convention.alveolar", "exponential_linear and alveolar = 'thalmann' go together"
+            )
         if linear and len(data["inert_gases"]) != 1:
             raise self.refuse("inert_gases", "exponential_linear tracks one gas")
         if data["kinetics"] == "serial" and not ambient:
@@ -539,11 +554,11 @@ class _Reader:
                     half_time[i, j] = self._number(one, at, "half_time")
                 if one and set(one) - set(needs):
                     wrong = next(k for k in one if k not in needs)
-                    raise self.refuse(at, str(unknown_name("entry of a compartment", wrong, ["half_time", *needs])))
+                    raise self.refuse(
+                        at, str(unknown_name("entry of a compartment", wrong, ["half_time", *needs]))
+                    )
                 if one:
-                    numbers = {
-                        k: self._number(one, at, k, positive=k not in ("a", "offset")) for k in needs
-                    }
+                    numbers = {k: self._number(one, at, k, positive=k not in ("a", "offset")) for k in needs}
                     for k, is_pressure in needs.items():
                         if is_pressure:
                             numbers[k] = self._pressure(data, f"{at}.{k}", numbers[k])
@@ -571,7 +586,7 @@ class _Reader:
         for pair in data.get("never_together", ()):
             if set(pair) <= set(chosen):
                 raise UnknownNameError(
-                    f"compartments {' and '.join(pair)} of {self.name} are two choices for the same place: use one"
+                    f"compartments {' and '.join(pair)} of {self.name} are two choices for one place: use one"
                 )
         if data["kinetics"] == "serial" and chosen != names:
             raise UnknownNameError(f"{self.name}: compartments in series cannot be left out")
@@ -583,7 +598,9 @@ class _Reader:
             return None
         missing = {"depth", "bottom_time", "action", "reason"} ^ set(given)
         if missing or given["action"] not in ("refuse", "flag"):
-            raise self.refuse("short_deep", "needs depth, bottom_time, action ('refuse' or 'flag') and reason")
+            raise self.refuse(
+                "short_deep", "needs depth, bottom_time, action ('refuse' or 'flag') and reason"
+            )
         return ShortDeep(
             depth=self._pressure(data, "short_deep.depth", given["depth"]),
             bottom_time=float(given["bottom_time"]),
@@ -601,7 +618,9 @@ class _Reader:
             column = key.removeprefix("sum_")
             for gas, value in expected.items():
                 if gas not in gases:
-                    raise self.refuse(f"integrity.{key}", str(unknown_name("inert gas of this set", gas, gases)))
+                    raise self.refuse(
+                        f"integrity.{key}", str(unknown_name("inert gas of this set", gas, gases))
+                    )
                 found = sum(float(data["compartment"][n][gas].get(column, 0.0)) for n in names)
                 if not abs(found - value) <= 1e-9 * max(1.0, abs(value)):
                     raise self.refuse(
@@ -612,7 +631,11 @@ class _Reader:
 
     def _check_order(self, names: tuple[str, ...], half_time: Array, a: Array, b: Array) -> None:
         """Half-times rise, and the limit at one atmosphere falls, from each compartment to the next."""
-        for values, sign, what in ((half_time, 1.0, "half_time rises"), (a + 101.325 / b, -1.0, "the limit falls"), (b, 1.0, "b rises")):
+        for values, sign, what in (
+            (half_time, 1.0, "half_time rises"),
+            (a + 101.325 / b, -1.0, "the limit falls"),
+            (b, 1.0, "b rises"),
+        ):
             if what == "b rises" and self.data["limit"].get("form") != "a_b":
                 continue
             steps = sign * np.diff(values, axis=0)
@@ -620,7 +643,8 @@ class _Reader:
             if (steps < -rounding).any():
                 place = int(np.argwhere(steps < -rounding)[0][0])
                 raise self.refuse(
-                    f"compartment.{names[place + 1]}", f"the file is ordered, but not: {what} from {names[place]}"
+                    f"compartment.{names[place + 1]}",
+                    f"the file is ordered, but not: {what} from {names[place]}",
                 )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import os
 from collections.abc import Callable
 from typing import Any
@@ -86,9 +87,9 @@ def no_stop_time(
 
     Notes
     -----
-    With an ascent rate the model's own rule decides: limits met on arrival take the gas exchange of the ascent
-    into account; where the set also tests before leaving, the shorter of both times counts. Closed form
-    for exponential compartments with one inert gas; otherwise the instant is a bracketed root.
+    With an ascent rate the model's own rule decides: limits met on arrival take the gas exchange of the
+    ascent into account; where the set also tests before leaving, the shorter of both times counts. Closed
+    form for exponential compartments with one inert gas; otherwise the instant is a bracketed root.
     The bare model, not the published table that may go by its name.
 
     Examples
@@ -138,8 +139,10 @@ def no_stop_time(
     return rebuild(result)
 
 
-def _read_depths(depth: Any, depth_unit: str, water: str) -> tuple[Array, str, str, Callable[[Array], Any], bool]:
-    """Return depths as a flat array, their unit and water, and what turns the result into the caller's kind."""
+def _read_depths(
+    depth: Any, depth_unit: str, water: str
+) -> tuple[Array, str, str, Callable[[Array], Any], bool]:
+    """Return depths as a flat array, unit, water, what restores the caller's kind, and whether it is one."""
     if depth_unit not in ("msw", "fsw", "m"):
         raise unknown_name("depth unit", depth_unit, ("msw", "fsw", "m"))
     if water not in WATERS:
@@ -155,8 +158,13 @@ def _read_depths(depth: Any, depth_unit: str, water: str) -> tuple[Array, str, s
         values = depth.values.astype(float)
 
         def rebuild(result: Array) -> Any:
-            attrs = attributes("duration") | {"long_name": "no-stop time, descent included", "comment": CAUTION}
-            return xr.DataArray(result.reshape(values.shape), dims=depth.dims, coords=depth.coords, attrs=attrs)
+            attrs = attributes("duration") | {
+                "long_name": "no-stop time, descent included",
+                "comment": CAUTION,
+            }
+            return xr.DataArray(
+                result.reshape(values.shape), dims=depth.dims, coords=depth.coords, attrs=attrs
+            )
     else:
         values = np.asarray(depth, dtype=float)
 
@@ -169,7 +177,9 @@ def _read_depths(depth: Any, depth_unit: str, water: str) -> tuple[Array, str, s
     if single and wrong[0]:
         raise RangeError(f"depth = {flat[0]:g} {depth_unit} must not be negative")
     if (flat < 0.0).any():
-        outside_validity(f"no_stop_time: {int((flat < 0.0).sum())} depths are negative; those results are nan")
+        outside_validity(
+            f"no_stop_time: {int((flat < 0.0).sum())} depths are negative; those results are nan"
+        )
     return np.where(wrong, np.nan, flat), depth_unit, water, rebuild, single
 
 
@@ -179,15 +189,23 @@ def _to_pressure(depth: Any, depth_unit: str, water: str, surface: float) -> Any
     return f.raw(*[np.asarray(inputs[a.name], dtype=float) for a in f.arguments])
 
 
-def _judge_depths(model: TissueSet, depths: Array, bottom: Array, surface: float, depth_unit: str, one: bool) -> None:
+def _judge_depths(
+    model: TissueSet, depths: Array, bottom: Array, surface: float, depth_unit: str, one: bool
+) -> None:
     """Refuse or flag depths the set was not made for."""
     with np.errstate(invalid="ignore"):
         gauge = bottom - surface
-        deep = (gauge > model.deepest * (1.0 + ROUNDING)) | (bottom > model.highest_pressure * (1.0 + ROUNDING))
+        deep = (gauge > model.deepest * (1.0 + ROUNDING)) | (
+            bottom > model.highest_pressure * (1.0 + ROUNDING)
+        )
         rule = model.short_deep
-        doubtful = gauge >= rule.depth * (1.0 - ROUNDING) if rule is not None else np.zeros(depths.shape, dtype=bool)
+        doubtful = (
+            gauge >= rule.depth * (1.0 - ROUNDING) if rule is not None else np.zeros(depths.shape, dtype=bool)
+        )
     if deep.any():
-        outside_validity(f"{model.name}: {depths[deep][0]:g} {depth_unit} is deeper than the model was made for")
+        outside_validity(
+            f"{model.name}: {depths[deep][0]:g} {depth_unit} is deeper than the model was made for"
+        )
     if rule is None or not doubtful.any():
         return
     shown = f"{depths[doubtful][0]:g} {depth_unit}"
@@ -197,23 +215,27 @@ def _judge_depths(model: TissueSet, depths: Array, bottom: Array, surface: float
         raise ValidityError(f"{model.name} refuses the no-stop time at {shown}: {rule.reason}")
     else:
         outside_validity(
-            f"{model.name} refuses {int(doubtful.sum())} of {depths.size} no-stop times ({shown}): {rule.reason}; "
-            "those results are nan"
+            f"{model.name} refuses {int(doubtful.sum())} of {depths.size} no-stop times ({shown}): "
+            f"{rule.reason}; those results are nan"
         )
 
 
 def _hold(model: TissueSet, state: Array, bottom: Array, surface: float, up: Array, breath: Breath) -> Array:
-    """Return the longest stay at the bottom [min] so that the limit is met after an ascent of ``up`` minutes."""
+    """Return the longest stay [min] so that the limit is met after an ascent of ``up`` minutes."""
     arriving = inert_pressure(model, bottom, breath)[..., None, :]
     single = [
-        g for g in range(len(model.inert_gases)) if (state[..., g] > 0.0).any() or (arriving[..., g] > 0.0).any()
+        g
+        for g in range(len(model.inert_gases))
+        if (state[..., g] > 0.0).any() or (arriving[..., g] > 0.0).any()
     ]
     if model.kinetics == "exponential" and len(single) <= 1:
         g = single[0] if single else 0
         _, limit = m_values(model, state, np.full(bottom.shape, surface))
         half_time = model.half_time[:, g]
         if up.any():
-            empty = advance(model, np.zeros_like(state), up, bottom, np.full_like(bottom, surface), breath)[..., g]
+            empty = advance(model, np.zeros_like(state), up, bottom, np.full_like(bottom, surface), breath)[
+                ..., g
+            ]
             limit = (limit - empty) / (1.0 - uptake_share.raw(up[..., None], half_time))
         held, inert = state[..., g], arriving[..., 0, g][..., None]
         with np.errstate(divide="ignore", invalid="ignore"):
@@ -269,7 +291,7 @@ def _crossing(
         # It ends with the ambient pressure everywhere; where that is tolerated nothing is ever exceeded.
         uniform = np.broadcast_to(pressure[:, None, None], state.shape)
         times = times[: 1 if (over(uniform, lanes) <= 0.0).all() else None]
-    for before, now in zip(times[:-1], times[1:], strict=True):
+    for before, now in itertools.pairwise(times):
         # One after the other is as exact as from the start, and the serial model could not do otherwise.
         states.append(stay(states[-1], np.full(len(lanes), now - before), lanes))
         excess.append(over(states[-1], lanes))
@@ -278,7 +300,7 @@ def _crossing(
     row, held = np.stack(excess), np.stack(states)
     result = np.full(len(lanes), np.inf if first else 0.0)
     for lane in lanes:
-        e = row[:, lane]
+        e, instants = row[:, lane].copy(), times.copy()
         here = np.array([lane])
 
         def at(minutes: Array, k: int, here: NDArray[np.int64] = here) -> Array:
@@ -287,19 +309,17 @@ def _crossing(
             return over(stay(many, minutes.ravel(), back), back).reshape(minutes.shape)
 
         if several:
-            # Maxima (first) or minima (last) hidden between the instants.
+            # Maxima hidden between the instants.
             for k in range(1, len(e) - 1):
                 turn = e[k - 1] <= e[k] >= e[k + 1] and e[k] <= 0.0
                 if turn and (not first or not (e[:k] > 0.0).any()):
-                    inner = np.linspace(0.0, times[k + 1] - times[k - 1], 65)
+                    inner = np.linspace(0.0, times[k + 1] - instants[k - 1], 65)
                     found = at(inner, k - 1)
                     if (found > 0.0).any():
                         j = int(np.argmax(found))
-                        e = e.copy()
                         e[k] = found[j]
                         held[k, lane] = stay(held[k - 1, here], inner[[j]], here)[0]
-                        times = times.copy()
-                        times[k] = times[k - 1] + inner[j]
+                        instants[k] = instants[k - 1] + inner[j]
         above = np.flatnonzero(e > 0.0)
         if not above.size:
             continue
@@ -311,9 +331,13 @@ def _crossing(
             result[lane] = np.inf
             continue
         low = k - 1 if first else k
-        span = times[low + 1] - times[low]
-        root = find_root(lambda m, low=low, at=at: at(np.atleast_1d(m), low), np.zeros(1), np.full(1, span))
-        result[lane] = times[low] + float(root[0] if np.isfinite(root[0]) else (0.0 if first else span))
+        span = float(instants[low + 1] - instants[low])
+
+        def excess_after(minutes: Array, low: int = low, at: Callable[..., Array] = at) -> Array:
+            return at(minutes, low)
+
+        root = find_root(excess_after, np.zeros(1), np.full(1, span))[0]
+        result[lane] = instants[low] + (root if np.isfinite(root) else span)
     return result
 
 
@@ -364,10 +388,11 @@ def time_to_fly(
 
     Notes
     -----
-    The ascent to the cabin is taken as instantaneous. Arithmetic of a decompression model, from memory and not
-    tested for flying. What trials say (quoted elsewhere): 40 cases in 802, none with 11 h or more after one
-    no-stop dive to 60 fsw or deeper, and after repetitive dives all below 17 h. The guideline of 2002 asks for
-    12 h after one no-stop dive, 18 h after several or on several days, substantially more after stops.
+    The ascent to the cabin is taken as instantaneous. Arithmetic of a decompression model, from memory and
+    not tested for flying. What trials say (quoted elsewhere): 40 cases in 802, none with 11 h or more after
+    one no-stop dive to 60 fsw or deeper, and after repetitive dives all below 17 h. The guideline of 2002
+    asks for 12 h after one no-stop dive, 18 h after several or on several days, substantially more after
+    stops.
 
     Examples
     --------
@@ -417,14 +442,20 @@ def time_to_fly(
                 chosen.compartments[worst] if waits[worst] > 0.0 else "",
                 {"long_name": "compartment that asks for the wait; empty: none does"},
             ),
-            "cabin_pressure": ((), cabin, attributes("ambient_pressure") | {"long_name": "pressure to go to, absolute"}),
+            "cabin_pressure": (
+                (),
+                cabin,
+                attributes("ambient_pressure") | {"long_name": "pressure to go to, absolute"},
+            ),
         },
         coords={"compartment": np.array(chosen.compartments, dtype=str)},
         attrs={
-            **{k: ds.attrs[k] for k in ("Conventions", "source", "provenance", "model", "edition", "history")},
+            **{
+                k: ds.attrs[k] for k in ("Conventions", "source", "provenance", "model", "edition", "history")
+            },
             "title": f"wait before altitude by the model {chosen.name}",
             "references": f"{chosen.source}; vann_2007",
-            "not_validated": "a decompression model's arithmetic; published guidance asks for 12 h, 18 h or more",
+            "not_validated": "arithmetic of a decompression model; guidance asks for 12 h, 18 h or more",
             "comment": CAUTION,
         },
     )
@@ -470,17 +501,21 @@ def residual_time(
 
     Examples
     --------
-    >>> dive = Exposure.start("air", depth_unit="fsw").travel(depth=60, rate=75).stay(40).travel(depth=0, rate=60)
-    >>> float(residual_time(dive.then(120), 60.0).sel(compartment="120").round(1))
+    >>> dive = Exposure.start("air", depth_unit="fsw").travel(depth=60, rate=75).stay(40)
+    >>> float(residual_time(dive.travel(depth=0, rate=60).then(120), 60.0).sel(compartment="120").round(1))
     19.2
     """
     chosen = load(model)
     if chosen.kinetics != "exponential" or len(chosen.inert_gases) != 1:
-        raise ValidityError(f"{chosen.name}: a residual time needs exponential compartments with one inert gas")
+        raise ValidityError(
+            f"{chosen.name}: a residual time needs exponential compartments with one inert gas"
+        )
     require_provenance(chosen.provenance_of[chosen.inert_gases[0]], f"tissue model {chosen.name}")
     ds = tensions(exposure, chosen, initial)
     surface = exposure.surface_pressure
-    start = Exposure.start(gas, surface_pressure=surface, depth_unit=exposure.depth_unit, water=exposure.water)
+    start = Exposure.start(
+        gas, surface_pressure=surface, depth_unit=exposure.depth_unit, water=exposure.water
+    )
     there = start.travel(depth=depth, minutes=1.0) if depth > 0.0 else start.stay(1.0)
     pieces = there.pieces()
     check_gases(chosen, pieces, ())

@@ -250,7 +250,7 @@ def short_deep(model: TissueSet, pieces: Pieces, surface: Any) -> NDArray[np.boo
     --------
     >>> from gasphys.exposure import Exposure
     >>> from gasphys.tissues.sets import load
-    >>> dive = Exposure.start("air", depth_unit="fsw").travel(depth=120, rate=75).stay(10).travel(depth=0, rate=30)
+    >>> dive = Exposure.start("air", depth_unit="fsw").travel(depth=120, rate=75).stay(10)
     >>> bool(short_deep(load("thalmann_vval18"), dive.pieces(), 101.325))
     True
     """
@@ -277,27 +277,18 @@ def short_deep(model: TissueSet, pieces: Pieces, surface: Any) -> NDArray[np.boo
 def _excursions(start: Array, end: Array, times: Array, slack: float) -> list[tuple[float, float]]:
     """Return the greatest depth [kPa] and the bottom time [min] of each excursion from the surface."""
     found: list[tuple[float, float]] = []
-    begun: float | None = None
-    deepest, last = 0.0, 0.0
-
-    def near(a: float, b: float, t0: float, t1: float, level: float) -> float | None:
-        """Return the last instant of a piece at or below a level of depth."""
-        if b >= level:
-            return t1
-        if a >= level:
-            return t0 + (t1 - t0) * (a - level) / (a - b)
-        return None
-
-    rows = list(zip(start, end, times[:-1], times[1:], strict=True))
-    for k, (a, b, t0, t1) in enumerate(rows):
-        if begun is None and max(a, b) > slack:
-            begun, deepest, last, first = t0, 0.0, t0, k
-        if begun is not None:
-            deepest = max(deepest, a, b)
-            if b <= slack or k == len(rows) - 1:
-                for c, d, s0, s1 in rows[first : k + 1]:
-                    instant = near(c, d, s0, s1, deepest - slack)
-                    last = last if instant is None else instant
-                found.append((deepest, last - begun))
-                begun = None
+    first: int | None = None
+    for k in range(len(start)):
+        if first is None and max(start[k], end[k]) > slack:
+            first = k
+        if first is not None and (end[k] <= slack or k == len(start) - 1):
+            begins, ends = start[first : k + 1], end[first : k + 1]
+            deepest = max(begins.max(), ends.max())
+            # The ascent begins where the last piece that is still within the slack ends.
+            at = max(
+                np.flatnonzero(ends >= deepest - slack).max(initial=-1) + 1,
+                np.flatnonzero(begins >= deepest - slack).max(initial=0),
+            )
+            found.append((float(deepest), float(times[first + at] - times[first])))
+            first = None
     return found

@@ -152,7 +152,9 @@ def _content(download: Download) -> bytes:
 def test_the_watch_sees_errors_and_requests_that_leave(page: Page, lab: str, seen: Seen) -> None:
     elsewhere = "http://192.0.2.1/"  # reserved for documentation; the request is stopped here
     page.route(elsewhere, lambda route: route.abort())
-    page.goto(f"{lab}/api/status")
+    page.goto(f"{lab}/lab")
+    page.locator("#jp-main-dock-panel").wait_for()
+    assert seen.outside == []
     page.evaluate("console.error('seen'); setTimeout(() => { throw new Error('thrown'); })")
     page.evaluate(f"fetch('{elsewhere}').catch(() => null)")
     assert any("seen" in text for text in seen.console)

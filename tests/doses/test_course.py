@@ -69,7 +69,9 @@ def test_forty_sessions_from_a_file(forty: Path) -> None:
     assert found.intervals()[4] == 3 * 24 * 60 - 120
     whole = found.exposure()
     assert set(whole.session) == set(range(40))
-    assert whole.duration == pytest.approx((found.sessions[-1].end - found.sessions[0].start).total_seconds() / 60)
+    assert whole.duration == pytest.approx(
+        (found.sessions[-1].end - found.sessions[0].start).total_seconds() / 60
+    )
     assert whole.attrs["start"] == "2042-03-03T08:00:00"
     # One schedule, read once, is one exposure.
     assert len({id(s.exposure) for s in found.sessions}) == 1
@@ -81,7 +83,9 @@ def test_one_call_for_a_course_of_forty(forty: Path) -> None:
     ds = course_doses(found, "all", count="oxygen")
     assert ds.sizes == {"measure": len(single.measure), "session": 40}
     np.testing.assert_array_equal(ds.session_dose.isel(session=17).values, single.dose.values)
-    assert float(ds.course_dose.sel(measure="uptd")[-1]) == pytest.approx(40 * float(single.dose.sel(measure="uptd")))
+    assert float(ds.course_dose.sel(measure="uptd")[-1]) == pytest.approx(
+        40 * float(single.dose.sel(measure="uptd"))
+    )
     whole = oxygen(found.exposure(), ["uptd"], count="oxygen")
     assert float(whole.dose[0]) == pytest.approx(float(ds.course_dose.sel(measure="uptd")[-1]), rel=1e-12)
 
@@ -117,7 +121,8 @@ def test_a_log_is_read_beside_the_course_file(tmp_path: Path) -> None:
     )
     path = tmp_path / "course.csv"
     path.write_text(
-        "date,time,log,person,surface_pressure\n2042-03-03,08:00,monday.csv,P-01,101.0 kPa\n", encoding="utf-8"
+        "date,time,log,person,surface_pressure\n2042-03-03,08:00,monday.csv,P-01,101.0 kPa\n",
+        encoding="utf-8",
     )
     found = read_course(path)
     assert found.sessions[0].label == "monday.csv"
@@ -131,7 +136,8 @@ def test_a_log_is_read_beside_the_course_file(tmp_path: Path) -> None:
 def test_several_people_in_one_file(tmp_path: Path) -> None:
     path = tmp_path / "unit.csv"
     path.write_text(
-        "date,time,schedule,person\n2042-03-03,08:00,usn_9,P-01\n2042-03-03,08:30,usn_9,P-02\n", encoding="utf-8"
+        "date,time,schedule,person\n2042-03-03,08:00,usn_9,P-01\n2042-03-03,08:30,usn_9,P-02\n",
+        encoding="utf-8",
     )
     with pytest.raises(InputFileError, match=r"P-01, P-02.*person="):
         read_course(path)
@@ -228,7 +234,9 @@ def test_sessions_must_not_overlap() -> None:
 
 def test_vital_capacity_recovers_between_sessions() -> None:
     """Reference check PUL-2: 2.0 atm x 120 min, loss 0.779 %, 3 h later 0.274 %; then restart from what is left."""
-    found = course_doses(course(held(2.0, 120), [0.0, 5.0 / 24.0]), ["vital_capacity_loss", "arieli_pulmonary_index"])
+    found = course_doses(
+        course(held(2.0, 120), [0.0, 5.0 / 24.0]), ["vital_capacity_loss", "arieli_pulmonary_index"]
+    )
     loss = found.course_dose.sel(measure="vital_capacity_loss").values
     assert loss[0] == pytest.approx(0.00779, abs=5e-6)
     left = 0.00274
@@ -316,7 +324,9 @@ def test_repeated_exposure_ladder(dose: float, done: int) -> None:
         while expected < 400 and dose * (done + expected + 1) <= allowed(int(done + expected + 1)):
             expected += 1
         expected = math.inf if expected >= 400 else expected
-    row = ladder(course(held(1.0, dose), list(map(float, range(done)))), "uptd_repeated_exposure", role="diver")
+    row = ladder(
+        course(held(1.0, dose), list(map(float, range(done)))), "uptd_repeated_exposure", role="diver"
+    )
     assert float(row.sessions_left) == expected
     assert float(row.limit_value) == allowed(done)
 

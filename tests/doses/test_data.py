@@ -142,7 +142,10 @@ def test_carbon_dioxide_and_absorbents() -> None:
             ours = gp.doses.absorbent_capacity(row["minutes"], row["co2_flow_l_min"], row["mass_kg"])
             assert ours == pytest.approx(row["capacity_l_kg"], abs=0.05)
     minutes = {r["case"]: r["minutes"] for r in published("absorbent")}
-    cold = minutes["a naval closed-circuit canister at 40 degF"] / minutes["a naval closed-circuit canister at 70 degF"]
+    cold = (
+        minutes["a naval closed-circuit canister at 40 degF"]
+        / minutes["a naval closed-circuit canister at 70 degF"]
+    )
     assert cold == 0.75  # SCR-2
 
 
@@ -164,7 +167,9 @@ PURITY = {
 
 
 def test_purity_table() -> None:
-    assert {r["standard"]: (r["co_ppm"], r["co2_ppm"], r["oil_mg_m3"]) for r in published("gas_purity")} == PURITY
+    assert {
+        r["standard"]: (r["co_ppm"], r["co2_ppm"], r["oil_mg_m3"]) for r in published("gas_purity")
+    } == PURITY
     assert all(r["edition"] for r in published("gas_purity"))
 
 

@@ -44,7 +44,12 @@ RAMPS = {
             lambda p, n=n: (p / ATM) ** n,
             0.0,
         )
-        for name, n in (("active", 3.38), ("active_0_9_l_min", 3.38), ("immersed_rest", 5.465), ("dry_rest", 6.495))
+        for name, n in (
+            ("active", 3.38),
+            ("active_0_9_l_min", 3.38),
+            ("immersed_rest", 5.465),
+            ("dry_rest", 6.495),
+        )
     },
 }
 
@@ -58,7 +63,9 @@ def test_ramps_are_integrals_that_add(name, start, end, duration, share):
     f, rate, knee = RAMPS[name]
     whole = f(start, end, duration)
     place = [(knee - start) / (end - start)] if min(start, end) < knee < max(start, end) else None
-    integral = quad(lambda s: rate(start + (end - start) * s), 0, 1, points=place, epsabs=0, epsrel=1e-12, limit=200)
+    integral = quad(
+        lambda s: rate(start + (end - start) * s), 0, 1, points=place, epsabs=0, epsrel=1e-12, limit=200
+    )
     # Of the order of the integrand's own size, where a ramp only touches the threshold.
     assert whole == pytest.approx(duration * integral[0], rel=1e-10, abs=1e-13 * duration)
     middle = start + (end - start) * share
@@ -126,7 +133,9 @@ def test_doses_grow_with_po2_and_time(po2, duration, factor):
     assert root == pytest.approx(doses.esot_ramp(po2, po2 * factor, duration) / 60.0, rel=1e-12)
 
 
-@covers("doses.arieli_index_from_esot", "doses.vital_capacity_loss_from_index", "doses.equivalent_exposure_time")
+@covers(
+    "doses.arieli_index_from_esot", "doses.vital_capacity_loss_from_index", "doses.equivalent_exposure_time"
+)
 @given(po2=st.floats(50.0, 300.0), first=minutes, second=minutes)
 def test_the_index_does_not_add_but_its_root_does(po2, first, second):
     parts = [doses.arieli_pulmonary_index(po2, t) for t in (first, second)]
@@ -145,13 +154,18 @@ def test_the_index_does_not_add_but_its_root_does(po2, first, second):
 
 @covers("doses.vital_capacity_recovery_rate", "doses.vital_capacity_after_recovery")
 @given(
-    loss=st.floats(0.0, 0.3), po2=st.floats(1.1, 3.0), first=st.floats(0.0, 600.0), second=st.floats(0.0, 600.0)
+    loss=st.floats(0.0, 0.3),
+    po2=st.floats(1.1, 3.0),
+    first=st.floats(0.0, 600.0),
+    second=st.floats(0.0, 600.0),
 )
 def test_recovery_is_exponential_and_faster_after_more(loss, po2, first, second):
     def after(x, t, p=po2):
         return doses.vital_capacity_after_recovery(x, p * ATM, t)
 
-    assert after(after(loss, first), second) == pytest.approx(after(loss, first + second), rel=1e-9, abs=1e-15)
+    assert after(after(loss, first), second) == pytest.approx(
+        after(loss, first + second), rel=1e-9, abs=1e-15
+    )
     assert 0.0 <= after(loss, first) <= loss
     assert after(loss, first, po2 * 1.1) <= after(loss, first)
     assert doses.vital_capacity_recovery_rate(po2 * ATM) > 0.0
@@ -216,8 +230,12 @@ def test_intervals_take_off_and_never_add(fraction, interval, more):
         assert doses.noaa_cns_after_interval(fraction, interval + more, rule) <= now
         assert doses.noaa_cns_after_interval(fraction, 0.0, rule) == fraction
     for rule in ("half_time_90_min", "half_time_120_min"):
-        twice = doses.noaa_cns_after_interval(doses.noaa_cns_after_interval(fraction, interval, rule), more, rule)
-        assert twice == pytest.approx(doses.noaa_cns_after_interval(fraction, interval + more, rule), abs=1e-12)
+        twice = doses.noaa_cns_after_interval(
+            doses.noaa_cns_after_interval(fraction, interval, rule), more, rule
+        )
+        assert twice == pytest.approx(
+            doses.noaa_cns_after_interval(fraction, interval + more, rule), abs=1e-12
+        )
     assert doses.cns_recovery(interval) * doses.cns_recovery(more) == pytest.approx(
         doses.cns_recovery(interval + more), rel=1e-9
     )
@@ -237,7 +255,12 @@ def test_permitted_times_fall_with_po2_and_end_with_the_table(limits, share, mor
 
 
 @covers(*members("doses.usn_closed_circuit_o2_limit"), "doses.usn_remaining_o2_time")
-@given(depth=st.floats(20.0, 50.0), more=st.floats(0.0, 10.0), earlier=st.floats(0.0, 60.0), gap=st.floats(0.0, 300.0))
+@given(
+    depth=st.floats(20.0, 50.0),
+    more=st.floats(0.0, 10.0),
+    earlier=st.floats(0.0, 60.0),
+    gap=st.floats(0.0, 300.0),
+)
 def test_closed_circuit_times_fall_with_depth(depth, more, earlier, gap):
     for rule in ("single_depth", "one_excursion"):
         limit = doses.usn_closed_circuit_o2_limit(depth, rule)
@@ -297,12 +320,16 @@ def test_equivalent_depths(depth, oxygen, helium):
             },
         }
         for weights, value in found.items():
-            share = doses.narcotic_fraction(gas, weights=weights) / doses.narcotic_fraction(air, weights=weights)
+            share = doses.narcotic_fraction(gas, weights=weights) / doses.narcotic_fraction(
+                air, weights=weights
+            )
             assert value == pytest.approx((depth + surface) * share - surface, rel=1e-9, abs=1e-9)
             assert -surface - 1e-9 <= value
         assert found["nitrogen"] == pytest.approx(doses.equivalent_air_depth(depth, gas, unit), abs=1e-9)
         for counted in (False, True):
-            assert doses.equivalent_narcotic_depth(depth, air, unit, counted) == pytest.approx(depth, abs=1e-9)
+            assert doses.equivalent_narcotic_depth(depth, air, unit, counted) == pytest.approx(
+                depth, abs=1e-9
+            )
     # Helium counts nothing in any convention, argon in place of nitrogen is no less.
     for weights in ("nitrogen", "oxygen_counted", "reported", "oil_solubility"):
         assert doses.narcotic_fraction(gp.Gas(oxygen=0.0, helium=1.0), weights=weights) == 0.0

@@ -101,7 +101,11 @@ def test_constant_depth_and_mirror_images(p0, a, t, half):
 
 
 @given(
-    p=st.tuples(tensions, tensions), a=st.tuples(pressures, pressures), t=minutes, half=halves, w=st.floats(0.0, 1.0)
+    p=st.tuples(tensions, tensions),
+    a=st.tuples(pressures, pressures),
+    t=minutes,
+    half=halves,
+    w=st.floats(0.0, 1.0),
 )
 def test_tensions_are_linear_in_what_was_breathed(p, a, t, half, w):
     f = tissues.tissue_pressure
@@ -139,7 +143,11 @@ def test_the_threshold_moves_with_ambient_pressure(p, po2, pco2, over):
 
 @covers("tissues.linear_tissue_pressure")
 @given(
-    above=st.floats(1.0, 200.0), level=st.floats(80.0, 600.0), gap=st.floats(5.0, 80.0), half=halves, t=st.floats(0.1, 99.0)
+    above=st.floats(1.0, 200.0),
+    level=st.floats(80.0, 600.0),
+    gap=st.floats(5.0, 80.0),
+    half=halves,
+    t=st.floats(0.1, 99.0),
 )
 def test_the_linear_branch_is_straight_continuous_in_slope_and_slower(above, level, gap, half, t):
     p0, inert = level + above, level - gap
@@ -159,7 +167,11 @@ def test_the_linear_branch_is_straight_continuous_in_slope_and_slower(above, lev
 
 
 @given(
-    above=st.floats(1.0, 50.0), level=st.floats(80.0, 600.0), gap=st.floats(5.0, 80.0), fall=st.floats(0.0, 60.0), t=st.floats(1.0, 99.0)
+    above=st.floats(1.0, 50.0),
+    level=st.floats(80.0, 600.0),
+    gap=st.floats(5.0, 80.0),
+    fall=st.floats(0.0, 60.0),
+    t=st.floats(1.0, 99.0),
 )
 def test_on_a_ramp_the_parabola_meets_the_moving_threshold(above, level, gap, fall, t):
     half = 20.0
@@ -205,7 +217,14 @@ def test_at_its_ceiling_a_compartment_uses_just_that_gradient(p, a, b, g):
         assert (tissues.limit_fraction(p, limit) <= 1.0 + 1e-12) or g == 1.0
 
 
-@given(p=tensions, more=st.floats(0.0, 100.0), a=a_values, b=b_values, g=st.floats(0.0, 1.0), less=st.floats(0.0, 1.0))
+@given(
+    p=tensions,
+    more=st.floats(0.0, 100.0),
+    a=a_values,
+    b=b_values,
+    g=st.floats(0.0, 1.0),
+    less=st.floats(0.0, 1.0),
+)
 def test_the_ceiling_rises_with_tension_and_with_strictness(p, more, a, b, g, less):
     f = tissues.ceiling_pressure
     assert f(p + more, a, b, g) >= f(p, a, b, g) - 1e-9

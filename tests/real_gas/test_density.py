@@ -70,9 +70,7 @@ def test_tier_b_as_regression(table: dict[str, Any]) -> None:
 
 
 def test_ideal_gas_of_the_table(table: dict[str, Any]) -> None:
-    np.testing.assert_allclose(
-        of_table(table, "ideal", slice(None)), table["rho_ideal_g_L"], rtol=1e-5
-    )
+    np.testing.assert_allclose(of_table(table, "ideal", slice(None)), table["rho_ideal_g_L"], rtol=1e-5)
 
 
 def reference_density(composition: dict[str, float], pressure: float, temperature: float) -> float:
@@ -135,7 +133,9 @@ def test_oxygen_first_then_helium() -> None:
     low, high = 0.4, 0.7
     for _ in range(60):
         fraction = 0.5 * (low + high)
-        reached = real_gas.cylinder_pressure(oxygen / fraction, gp.Gas(oxygen=fraction, helium=1.0 - fraction))
+        reached = real_gas.cylinder_pressure(
+            oxygen / fraction, gp.Gas(oxygen=fraction, helium=1.0 - fraction)
+        )
         low, high = (fraction, high) if reached > 13789.5 else (low, fraction)
     assert fraction == pytest.approx(0.547, abs=0.006)
     assert fraction > 0.5  # U.S. Navy Diving Manual rev. 6, ch. 16 (secondary): O2 exceeds one half
@@ -199,9 +199,7 @@ def test_a_mean_of_the_pure_values_would_be_wrong() -> None:
         ({"He": 0.8, "N2": 0.2}, 8.493),
         ({"O2": 0.18, "He": 0.45, "N2": 0.37}, 0.658),
     ):
-        pure = sum(
-            x * real_gas.second_virial(*spread(**{gas: 1.0}), 25.0) for gas, x in fractions.items()
-        )
+        pure = sum(x * real_gas.second_virial(*spread(**{gas: 1.0}), 25.0) for gas, x in fractions.items())
         assert pure == pytest.approx(linear, abs=5e-4)
         assert abs(real_gas.second_virial(*spread(**fractions), 25.0) - linear) > 0.1
 

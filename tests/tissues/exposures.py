@@ -22,7 +22,9 @@ def random_gas(rng: np.random.Generator, gases: str) -> gp.Gas:
     return gp.Gas(oxygen=oxygen, helium=helium * 0.6, argon=float(rng.uniform(0.0, rest * 0.4)))
 
 
-def random_exposure(rng: np.random.Generator, gases: str = "trimix", pieces: int = 7, deepest: float = 70.0) -> Exposure:
+def random_exposure(
+    rng: np.random.Generator, gases: str = "trimix", pieces: int = 7, deepest: float = 70.0
+) -> Exposure:
     """Return an exposure of random pieces; loops among them unless it is on air."""
     first: Any = "air" if gases == "air" else random_gas(rng, gases)
     dive = Exposure.start(first, surface_pressure=float(rng.uniform(70.0, 102.0)))
@@ -30,12 +32,16 @@ def random_exposure(rng: np.random.Generator, gases: str = "trimix", pieces: int
         for _ in range(pieces):
             kind = rng.choice(["travel", "stay", "switch", "loop"] if gases != "air" else ["travel", "stay"])
             if kind == "travel":
-                dive = dive.travel(depth=float(rng.uniform(0.0, deepest)), minutes=float(rng.uniform(0.05, 8.0)))
+                dive = dive.travel(
+                    depth=float(rng.uniform(0.0, deepest)), minutes=float(rng.uniform(0.05, 8.0))
+                )
             elif kind == "stay":
                 dive = dive.stay(float(rng.exponential(25.0) + 0.01))
             elif kind == "switch":
                 dive = dive.switch(random_gas(rng, gases)).stay(float(rng.uniform(0.1, 15.0)))
             else:
                 dive = dive.loop(float(rng.uniform(60.0, 160.0)), random_gas(rng, gases))
-                dive = dive.travel(depth=float(rng.uniform(0.0, deepest)), minutes=float(rng.uniform(0.5, 8.0)))
+                dive = dive.travel(
+                    depth=float(rng.uniform(0.0, deepest)), minutes=float(rng.uniform(0.5, 8.0))
+                )
     return dive

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from pathlib import Path
 from typing import Any
 
@@ -47,10 +48,14 @@ def _reference(model: tissues.TissueSet, dive: Exposure) -> np.ndarray:
     for i in range(pieces.duration.size):
         t = pieces.duration[i]
         low, high = pieces.start_pressure[i], pieces.end_pressure[i]
-        mix = np.array([pieces.fractions.get(g, np.zeros(pieces.duration.size))[i] for g in model.inert_gases])
+        mix = np.array(
+            [pieces.fractions.get(g, np.zeros(pieces.duration.size))[i] for g in model.inert_gases]
+        )
         setpoint = pieces.setpoint[i]
 
-        def inert(s: float, low: float = low, high: float = high, mix: np.ndarray = mix, setpoint: float = setpoint) -> np.ndarray:
+        def inert(
+            s: float, low: float = low, high: float = high, mix: np.ndarray = mix, setpoint: float = setpoint
+        ) -> np.ndarray:
             pressure = low + (high - low) * s
             if np.isnan(setpoint):
                 return mix * max(pressure - vapor + surplus, 0.0)
@@ -62,7 +67,7 @@ def _reference(model: tissues.TissueSet, dive: Exposure) -> np.ndarray:
             kink = (setpoint + vapor - low) / (high - low)
             if 0.0 < kink < 1.0:
                 cuts = [0.0, kink, 1.0]
-        for s0, s1 in zip(cuts[:-1], cuts[1:], strict=True):
+        for s0, s1 in itertools.pairwise(cuts):
 
             def slope(s: float, y: np.ndarray, t: float = t, inert: Any = inert) -> np.ndarray:
                 return t * (k * (inert(s) - y.reshape(k.shape))).ravel()
@@ -96,7 +101,9 @@ def test_worked_tensions() -> None:
         run = tissues.tensions(ramp, one).tissue_pressure.sel(inert_gas="N2")
         for c, half in zip(one.compartments, one.half_time[:, 0], strict=True):
             ours = [held.sel(compartment=c)[-1], *run.sel(compartment=c)[1:]]
-            np.testing.assert_allclose(np.array(ours, dtype=float) / 100.0, rows[half], rtol=0.0, atol=5.001e-7)
+            np.testing.assert_allclose(
+                np.array(ours, dtype=float) / 100.0, rows[half], rtol=0.0, atol=5.001e-7
+            )
     # Tissues of 27 min and slower gain gas during that ascent.
     gains = run.isel(time=-1) > run.isel(time=-2)
     assert not gains.any()
@@ -179,7 +186,9 @@ def test_splitting_changes_nothing(model: str, seed: int) -> None:
 def test_joined_is_chained(model: str) -> None:
     rng = np.random.default_rng(5)
     one, two = (random_exposure(rng, _gases_for(model), pieces=4, deepest=40.0) for _ in range(2))
-    two = Exposure.start("air" if _gases_for(model) == "air" else "nitrox 32", surface_pressure=one.surface_pressure)
+    two = Exposure.start(
+        "air" if _gases_for(model) == "air" else "nitrox 32", surface_pressure=one.surface_pressure
+    )
     two = two.travel(depth=20.0, minutes=2.0).stay(20.0).travel(depth=0.0, minutes=2.0)
     with gp.validity("ignore"):
         joined = tissues.tensions(Exposure.join([one, two]), model)
@@ -192,7 +201,9 @@ def test_joined_is_chained(model: str) -> None:
 
 @pytest.mark.parametrize("model", tissues.models())
 def test_every_scenario_is_its_single_run(model: str) -> None:
-    depths = xr.DataArray([12.0, 20.0, 33.0], dims="depth", coords={"depth": [12.0, 20.0, 33.0]}, attrs={"units": "msw"})
+    depths = xr.DataArray(
+        [12.0, 20.0, 33.0], dims="depth", coords={"depth": [12.0, 20.0, 33.0]}, attrs={"units": "msw"}
+    )
     stays = xr.DataArray([31.0, 50.0], dims="stay", coords={"stay": [31.0, 50.0]}, attrs={"units": "min"})
 
     def build(depth: Any, stay: Any) -> Exposure:
@@ -207,7 +218,9 @@ def test_every_scenario_is_its_single_run(model: str) -> None:
             here = batch.sel(depth=depth, stay=stay)
             np.testing.assert_array_equal(here.tissue_pressure.values, alone.tissue_pressure.values)
             np.testing.assert_array_equal(here.ceiling_pressure.values, alone.ceiling_pressure.values)
-            assert here.controlling_compartment.values.tolist() == alone.controlling_compartment.values.tolist()
+            assert (
+                here.controlling_compartment.values.tolist() == alone.controlling_compartment.values.tolist()
+            )
 
 
 def test_air_at_equilibrium_stays_for_ever() -> None:
@@ -218,7 +231,12 @@ def test_air_at_equilibrium_stays_for_ever() -> None:
         ("thalmann_vval18", 101.325, FSW, 24.57),
     ):
         ds = tissues.tensions(Exposure.start("air", surface_pressure=surface).stay(1e5), model)
-        np.testing.assert_allclose(ds.tissue_pressure.sel(inert_gas="N2").values / unit, expected, rtol=0.0, atol=5e-3 if unit == FSW else 5e-7)
+        np.testing.assert_allclose(
+            ds.tissue_pressure.sel(inert_gas="N2").values / unit,
+            expected,
+            rtol=0.0,
+            atol=5e-3 if unit == FSW else 5e-7,
+        )
         np.testing.assert_allclose(ds.residual_pressure.values, 0.0, atol=1e-9)
 
 
@@ -235,15 +253,21 @@ def test_loop_inert_gas_is_what_vapor_and_set_point_leave() -> None:
     assert [round(float(x), 4) for x in row.end_pressure] == [130.0, 136.27, 701.325]
     assert before.tolist() == [0, 1, 3]
     assert not row.start_inert[:2].any()
-    np.testing.assert_allclose(row.end_inert[-1], np.array([0.3, 0.6]) / 0.9 * (701.325 - 6.27 - 130.0), rtol=1e-12)
+    np.testing.assert_allclose(
+        row.end_inert[-1], np.array([0.3, 0.6]) / 0.9 * (701.325 - 6.27 - 130.0), rtol=1e-12
+    )
 
 
 def test_prebreathed_oxygen_decays_to_nothing() -> None:
-    ds = tissues.tensions(Exposure.start("oxygen").stay(4.0), tissues.load("buhlmann_1995_c", compartments=["1"]))
+    ds = tissues.tensions(
+        Exposure.start("oxygen").stay(4.0), tissues.load("buhlmann_1995_c", compartments=["1"])
+    )
     p = ds.tissue_pressure.sel(inert_gas="N2", compartment="1").values
     assert p[-1] == pytest.approx(p[0] / 2.0, rel=1e-12)
     # In the exponential-linear convention arterial inert gas on oxygen is held at zero.
-    slow = tissues.tensions(Exposure.start("oxygen").stay(240.0), tissues.load("thalmann_vval18", compartments=["240"]))
+    slow = tissues.tensions(
+        Exposure.start("oxygen").stay(240.0), tissues.load("thalmann_vval18", compartments=["240"])
+    )
     p = slow.tissue_pressure.sel(inert_gas="N2").values[0]
     assert p[-1] == pytest.approx(p[0] / 2.0, rel=1e-12)
 
@@ -252,7 +276,7 @@ def test_prebreathed_oxygen_decays_to_nothing() -> None:
 
 
 def _linear_reference(half: float, p: float, dive: Exposure, over: float) -> float:
-    """Integrate one compartment branch by branch, the solver's own events at p = L; constants typed again [fsw]."""
+    """Integrate one compartment branch by branch, events at p = L; constants typed again [fsw]."""
     k = np.log(2.0) / half
     pieces = dive.pieces()
     for i in range(pieces.duration.size):
@@ -264,7 +288,9 @@ def _linear_reference(half: float, p: float, dive: Exposure, over: float) -> flo
         def ambient(s: float, low: float = low, high: float = high) -> float:
             return low + (high - low) * s
 
-        def arterial(s: float, ambient: Any = ambient, oxygen: float = oxygen, setpoint: float = setpoint) -> float:
+        def arterial(
+            s: float, ambient: Any = ambient, oxygen: float = oxygen, setpoint: float = setpoint
+        ) -> float:
             pressure = ambient(s)
             po2 = oxygen * pressure if np.isnan(setpoint) else min(setpoint, pressure)
             return max(pressure - po2 - 1.5, 0.0)
@@ -275,7 +301,9 @@ def _linear_reference(half: float, p: float, dive: Exposure, over: float) -> flo
         def below(s: float, y: Any, t: float = t, arterial: Any = arterial) -> Any:
             return [t * k * (arterial(s) - y[0])]
 
-        def above(s: float, y: Any, t: float = t, arterial: Any = arterial, threshold: Any = threshold) -> Any:
+        def above(
+            s: float, y: Any, t: float = t, arterial: Any = arterial, threshold: Any = threshold
+        ) -> Any:
             return [t * k * (arterial(s) - threshold(s))]
 
         def meets(s: float, y: Any, threshold: Any = threshold) -> float:
@@ -288,7 +316,7 @@ def _linear_reference(half: float, p: float, dive: Exposure, over: float) -> flo
             if low != high and np.isfinite(edge) and 0.0 < (edge - low) / (high - low) < 1.0:
                 kinks.add((edge - low) / (high - low))
         stops = sorted(kinks)
-        for begin, end in zip(stops[:-1], stops[1:], strict=True):
+        for begin, end in itertools.pairwise(stops):
             s = begin
             while s < end:
                 gap = p - threshold(s)
@@ -299,7 +327,9 @@ def _linear_reference(half: float, p: float, dive: Exposure, over: float) -> flo
                     p += t * k * (arterial(s) - (threshold(s) if linear else p)) * (s1 - s)
                     s = s1
                     continue
-                found = solve_ivp(above if linear else below, (s, end), [p], events=meets, max_step=0.02, **SOLVER)
+                found = solve_ivp(
+                    above if linear else below, (s, end), [p], events=meets, max_step=0.02, **SOLVER
+                )
                 p, s = float(found.y[0, -1]), float(found.t[-1])
     return p
 
@@ -325,7 +355,7 @@ def test_a_compartment_may_cross_twice_within_one_ramp() -> None:
     whole = advance(model, state, np.array(240.0), np.array(103.0 * FSW), np.array(33.0 * FSW), AIR)
     parts = state
     edges = np.linspace(103.0, 33.0, 1001)
-    for a, b in zip(edges[:-1], edges[1:], strict=True):
+    for a, b in itertools.pairwise(edges):
         parts = advance(model, parts, np.array(0.24), np.array(a * FSW), np.array(b * FSW), AIR)
     np.testing.assert_allclose(parts, whole, rtol=1e-12)
 
@@ -338,21 +368,37 @@ def test_worked_values_of_the_linear_branch() -> None:
         ("thalmann_vval18m_reconstructed", 60.0, 38.6867),
     ):
         model = tissues.load(name, compartments=["40"])
-        p = advance(model, np.array([[50.0 * FSW]]), np.array(minutes), np.array(43.0 * FSW), np.array(43.0 * FSW), AIR)
+        p = advance(
+            model,
+            np.array([[50.0 * FSW]]),
+            np.array(minutes),
+            np.array(43.0 * FSW),
+            np.array(43.0 * FSW),
+            AIR,
+        )
         assert float(p[0, 0]) / FSW == pytest.approx(expected, abs=5e-5)
     for name, rate in (("thalmann_vval18", -0.10796), ("thalmann_vval18m_reconstructed", -0.28124)):
         model = tissues.load(name, compartments=["40"])
-        p = advance(model, np.array([[60.0 * FSW]]), np.array(1.0), np.array(43.0 * FSW), np.array(43.0 * FSW), AIR)
+        p = advance(
+            model, np.array([[60.0 * FSW]]), np.array(1.0), np.array(43.0 * FSW), np.array(43.0 * FSW), AIR
+        )
         assert float(p[0, 0]) / FSW - 60.0 == pytest.approx(rate, abs=5e-6)
 
 
 def test_a_large_overpressure_is_the_exponential_model(tmp_path: Path) -> None:
     path = tmp_path / "never_linear.toml"
     path.write_text(
-        'based_on = "thalmann_vval18"\ntitle = "never linear"\n[convention]\ngas_phase_overpressure = 1e5\n', encoding="utf-8"
+        'based_on = "thalmann_vval18"\ntitle = "never linear"\n[convention]\ngas_phase_overpressure = 1e5\n',
+        encoding="utf-8",
     )
     never = tissues.load(path)
-    dive = Exposure.start("air", depth_unit="fsw").travel(depth=90, rate=75).stay(60).travel(depth=0, rate=30).stay(90)
+    dive = (
+        Exposure.start("air", depth_unit="fsw")
+        .travel(depth=90, rate=75)
+        .stay(60)
+        .travel(depth=0, rate=30)
+        .stay(90)
+    )
     ours = tissues.tensions(dive, never)
     linear = tissues.tensions(dive, "thalmann_vval18")
     p = equilibrium(never, 101.325)[:, 0]
@@ -363,7 +409,9 @@ def test_a_large_overpressure_is_the_exponential_model(tmp_path: Path) -> None:
     np.testing.assert_allclose(ours.final.values[:, 0], p, rtol=1e-12)
     # Uptake is identical, washout slower.
     at_bottom = {"time": 2}
-    np.testing.assert_allclose(linear.tissue_pressure.isel(at_bottom), ours.tissue_pressure.isel(at_bottom), rtol=1e-12)
+    np.testing.assert_allclose(
+        linear.tissue_pressure.isel(at_bottom), ours.tissue_pressure.isel(at_bottom), rtol=1e-12
+    )
     assert (linear.final.values >= ours.final.values - 1e-9).all()
     assert (linear.final.values > ours.final.values + 1.0).any()
 
@@ -404,10 +452,20 @@ def test_serial_against_an_ode_solver(seed: int) -> None:
 def test_serial_properties() -> None:
     model = tissues.load("kidd_stubbs_1983")
     still = np.full((4, 1), 300.0)
-    np.testing.assert_allclose(advance(model, still, np.array(500.0), np.array(300.0), np.array(300.0), AIR), 300.0, rtol=1e-12)
-    up = advance(model, equilibrium(model, 100.0), np.array(20.0), np.array(100.0), np.array(500.0), AIR)[:, 0]
+    np.testing.assert_allclose(
+        advance(model, still, np.array(500.0), np.array(300.0), np.array(300.0), AIR), 300.0, rtol=1e-12
+    )
+    up = advance(model, equilibrium(model, 100.0), np.array(20.0), np.array(100.0), np.array(500.0), AIR)[
+        :, 0
+    ]
     assert (np.diff(up) < 0.0).all()
     # Uptake and washout are not mirror images.
-    taken = advance(model, np.full((4, 1), 100.0), np.array(20.0), np.array(400.0), np.array(400.0), AIR)[:, 0] - 100.0
-    given_off = 400.0 - advance(model, np.full((4, 1), 400.0), np.array(20.0), np.array(100.0), np.array(100.0), AIR)[:, 0]
+    taken = (
+        advance(model, np.full((4, 1), 100.0), np.array(20.0), np.array(400.0), np.array(400.0), AIR)[:, 0]
+        - 100.0
+    )
+    given_off = (
+        400.0
+        - advance(model, np.full((4, 1), 400.0), np.array(20.0), np.array(100.0), np.array(100.0), AIR)[:, 0]
+    )
     assert abs(taken[0] - given_off[0]) > 5.0

@@ -64,7 +64,12 @@ def _quiet(*args: Any, **kwargs: Any) -> Any:
 US_NAVY_1957 = {"model": "us_navy_1957", "depth_unit": "fsw", "descent_rate": 75.0, "ascent_rate": 60.0}
 VVAL18 = {"model": "thalmann_vval18", "depth_unit": "fsw", "descent_rate": 75.0, "ascent_rate": 30.0}
 ROGERS_POWELL = {"model": "rogers_powell_1994", "depth_unit": "fsw", "descent_rate": 60.0}
-KIDD_STUBBS = {"model": "kidd_stubbs_1983", "surface_pressure": 100.6, "descent_rate": 18.0, "ascent_rate": 18.0}
+KIDD_STUBBS = {
+    "model": "kidd_stubbs_1983",
+    "surface_pressure": 100.6,
+    "descent_rate": 18.0,
+    "ascent_rate": 18.0,
+}
 
 
 def us_navy_1957() -> list[Line]:
@@ -79,7 +84,17 @@ def us_navy_1957() -> list[Line]:
         depth = row["depth_fsw"]
         tolerance = None if depth in why else 3.0
         ours = _quiet(float(depth), "air", **US_NAVY_1957)
-        lines.append(Line("US Navy 1957", f"{depth} fsw", row["minutes"], ours, "limit on arrival", tolerance, why.get(depth, "")))
+        lines.append(
+            Line(
+                "US Navy 1957",
+                f"{depth} fsw",
+                row["minutes"],
+                ours,
+                "limit on arrival",
+                tolerance,
+                why.get(depth, ""),
+            )
+        )
     return lines
 
 
@@ -97,7 +112,15 @@ def us_navy_later() -> list[Line]:
                 reason = "the two revisions differ here"
             tolerance = None if reason else 1.1
             lines.append(
-                Line(f"US Navy {edition}", f"{depth} fsw", row[f"{edition}_min"], ours, "smaller of both tests", tolerance, reason)
+                Line(
+                    f"US Navy {edition}",
+                    f"{depth} fsw",
+                    row[f"{edition}_min"],
+                    ours,
+                    "smaller of both tests",
+                    tolerance,
+                    reason,
+                )
             )
     return lines
 
@@ -110,7 +133,15 @@ def rogers_powell() -> list[Line]:
             ours = _quiet(float(row["depth_ft"]), "air", **ROGERS_POWELL, ascent_rate=ascent)
             how = "limit before the ascent" if ascent is None else "limit after an ascent at 60 ft/min"
             lines.append(
-                Line("Rogers-Powell 1994", f"{row['depth_ft']} ft", row["minutes"], ours, how, None, "both readings are shown, none is tuned")
+                Line(
+                    "Rogers-Powell 1994",
+                    f"{row['depth_ft']} ft",
+                    row["minutes"],
+                    ours,
+                    how,
+                    None,
+                    "both readings are shown, none is tuned",
+                )
             )
     return lines
 
@@ -122,8 +153,24 @@ def dciem() -> list[Line]:
         depth = float(row["depth_msw"])
         ours = _quiet(depth, "air", **KIDD_STUBBS)
         agrees = 36.0 <= depth <= 60.0 or row["minutes"] == "unlimited"
-        reason = "" if agrees else "constants provisional; the printed limits are set otherwise" if depth < 36 else "printed limits stay at 5 min"
-        lines.append(Line("DCIEM 1992", f"{row['depth_msw']} msw", row["minutes"], ours, "serial model, on arrival", 1.0 if agrees else None, reason))
+        reason = (
+            ""
+            if agrees
+            else "constants provisional; the printed limits are set otherwise"
+            if depth < 36
+            else "printed limits stay at 5 min"
+        )
+        lines.append(
+            Line(
+                "DCIEM 1992",
+                f"{row['depth_msw']} msw",
+                row["minutes"],
+                ours,
+                "serial model, on arrival",
+                1.0 if agrees else None,
+                reason,
+            )
+        )
     return lines
 
 
@@ -135,7 +182,9 @@ def buhlmann_1986() -> list[Line]:
             f"Buehlmann 1986, {row['altitude_band_m']} m",
             f"{row['depth_m']} m",
             row["minutes"],
-            _quiet(float(row["depth_m"]), "air", "buhlmann_1995_c", surface_pressure=100.0) if row["altitude_band_m"] == "0-700" else None,
+            _quiet(float(row["depth_m"]), "air", "buhlmann_1995_c", surface_pressure=100.0)
+            if row["altitude_band_m"] == "0-700"
+            else None,
             "bare set C",
             None,
             reason,
@@ -147,14 +196,32 @@ def buhlmann_1986() -> list[Line]:
 def others() -> list[Line]:
     """Tables without a model of their own here."""
     lines = [
-        Line("RNPL 1972", f"{r['depth_m']} m", r["minutes"], None, "-", None, "no model of this table is known here")
+        Line(
+            "RNPL 1972",
+            f"{r['depth_m']} m",
+            r["minutes"],
+            None,
+            "-",
+            None,
+            "no model of this table is known here",
+        )
         for r in read("no_stop_rnpl1972_air")
     ]
     for r in read("no_stop_noaa_nitrox"):
         gas = gp.Gas(oxygen=float(r["O2_fraction"]))
         ours = _quiet(float(r["depth_fsw"]), gas, **US_NAVY_1957)
         reason = "the print reads the next deeper air row at the equivalent air depth"
-        lines.append(Line(f"NOAA {r['mix']}", f"{r['depth_fsw']} fsw", r["minutes"], ours, "the 1957 model on the mix itself", None, reason))
+        lines.append(
+            Line(
+                f"NOAA {r['mix']}",
+                f"{r['depth_fsw']} fsw",
+                r["minutes"],
+                ours,
+                "the 1957 model on the mix itself",
+                None,
+                reason,
+            )
+        )
     return lines
 
 
@@ -207,11 +274,19 @@ def test_the_choice_of_b4_and_of_the_surface_pressure_moves_the_time() -> None:
 @pytest.mark.parametrize(
     ("settings", "depths", "expected"),
     [
-        (US_NAVY_1957, (40, 60, 80, 100, 120, 140, 160, 180), (199.7, 65.6, 39.1, 25.4, 17.1, 12.3, 9.4, 7.7)),
+        (
+            US_NAVY_1957,
+            (40, 60, 80, 100, 120, 140, 160, 180),
+            (199.7, 65.6, 39.1, 25.4, 17.1, 12.3, 9.4, 7.7),
+        ),
         (VVAL18, (30, 40, 50, 60, 80), (371.8, 163.7, 92.0, 63.2, 39.8)),
         (VVAL18, (100, 120, 140, 160, 180), (29.1, 22.3, 15.3, 11.2, 9.3)),
         (ROGERS_POWELL, (35, 50, 70, 90, 110, 130), (209.6, 80.6, 39.3, 23.7, 14.2, 10.1)),
-        (ROGERS_POWELL | {"ascent_rate": 60.0}, (35, 50, 70, 90, 110, 130), (210.8, 81.5, 40.4, 25.7, 17.0, 12.5)),
+        (
+            ROGERS_POWELL | {"ascent_rate": 60.0},
+            (35, 50, 70, 90, 110, 130),
+            (210.8, 81.5, 40.4, 25.7, 17.0, 12.5),
+        ),
         (KIDD_STUBBS, (18, 24, 30, 36, 42, 48, 54, 60), (36.1, 19.4, 13.1, 9.9, 7.9, 6.6, 5.6, 5.0)),
     ],
     ids=["us_navy_1957", "vval18", "vval18 deep", "rogers_powell", "rogers_powell ascent", "kidd_stubbs"],
@@ -230,7 +305,12 @@ def test_kidd_stubbs_limits_of_1971_are_shorter() -> None:
 
 @pytest.mark.parametrize(
     ("model", "depth"),
-    [("us_navy_1957", 31.56), ("workman_1965", 30.29), ("rogers_powell_1994", 21.94), ("thalmann_vval18", 23.96)],
+    [
+        ("us_navy_1957", 31.56),
+        ("workman_1965", 30.29),
+        ("rogers_powell_1994", 21.94),
+        ("thalmann_vval18", 23.96),
+    ],
 )
 def test_unlimited_depth_is_that_of_the_slowest_tissue(model: str, depth: float) -> None:
     assert np.isinf(tissues.no_stop_time(depth - 0.01, "air", model, depth_unit="fsw"))
@@ -248,14 +328,18 @@ def test_two_to_one_leaves_33_fsw_unlimited() -> None:
     assert tissues.no_stop_time(33.0, "air", "boycott_1908", depth_unit="fsw") == np.inf
     for half, expected in (("5", 2.89), ("10", 5.78), ("20", 11.56), ("40", 23.11), ("75", 43.33)):
         alone = tissues.load("boycott_1908", compartments=[half])
-        assert tissues.no_stop_time(100.0, "air", alone, depth_unit="fsw") == pytest.approx(expected, abs=0.005)
+        assert tissues.no_stop_time(100.0, "air", alone, depth_unit="fsw") == pytest.approx(
+            expected, abs=0.005
+        )
 
 
 def test_the_short_deep_range_is_refused_or_flagged() -> None:
     with pytest.raises(ValidityError, match=r"refuses the no-stop time at 100 fsw"):
         tissues.no_stop_time(100.0, "air", "thalmann_vval18m_reconstructed", depth_unit="fsw")
     with pytest.warns(ValidityWarning, match="refuses 1 of 2"):
-        two = tissues.no_stop_time(np.array([60.0, 120.0]), "air", "thalmann_vval18m_reconstructed", depth_unit="fsw")
+        two = tissues.no_stop_time(
+            np.array([60.0, 120.0]), "air", "thalmann_vval18m_reconstructed", depth_unit="fsw"
+        )
     assert np.isfinite(two[0])
     assert np.isnan(two[1])
     with pytest.warns(ValidityWarning, match="doubtful"):

@@ -20,7 +20,8 @@ from .test_published_times import read
 FSW = 101.325 / 33.0
 NAMES = (
     "boycott_1908", "us_navy_1957", "workman_1965", "rogers_powell_1994", "buhlmann_1983", "buhlmann_1995_a",
-    "buhlmann_1995_b", "buhlmann_1995_c", "thalmann_vval18", "thalmann_vval18m_reconstructed", "kidd_stubbs_1983",
+    "buhlmann_1995_b", "buhlmann_1995_c", "thalmann_vval18", "thalmann_vval18m_reconstructed",
+    "kidd_stubbs_1983",
 )  # fmt: skip
 
 
@@ -33,7 +34,16 @@ def test_the_sets_are_the_files() -> None:
 @pytest.mark.parametrize("name", NAMES)
 def test_every_set_says_what_it_is_for(name: str) -> None:
     one = tissues.load(name)
-    for text in (one.title, one.edition, one.source, one.depth, one.refuses, one.does_not_claim, one.start, one.on_the_way):
+    for text in (
+        one.title,
+        one.edition,
+        one.source,
+        one.depth,
+        one.refuses,
+        one.does_not_claim,
+        one.start,
+        one.on_the_way,
+    ):
         assert text
     assert one.source in gp.sources.sources()
     assert set(one.provenance_of.values()) <= set(PROVENANCE)
@@ -123,13 +133,17 @@ def test_b_and_c_change_a_only_and_only_downward() -> None:
     for other, changed in ((b, {"6", "7", "8", "13"}), (c, {str(n) for n in range(5, 16)})):
         np.testing.assert_array_equal(other.b, a.b)
         np.testing.assert_array_equal(other.a[:, 1], a.a[:, 1])
-        assert {n for n, x, y in zip(a.compartments, other.a[:, 0], a.a[:, 0], strict=True) if x != y} == changed
+        assert {
+            n for n, x, y in zip(a.compartments, other.a[:, 0], a.a[:, 0], strict=True) if x != y
+        } == changed
         assert (other.a <= a.a).all()
 
 
 def test_zh_l12_m_column() -> None:
     one = tissues.load("buhlmann_1983")
-    for m, row in zip(tissues.m_value.raw(100.0, one.a, one.b)[:, 0] / 10.0, read("buhlmann_zhl12"), strict=True):
+    for m, row in zip(
+        tissues.m_value.raw(100.0, one.a, one.b)[:, 0] / 10.0, read("buhlmann_zhl12"), strict=True
+    ):
         assert m == pytest.approx(float(row["M_N2_at_1bar_msw"]), abs=5.1e-3)
 
 
@@ -177,11 +191,13 @@ def test_ratio_models_have_no_intercept() -> None:
     assert np.isnan(serial.half_time).all()
     assert np.isnan(serial.a[2:]).all()
     # SAD = P/R - OFF.
-    np.testing.assert_allclose((200.0 - serial.a[:2, 0]) * serial.b[:2, 0], [200.0 / 1.3 - 48.0, 200.0 / 1.385 - 25.0])
+    np.testing.assert_allclose(
+        (200.0 - serial.a[:2, 0]) * serial.b[:2, 0], [200.0 / 1.3 - 48.0, 200.0 / 1.385 - 25.0]
+    )
 
 
 def test_conventions_give_the_printed_start_tensions() -> None:
-    """At 760 mmHg and 0.79: exchange ratio 0.9 566.8, 1.0 563.3, dry 600.4, Thalmann 565.9 mmHg [computed]."""
+    """At 760 mmHg and 0.79: exchange ratio 0.9 566.8, dry 600.4, Thalmann 565.9 mmHg [computed]."""
     mmhg = 0.133322387415
     for model, variant, expected in (
         ("workman_1965", "exchange_ratio_0_9", 566.8),
@@ -239,7 +255,10 @@ def test_an_own_file_is_a_model_everywhere(tmp_path: Path) -> None:
 
 def test_an_own_file_may_change_a_shipped_set(tmp_path: Path) -> None:
     path = tmp_path / "mine.toml"
-    path.write_text('based_on = "buhlmann_1995_c"\ntitle = "mine"\n[compartment.4.N2]\nb = 0.7725\nprovenance = "computed"\n')
+    path.write_text(
+        'based_on = "buhlmann_1995_c"\ntitle = "mine"\n'
+        '[compartment.4.N2]\nb = 0.7725\nprovenance = "computed"\n'
+    )
     mine, shipped = tissues.load(path), tissues.load("buhlmann_1995_c")
     assert mine.b[3, 0] == 0.7725
     np.testing.assert_array_equal(np.delete(mine.b, 3, 0), np.delete(shipped.b, 3, 0))
@@ -255,7 +274,12 @@ CHANGES = [
     ("a = 1.3, ", "", "compartment.fast.N2.a", "missing"),
     ("a = 1.3, ", "a = nan, ", "compartment.fast.N2.a", "not possible"),
     ("b = 0.5, ", "b = 0.5, c = 1, ", "compartment.fast.N2", "unknown entry"),
-    ('provenance = "computed"\n\n[start]', 'provenance = "sure"\n\n[start]', "convention.provenance", "memory_low"),
+    (
+        'provenance = "computed"\n\n[start]',
+        'provenance = "sure"\n\n[start]',
+        "convention.provenance",
+        "memory_low",
+    ),
     ('form = "a_b"', 'form = "ab"', "limit.form", "a_b"),
     ('tested = ["before_leaving"]', 'tested = ["sometimes"]', "limit.tested", "on_arrival"),
     ('inert_gases = ["N2", "He", "Ar"]', 'inert_gases = ["N2", "He", "Xe"]', "inert_gases", "Xe"),
@@ -266,12 +290,14 @@ CHANGES = [
     ('state = "air"', "", "start.state", "missing"),
     ("respiratory_exchange_ratio = 0.9", "respiratory_exchange_ratio = 0.0", "convention", "not possible"),
     ('alveolar = "schreiner"', 'alveolar = "thalmann"', "convention.alveolar", "go together"),
-    ('[start]', '[integrity]\ncompartments = 4\n[start]', "integrity.compartments", "3 found"),
-    ('[start]', '[integrity]\nsum_a = { N2 = 2.14 }\n[start]', "integrity.sum_a", "mistyped"),
+    ("[start]", "[integrity]\ncompartments = 4\n[start]", "integrity.compartments", "3 found"),
+    ("[start]", "[integrity]\nsum_a = { N2 = 2.14 }\n[start]", "integrity.sum_a", "mistyped"),
 ]
 
 
-@pytest.mark.parametrize(("old", "new", "key", "also"), CHANGES, ids=[f"{k}-{n}" for n, (_, _, k, _) in enumerate(CHANGES)])
+@pytest.mark.parametrize(
+    ("old", "new", "key", "also"), CHANGES, ids=[f"{k}-{n}" for n, (_, _, k, _) in enumerate(CHANGES)]
+)
 def test_what_is_wrong_in_a_file_is_said(tmp_path: Path, old: str, new: str, key: str, also: str) -> None:
     assert old in THREE_GASES
     path = tmp_path / "wrong.toml"

@@ -519,8 +519,11 @@ def test_oxygen_at_pressure_tells_where_the_ratio_does_not_carry_over(patient: g
     inside = widgets.OxygenAtPressure(patient)
     ds = inside.compute()
     assert not any("Beyond the evidence" in note for note in inside.notes(ds))
-    # Valid up to an alveolar PO2 of 2000 mmHg, so not at 3 atm on oxygen.
+    assert ds["arterial_po2_valid"].values.all()
+    deep = widgets.OxygenAtPressure(patient, ambient_pressure="4 atm")
+    ds = deep.compute()
     assert ds["arterial_po2_valid"].values[[0, -1]].tolist() == [1, 0]
+    assert "alveolar PO2 393.8 kPa is outside 0 to" in deep.notes(ds)[0]
     low = widgets.OxygenAtPressure(arterial_alveolar_ratio=0.52)
     ds = low.compute()
     assert not ds["arterial_po2_valid"].values.any()
