@@ -50,6 +50,7 @@ _MODULES = (
     "reviews",
     "schedules",
     "sources",
+    "supply",
     "surroundings",
     "tissues",
     "units",

@@ -335,8 +335,8 @@ CO2_MOLAR_VOLUME = _constant(
     "douglas_1988",
     "secondary",
 )
-MOLAR_MASS_WATER = _constant(
-    "MOLAR_MASS_WATER", 18.0153, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
+MOLAR_MASS_H2O = _constant(
+    "MOLAR_MASS_H2O", 18.01528, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
 )
 N2_SOLUBILITY_LEAN = _constant(
     "N2_SOLUBILITY_LEAN",
@@ -388,15 +388,12 @@ DEAD_SPACE_PER_MASS = _constant(
 )
 WATER_MOLAR_VOLUME = _constant(
     "WATER_MOLAR_VOLUME",
-    0.01814,
+    float(MOLAR_MASS_H2O) / 993.33,
     "L/mol",
     "V_w",
-    "volume of a mole of liquid water at 37 degC, molar mass over density",
+    "volume of a mole of liquid water at 37 degC, molar mass over a density of 993.33 g/L",
     "tanaka_2001",
     "memory_high",
-)
-MOLAR_MASS_H2O = _constant(
-    "MOLAR_MASS_H2O", 18.01528, "g/mol", "M_{H_2O}", "molar mass of water", "ciaaw", "memory_high"
 )
 ARIELI_EXPONENT = _constant(
     "ARIELI_EXPONENT",

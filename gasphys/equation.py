@@ -564,12 +564,20 @@ def _symbol_names(f: Any) -> dict[Any, str]:
     return names
 
 
+def _tidy(expression: Any) -> Any:
+    """Write 37 for 37.0: whole numbers of a body are floats only to the computer."""
+    import sympy as sp
+
+    whole = {x: sp.Integer(int(x)) for x in expression.atoms(sp.Float) if x == int(x) and abs(x) < 1e15}
+    return expression.xreplace(whole)
+
+
 def _tex(f: Any, expression: Any, names: dict[Any, str] | None = None) -> str:
     import sympy as sp
 
     return str(
         sp.latex(
-            expression,
+            _tidy(expression),
             symbol_names={**_symbol_names(f), **(names or {})},
             ln_notation=True,
             full_prec=False,
@@ -645,7 +653,7 @@ def _text_lines(f: Any, lines: list[str], label: str = "", taken: dict[str, Any]
     expression, called = _trace_nested(f)
     labels = {k: _own_label(g, g.result.name, taken, _TEXT_LABEL) for k, (g, _) in called.items()}
     names = {k: sp.Symbol(labels[k] + (f"_{n}" if n > 1 else "")) for k, (_, n) in called.items()}
-    lines.append(f"{label} = {expression.subs(names)}")
+    lines.append(f"{label} = {_tidy(expression).subs(names)}")
     for stand_in, (g, _) in called.items():
         if g.kind == "inverse":
             g = g.forward

@@ -88,7 +88,7 @@ class Units:
         if name == "compression_rate":
             rate = self.depth if self.depth != "m" else "msw"
             return float(convert(value, "kPa/min", f"{rate}/min")), f"{rate}/min"
-        if name.startswith("chamber_"):
+        if name.startswith(("chamber_", "breathing_gas_co2")):
             return value * 100.0, "%"
         return value, one.dose_unit or ("" if one.unit == "1" else one.unit)
 

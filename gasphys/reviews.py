@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from gasphys.constants import ATMOSPHERE, MSW
 from gasphys.doses.carbon_dioxide import surface_equivalent
-from gasphys.doses.model import MEASURES, closed_circuit, outside_fit, piece_doses
+from gasphys.doses.measures import MEASURES, closed_circuit, outside_fit, piece_doses
 from gasphys.errors import ExposureError, unknown_name
 from gasphys.exposure import Exposure, Pieces
 from gasphys.gas import FORMULAS, Gas

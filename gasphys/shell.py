@@ -347,7 +347,7 @@ def _doubtful(
         found.append((lost, lambda _: f"{spec.name}: {why}; they are nan"))
     if beyond.any() and target is None:
         found.append((beyond, lambda value: _result_text(spec, f"{value:g}")))
-    elif beyond.any():
+    elif beyond.any() and target is not None:
         found.append((beyond, lambda value: _root_text(spec, target, value)))
     return found
 

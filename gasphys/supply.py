@@ -24,6 +24,8 @@ __all__ = ["partial_pressure_fill"]
 #: What is smaller than this share of the final amount is rounding.
 _ROUNDING = 1e-10
 
+_NOT_MODELED = "Heat of compression and incomplete mixing are not modeled: analyze the gas, always."
+
 _content = cylinder_content.pick(model="virial").raw  # type: ignore[attr-defined]
 _pressure = cylinder_pressure.pick(model="virial").raw  # type: ignore[attr-defined]
 _ideal_content = cylinder_content.pick(model="ideal").raw  # type: ignore[attr-defined]
@@ -62,8 +64,8 @@ def partial_pressure_fill(
     order : sequence of Gas or str
         The gases added, in this order, each at most once.
     filling_temperature : float, str or DataArray, optional
-        Temperature of the gas in the cylinder at the end of each step while it is still warm [degC]: measured,
-        or assumed by the caller.
+        Temperature of the gas in the cylinder at the end of each step, while it is still warm [degC]:
+        measured, or assumed by the caller.
 
     Returns
     -------
@@ -90,11 +92,11 @@ def partial_pressure_fill(
 
     Notes
     -----
-    Constant volume, one temperature: n = V rho(x, p, T)/M at the end and for the remainder; the amounts added
-    conserve every gas; the pressure after each step is that of all moles so far, explicit in the amount. Air as
-    a filling gas is the trade's, O2 0.21 and N2 0.79; the virial series is used throughout.
+    Constant volume, one temperature: n = V rho(x, p, T)/M at the end and for the remainder; the amounts
+    added conserve every gas; the pressure after each step is that of all moles so far, explicit in the
+    amount. Air as a filling gas is the trade's, O2 0.21 and N2 0.79; the virial series is used throughout.
 
-    Not modelled: the heat of compression and incomplete mixing. Let a cylinder rest before reading it (6 h
+    Not modeled: the heat of compression and incomplete mixing. Let a cylinder rest before reading it (6 h
     after the U.S. Navy Diving Manual, secondary) and analyze the gas, always.
 
     References
@@ -159,15 +161,15 @@ def partial_pressure_fill(
             fill.given_by(ideal_amounts, ideal, rest),
             attributes("gas_fraction", long_name="dry mole fraction that the ideal recipe would give"),
         ),
-        "remainder_amount": ("", rest[None], attributes("amount", long_name="amount of the remainder")),
     }
     if filling_temperature is not None:
         hot = fill.pressures(amounts, rest, plain[18])
         variables["pressure_after_hot"] = ("step", hot, attributes("pressure_after_hot"))
-    ds = xr.Dataset(coords={"step": names, "gas": list(FORMULAS)})
+    ds = xr.Dataset(coords={**labelled[0].coords, "step": names, "gas": list(FORMULAS)})
     for name, (first, values, attrs) in variables.items():
-        own = (first, *dims) if first else dims
-        ds[name] = xr.Variable(own, values.reshape((*((len(values),) if first else ()), *shape)), attrs)
+        ds[name] = xr.Variable((first, *dims), values.reshape((-1, *shape)), attrs)
+    of_remainder = attributes("amount", long_name="amount of the remainder")
+    ds["remainder_amount"] = xr.Variable(dims, rest.reshape(shape), of_remainder)
     ds["relative_uncertainty"] = xr.DataArray(bound).assign_attrs(attributes("relative_uncertainty"))
     doubtful = [str(p) for p in pairs(target) if p.quality != "good"]
     ds.attrs = {
@@ -176,7 +178,7 @@ def partial_pressure_fill(
         "source": f"gasphys {__version__}, supply, virial series",
         "history": "as given",
         "references": "virial_reference_equations; unlike_pairs; ideal_gas",
-        "comment": f"{CAUTION} Heat of compression and incomplete mixing are not modelled: analyze the gas, always.",
+        "comment": f"{CAUTION} {_NOT_MODELED}",
         **({"estimated_pairs": "; ".join(doubtful)} if doubtful else {}),
     }
     return ds
@@ -190,8 +192,8 @@ def _gases_added(order: Sequence[Any]) -> tuple[list[str], _Array]:
     added = np.array([[Gas.parse(gas).fraction(formula) for formula in FORMULAS] for gas in order])
     if not names or np.linalg.matrix_rank(added) < len(names):
         raise NotReachableError(
-            f"no single recipe with {', '.join(names) or 'no gas'}: give gases of which none is a mixture of the "
-            "others, each once"
+            f"no single recipe with {', '.join(names) or 'no gas'}: give gases of which none is a mixture "
+            "of the others, each once"
         )
     return names, added
 
@@ -268,8 +270,8 @@ def _drained(fill: _Fill, need: _Array, taken: _Array, total: _Array, rest: _Arr
     if impossible.any():
         worst = names[int(np.argmin((need / total).min(axis=1)))]
         raise NotReachableError(
-            f"the target cannot be mixed from {', '.join(names)}: even into an empty cylinder less than nothing "
-            f"of {worst} would have to go"
+            f"the target cannot be mixed from {', '.join(names)}: even into an empty cylinder less than "
+            f"nothing of {worst} would have to go"
         )
     # A share s of the remainder leaves each step need - s taken >= 0.
     shares = np.where(taken > slack, need / np.where(taken > slack, taken, 1.0), np.inf)

@@ -80,9 +80,9 @@ def _constants(weak: list[Constant], own: list[tuple[str, EquationFunction]]) ->
     for (source, word), members in groups.items():
         names = {c.name for c in members}
         shown = "; ".join(
-            f"[`{c.name}`](#constant-{c.name.lower()}) {float(c):.8g} {c.unit if c.unit != '1' else ''}".rstrip()
-            for c in members
+            f"[`{c.name}`](#constant-{c.name.lower()}) {float(c):.8g} {c.unit}" for c in members
         )
-        used = ", ".join(link(n) for n, f in own if names & set(f.constants)) or "nothing yet"
-        rows.append((escape(cite(source)), shown, f"`{word}`", used))
+        used = [link(n) for n, f in own if names & set(f.constants)]
+        few = ", ".join(used[:4]) + (f" and {len(used) - 4} more" if len(used) > 4 else "")
+        rows.append((escape(cite(source)), shown, f"`{word}`", few or "nothing yet"))
     return rows

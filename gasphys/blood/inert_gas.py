@@ -13,7 +13,7 @@ from gasphys.constants import (
     FAT_DENSITY,
     GAS_CONSTANT,
     LEAN_WATER,
-    MOLAR_MASS_WATER,
+    MOLAR_MASS_H2O,
     N2_SOLUBILITY_BLOOD,
     N2_SOLUBILITY_FAT,
     N2_SOLUBILITY_LEAN,
@@ -94,7 +94,7 @@ def _mole_fraction(temperature: Value) -> Value:
     """Bunsen coefficient from the mole fraction of gas dissolved in pure water at 1 atm."""
     t = (temperature + ZERO_CELSIUS) / 100.0
     fraction = exp(A1 + A2 / t + A3 * log(t))
-    water = water_density(temperature) / MOLAR_MASS_WATER
+    water = water_density(temperature) / MOLAR_MASS_H2O
     return fraction / (1.0 - fraction) * water * GAS_CONSTANT * ZERO_CELSIUS / ATMOSPHERE
 
 

@@ -13,7 +13,8 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from gasphys.constants import ARIELI_EXPONENT, ATMOSPHERE
-from gasphys.doses.model import MEASURES, clipped, counted, oxygen
+from gasphys.doses.measures import MEASURES, clipped
+from gasphys.doses.model import counted, oxygen
 from gasphys.doses.pulmonary import (
     POWER_FIT,
     esot_ramp,

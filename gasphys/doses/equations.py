@@ -10,18 +10,20 @@ from gasphys.doses.cns import (
     cns_recovery,
     cns_symptom_risk,
     cns_symptom_risk_of_exposure,
-    noaa_cns_after_interval,
-    noaa_cns_fraction,
-    noaa_cns_ramp,
-    oxygen_time_limit,
-    usn_closed_circuit_o2_limit,
-    usn_remaining_o2_time,
 )
 from gasphys.doses.narcosis import (
     equivalent_air_depth,
     equivalent_narcotic_depth,
     narcotic_fraction,
     weighted_narcotic_depth,
+)
+from gasphys.doses.oxygen_times import (
+    noaa_cns_after_interval,
+    noaa_cns_fraction,
+    noaa_cns_ramp,
+    oxygen_time_limit,
+    usn_closed_circuit_o2_limit,
+    usn_remaining_o2_time,
 )
 from gasphys.doses.pulmonary import (
     arieli_index_from_esot,

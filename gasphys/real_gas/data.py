@@ -233,7 +233,23 @@ def pairs(gas: Any) -> list[Pair]:
 
 
 def judged(inputs: Mapping[str, Any]) -> dict[str, str]:
-    """Attributes of a virial result: the weakest number used, and the pairs nobody has fitted."""
+    """Return the attributes of a virial result: the weakest number used, the pairs nobody has fitted.
+
+    Parameters
+    ----------
+    inputs : mapping
+        Mole fractions by field of :class:`~gasphys.Gas`; other keys do not matter.
+
+    Returns
+    -------
+    dict of str
+        ``provenance``, and ``estimated_pairs`` where there are any.
+
+    Examples
+    --------
+    >>> judged(gas_fractions("heliox 21/79"))["estimated_pairs"]
+    'He-O2: estimate, +-1.5 cm3/mol'
+    """
     present = present_gases(inputs)
     found = _pairs(present)
     words = [*(p.word for p in found), *(MOLAR_MASSES[g].provenance for g in present), "computed"]

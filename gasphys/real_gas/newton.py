@@ -16,7 +16,23 @@ _BLOCK = 8192
 
 
 def by_blocks(kernel: Callable[..., Any]) -> Callable[..., Any]:
-    """Run a kernel on one number as on floats, on large arrays piece by piece."""
+    """Run a kernel on one number as on floats, on large arrays piece by piece.
+
+    Parameters
+    ----------
+    kernel : callable
+        Takes numbers or arrays that broadcast, works element by element.
+
+    Returns
+    -------
+    callable
+        The same function of the same arguments.
+
+    Examples
+    --------
+    >>> by_blocks(lambda x, y: x + y)(np.ones(20000), 1.0).sum()
+    np.float64(40000.0)
+    """
 
     def run(*values: Any) -> Any:
         shape = np.broadcast_shapes(*(np.shape(v) for v in values))
@@ -47,7 +63,25 @@ def by_blocks(kernel: Callable[..., Any]) -> Callable[..., Any]:
 
 
 def newton(start: Any, wanted: Any, level: Callable[[Any], Any], slope: Callable[[Any], Any]) -> Any:
-    """Solve level(x) = wanted from a start on the convex side; nan where it does not converge."""
+    """Solve level(x) = wanted for all elements at once.
+
+    Parameters
+    ----------
+    start, wanted : float or array
+        First guess, from which Newton's method converges, and the value to be reached.
+    level, slope : callable
+        The function and its derivative.
+
+    Returns
+    -------
+    float or array
+        The root; NaN where it does not converge.
+
+    Examples
+    --------
+    >>> newton(1.0, 2.0, lambda x: x * x, lambda x: 2.0 * x)
+    1.414213562373095
+    """
     x = start
     for _ in range(40):
         step = (level(x) - wanted) / slope(x)

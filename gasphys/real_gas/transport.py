@@ -25,7 +25,7 @@ from gasphys.maths import sqrt
 from gasphys.policy import weakest
 from gasphys.real_gas.data import MOLAR_MASSES, TEX, constant, data, present_gases
 from gasphys.real_gas.ideal import mixture_molar_mass
-from gasphys.real_gas.virial import ONE_THIRD, REFERENCE_TEMPERATURE
+from gasphys.real_gas.virial import ONE_THIRD, REFERENCE_TEMPERATURE, REFUSE
 
 __all__ = [
     "diffusivity",
@@ -35,9 +35,10 @@ __all__ = [
     "viscosity",
 ]
 
-# The fits hold from 260 to 330 K; below 250 K no answer.
-_VALID = {"temperature": (260.0 - 273.15, 330.0 - 273.15)}
-_REFUSE = {"temperature": (250.0 - 273.15, 400.0)}
+# Outside the fits a word, below the equations of state's lowest temperature no answer.
+_VALID = {
+    "temperature": tuple(t - float(ZERO_CELSIUS) for t in data("transport")["validity"]["temperature_K"])
+}
 
 
 def _judged(method: str) -> Callable[[Mapping[str, Any]], dict[str, str]]:
@@ -346,7 +347,7 @@ def wilke_mean(
 @formula(
     result="viscosity",
     valid=_VALID | {"density": (0.0, 115.0)},
-    refuse=_REFUSE,
+    refuse=REFUSE,
     source=("wilke_1950", "transport_reference_correlations"),
     provenance="memory_high",
     register=False,
@@ -435,7 +436,7 @@ def viscosity(gas: Value, temperature: Value, density: Value = 0.0, model: str =
 @formula(
     result="thermal_conductivity",
     valid=_VALID,
-    refuse=_REFUSE,
+    refuse=REFUSE,
     source=("mason_saxena_1958", "transport_reference_correlations"),
     provenance="memory_high",
     register=False,
@@ -510,7 +511,7 @@ def thermal_conductivity(gas: Value, temperature: Value, model: str = "mason_sax
 @formula(
     result="molar_heat_capacity",
     valid=_VALID,
-    refuse=_REFUSE,
+    refuse=REFUSE,
     source="transport_reference_correlations",
     provenance="computed",
     register=False,
@@ -569,7 +570,7 @@ def heat_capacity(gas: Value, temperature: Value, model: str = "ideal_sum") -> V
         "second_diffusion_volume": "diffusion_volume",
     },
     valid=_VALID,
-    refuse=_REFUSE,
+    refuse=REFUSE,
     source="fuller_1966",
     provenance="memory_high",
     register=False,

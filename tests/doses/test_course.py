@@ -233,7 +233,7 @@ def test_sessions_must_not_overlap() -> None:
 
 
 def test_vital_capacity_recovers_between_sessions() -> None:
-    """Reference check PUL-2: 2.0 atm x 120 min, loss 0.779 %, 3 h later 0.274 %; then restart from what is left."""
+    """Reference check PUL-2: 2.0 atm x 120 min, loss 0.779 %, 3 h later 0.274 %; then a restart."""
     found = course_doses(
         course(held(2.0, 120), [0.0, 5.0 / 24.0]), ["vital_capacity_loss", "arieli_pulmonary_index"]
     )
@@ -294,7 +294,7 @@ def ladder(whole: Course, name: str, **more: object) -> xr.Dataset:
 
 
 def test_cumulative_ladders() -> None:
-    """Cumulative dose of 615 (2 %) and 1425 (10 %): sessions of 100 UPTD leave room for whole sessions only."""
+    """Cumulative dose of 615 (2 %) and 1425 (10 %): sessions of 100 UPTD leave room for whole ones."""
     hundred = held(1.0, 100)
     for done, left_2, left_10 in ((1, 5, 13), (6, 0, 8), (7, 0, 7), (14, 0, 0)):
         whole = course(hundred, list(map(float, range(done))))
@@ -346,7 +346,7 @@ def test_repeated_exposure_ladder(dose: float, done: int) -> None:
     ],
 )
 def test_days_in_a_row_at_an_index(index: float, days: list[float], left: float) -> None:
-    """Risberg & van Ooij 2022 [read]: 120 a day for 2 days, 70 for 5 days, then 2 days off; 40-50 every day."""
+    """Risberg & van Ooij 2022 [read]: 120 a day for 2 days, 70 for 5 days, then 2 off; 40-50 every day."""
     exposure = held(1.5, 60.0 * math.sqrt(index) / 1.5**2.285)
     row = ladder(course(exposure, days), "pulmonary_index_days", role="diver")
     assert float(row.sessions_left) == left

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import itertools
+
 import pytest
 
 import gasphys as gp
@@ -12,7 +14,7 @@ from gasphys.limits import load
 from gasphys.policy import PROVENANCE
 from gasphys.sources import sources
 
-#: Rows of each file, as counted in the reference tables (one row of "do not code" left out of the conventions).
+#: Rows of each file, as counted in the reference tables ("do not code" left out).
 ROWS = {
     "absorbent": 9,
     "anesthetic_pressure": 13,
@@ -40,7 +42,8 @@ def test_every_file_is_known_and_whole() -> None:
         assert len(rows) == count, name
         for row in rows:
             words = [v for k, v in row.items() if k.endswith("provenance")]
-            assert words and set(words) <= set(PROVENANCE), name
+            assert words, name
+            assert set(words) <= set(PROVENANCE), name
             if name != "noaa_oxygen_limits":
                 assert row["source"] in sources(), (name, row["source"])
     with pytest.raises(UnknownNameError, match="nearest: 'gas_purity'"):
@@ -59,7 +62,8 @@ def test_oxygen_tables() -> None:
     ]  # fmt: skip
     assert columns("usn_closed_circuit_oxygen", "rule", "depth_fsw", "minutes") == [
         ("proposed", 20, 240), ("single_depth", 25, 240), ("single_depth", 30, 80), ("single_depth", 35, 25),
-        ("single_depth", 40, 15), ("single_depth", 50, 10), ("one_excursion", 40, 15), ("one_excursion", 50, 5),
+        ("single_depth", 40, 15), ("single_depth", 50, 10),
+        ("one_excursion", 40, 15), ("one_excursion", 50, 5),
     ]  # fmt: skip
     assert columns("noaa_exceptional_limits", "po2_atm", "quoted_min", "remembered_min") == [
         (1.3, 240, 240), (1.4, 160, 180), (1.5, 150, 150), (1.6, 120, 120),
@@ -103,7 +107,7 @@ def test_narcosis() -> None:
     """Bands of PN2 follow from the depths: 0.79 of one atmosphere for 10 msw. Potencies as printed."""
     bands = [r for r in published("narcosis_impairment") if r["source"] == "clark_2015"]
     assert [r["depth_low_msw"] for r in bands] == [0, 10, 30, 50, 70, 90]
-    for before, after in zip(bands, bands[1:], strict=False):
+    for before, after in itertools.pairwise(bands):
         assert before["depth_high_msw"] == after["depth_low_msw"]
         assert before["pn2_high"] == after["pn2_low"]
     for row in bands:
@@ -113,8 +117,8 @@ def test_narcosis() -> None:
     for gas, row in potency.items():
         assert row["oil_bunsen"] / nitrogen == pytest.approx(row["oil_ratio"], abs=0.0006), gas
     assert {g: r["reported_potency"] for g, r in potency.items()} == {
-        "He": None, "Ne": 0.3, "H2": 0.6, "N2": 1.0, "O2": 1.7, "Ar": 2.3, "Kr": 7.1, "CO2": 20.0, "N2O": None,
-        "Xe": 25.6,
+        "He": None, "Ne": 0.3, "H2": 0.6, "N2": 1.0, "O2": 1.7, "Ar": 2.3, "Kr": 7.1, "CO2": 20.0,
+        "N2O": None, "Xe": 25.6,
     }  # fmt: skip
     # What the code uses is what the table says it uses.
     pure = {"O2": gp.Gas(1.0), "N2": gp.Gas(0.0), "He": gp.Gas(0.0, helium=1.0), "Ar": gp.Gas(0.0, argon=1.0)}

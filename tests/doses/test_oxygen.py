@@ -61,7 +61,7 @@ def test_treatment_tables(name: str) -> None:
     [(4.0, (686.8, 1512.6, 635.51, 5.21, 4.59)), (35.0, (713.5, 1540.2, 658.96, 5.40, 4.73))],
 )
 def test_table_6a_in_both_editions(ascent: float, expected: tuple[float, ...]) -> None:
-    """30 min of air at 165 fsw, travel to 60 fsw on air in 4 min (older) or 35 min (Revisions 5-7), Table 6."""
+    """30 min of air at 165 fsw, 4 min (older) or 35 min (Revisions 5-7) to 60 fsw on air, Table 6."""
     six = treatment("usn_6")
     start = Exposure.start(
         "air", pressure=six.surface_pressure + 165 * ATM / 33, depth_unit="fsw", part="air"
@@ -142,7 +142,7 @@ def test_every_integral_against_quadrature(exposure: Exposure) -> None:
             total += (
                 t
                 * quad(
-                    lambda s, a=a, b=b: rate(a + (b - a) * s),
+                    lambda s, a=a, b=b, rate=rate: rate(a + (b - a) * s),
                     0,
                     1,
                     points=place,
@@ -224,7 +224,7 @@ def test_diver_limits_are_context_for_patients() -> None:
         # The number, the limit and the distance stay to be seen.
         assert float(row.dose) == float(diver.dose.sel(measure=name))
         assert float(row.margin) == pytest.approx(float(row.limit_value) - float(row.dose))
-    # One treatment at 2.4 atm is beyond the diver limit of a day: 665 against 657 ESOT, oxygen periods of 90 min.
+    # 90 min of oxygen at 2.4 atm are beyond the diver limit of a day: 665 against 657 ESOT.
     assert value(Exposure.start("oxygen", pressure=2.4 * ATM).stay(90), "esot") == pytest.approx(
         665.3, abs=0.05
     )

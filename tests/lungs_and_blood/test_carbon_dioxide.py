@@ -118,3 +118,9 @@ def test_base_excess_and_content_are_the_printed_forms(pco2, ph, hb, s):
     assert blood.base_excess(pco2 * MMHG, ph, hb, s) == pytest.approx(expected, rel=1e-12)
     expected = _content(pco2, ph, hb, s)
     assert blood.co2_content(pco2 * MMHG, ph, hb, s) == pytest.approx(expected, rel=1e-12)
+
+
+def test_henderson_hasselbalch_is_the_printed_form():
+    for pco2, bicarbonate in ((40.0, 24.0), (60.0, 27.0), (25.0, 18.0)):
+        expected = 6.1 + np.log10(bicarbonate / (0.03 * pco2))
+        assert blood.ph_from(pco2 * MMHG, bicarbonate) == pytest.approx(expected, rel=1e-12)

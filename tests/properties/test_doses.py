@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 
 import numpy as np
@@ -87,7 +88,7 @@ def test_noaa_ramps_are_integrals_that_add(rule, total, start, end, duration, sh
     low, high = min(start, end), max(start, end)
     cuts = [low, *nodes[(nodes > low) & (nodes < high)], high]
     expected = 0.0
-    for a, b in zip(cuts, cuts[1:], strict=False):
+    for a, b in itertools.pairwise(cuts):
         if b <= a:
             continue
         inner = 0.5 * (a + b)

@@ -3,10 +3,15 @@
 from __future__ import annotations
 
 import itertools
+import re
 
+import chemicals
+import CoolProp.CoolProp as coolprop
 import numpy as np
 import pytest
 
+import gasphys as gp
+from gasphys import real_gas
 from gasphys.constants import CONSTANTS
 from gasphys.gas import FORMULAS
 from gasphys.policy import PROVENANCE
@@ -104,3 +109,83 @@ def test_constants_have_a_source() -> None:
     for constant in mine:
         assert constant.source in sources()
         assert constant.provenance in PROVENANCE
+
+
+@pytest.mark.parametrize("gas", FORMULAS)
+def test_polynomials_against_the_reference_equations(gas: str) -> None:
+    """B and C against the exact virial coefficients, no further off than the file says."""
+    fluid = {"N2": "Nitrogen", "O2": "Oxygen", "Ar": "Argon", "He": "Helium", "H2": "Hydrogen"}
+    fluid |= {"Ne": "Neon", "CO2": "CarbonDioxide"}
+    row = data("virial")["pure"][gas]
+    stated = [float(v) for v in re.findall(r"[BC] ([\d.]+) cm", row["largest_errors"])]
+    kelvins = np.linspace(250.0, 330.0, 33)
+    xi = 298.15 / kelvins - 1.0
+    for letter, name, scale, error in (("B", "BVIRIAL", 1e6, stated[0]), ("C", "CVIRIAL", 1e12, stated[1])):
+        # Virial coefficients do not depend on the density they are asked at.
+        truth = [scale * coolprop.PropsSI(name, "T", t, "D", 1e-3, fluid[gas]) for t in kelvins]
+        off = np.polynomial.polynomial.polyval(xi, row[letter]) - np.array(truth)
+        assert np.max(np.abs(off)) <= 1.05 * error + 1e-4
+
+
+def test_critical_constants_against_the_library() -> None:
+    numbers = {"N2": "7727-37-9", "O2": "7782-44-7", "He": "7440-59-7", "Ar": "7440-37-1", "H2": "1333-74-0"}
+    numbers |= {"Ne": "7440-01-9", "CO2": "124-38-9"}
+    for gas, row in data("peng_robinson")["pure"].items():
+        assert row["critical_temperature_K"] == chemicals.Tc(numbers[gas], method="HEOS")
+        assert row["critical_pressure_kPa"] == pytest.approx(chemicals.Pc(numbers[gas], method="HEOS") / 1e3)
+        # The library's acentric factors come from several tables.
+        assert row["acentric_factor"] == pytest.approx(chemicals.omega(numbers[gas]), rel=1e-12)
+    universal = data("peng_robinson")["universal"]
+    # Peng & Robinson 1976: a and b follow from the critical point (from memory: 0.45724, 0.07780).
+    x = (1.0 + (4.0 - 8.0**0.5) ** (1.0 / 3.0) + (4.0 + 8.0**0.5) ** (1.0 / 3.0)) ** -1.0
+    assert universal["b"] == pytest.approx(x / (x + 3.0), abs=6e-6)
+    assert universal["a"] == pytest.approx(8.0 * (5.0 * x + 1.0) / (49.0 - 37.0 * x), abs=6e-6)
+    assert universal["kappa"] == [0.37464, 1.54226, -0.26992]
+    assert [r["k"] for r in data("peng_robinson")["cross"]] == [-0.0159, -0.0004, 0.0089, 0.0711]
+
+
+def test_handbook_densities() -> None:
+    """Densities at 0 degC and 1 atm that the limits scale: the virial series agrees to the last digit."""
+    row = data("virial")["density_at_0_degC_1_atm"]
+    for gas in FORMULAS:
+        with gp.validity("ignore"):
+            pure = real_gas.density(101.325, _pure(gas), 0.0)
+        assert row[gas] == pytest.approx(pure, rel=6e-4)
+        assert real_gas.reference_density(101.325, _pure(gas)) == row[gas]
+
+
+def _pure(gas: str) -> gp.Gas:
+    return gp.Gas(oxygen=0.0) if gas == "N2" else gp.Gas(**{"oxygen": 0.0, FORMULAS[gas]: 1.0})
+
+
+def test_diffusion_volumes_as_remembered() -> None:
+    """Fuller, Ensley & Giddings 1969, from memory."""
+    row = data("transport")["fuller"]
+    remembered = {
+        "He": 2.67,
+        "Ne": 5.98,
+        "Ar": 16.2,
+        "H2": 6.12,
+        "N2": 18.5,
+        "O2": 16.3,
+        "CO2": 26.9,
+        "H2O": 13.1,
+    }
+    assert {k: row[k] for k in remembered} == remembered
+    assert (row["factor"], row["exponent"]) == (0.00143, 1.75)
+
+
+def test_ranges() -> None:
+    assert data("virial")["validity"] == {
+        "temperature_K": [260.0, 325.0],
+        "refuse_below_K": 250.0,
+        "pressure_kPa": [0.0, 30000.0],
+        "carbon_dioxide": [0.0, 0.05],
+    }
+    assert data("virial")["tolerance"] == {
+        "pressure_kPa": [7100.0, 20000.0],
+        "relative": [0.0005, 0.0015, 0.0030],
+    }
+    assert data("transport")["validity"]["temperature_K"] == [260.0, 330.0]
+    temperature = next(a for a in real_gas.viscosity.arguments if a.name == "temperature")
+    assert (temperature.low, temperature.high) == pytest.approx((-13.15, 56.85))

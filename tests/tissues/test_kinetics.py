@@ -348,16 +348,32 @@ def test_exponential_linear_against_an_ode_with_events(seed: int, over: float) -
         assert found == pytest.approx(_linear_reference(float(c), 24.57, dive, over), rel=2e-7, abs=2e-6)
 
 
-def test_a_compartment_may_cross_twice_within_one_ramp() -> None:
-    """Down a slow ramp the 5-min tissue leaves the linear branch and, later, none returns; found exactly."""
-    model = tissues.load("thalmann_vval18", compartments=["5", "40"])
-    state = np.array([[70.0 * FSW], [70.0 * FSW]])
-    whole = advance(model, state, np.array(240.0), np.array(103.0 * FSW), np.array(33.0 * FSW), AIR)
-    parts = state
-    edges = np.linspace(103.0, 33.0, 1001)
+@pytest.mark.parametrize(
+    ("half", "oxygen", "start", "low", "high", "minutes"),
+    [
+        # Slow ascent on air: off the linear branch, and on it again near the surface.
+        ("20", 0.21, 105.0, 103.0, 33.0, 240.0),
+        # Very slow descent on a gas with hardly any oxygen: onto the linear branch, and off it again.
+        ("5", 0.05, 28.0, 33.0, 100.0, 670.0),
+        ("5", 0.05, 30.0, 33.0, 100.0, 670.0),
+        ("40", 0.21, 70.0, 103.0, 33.0, 240.0),
+    ],
+)
+def test_a_compartment_may_cross_twice_within_one_ramp(
+    half: str, oxygen: float, start: float, low: float, high: float, minutes: float
+) -> None:
+    model = tissues.load("thalmann_vval18", compartments=[half])
+    breath = Breath(np.array(oxygen), np.array([1.0 - oxygen]), np.array(np.nan))
+    state = np.array([[start * FSW]])
+    whole = advance(model, state, np.array(minutes), np.array(low * FSW), np.array(high * FSW), breath)
+    edges = np.linspace(low, high, 1001)
+    parts, above = state, []
     for a, b in itertools.pairwise(edges):
-        parts = advance(model, parts, np.array(0.24), np.array(a * FSW), np.array(b * FSW), AIR)
-    np.testing.assert_allclose(parts, whole, rtol=1e-12)
+        parts = advance(model, parts, np.array(minutes / 1000.0), np.array(a * FSW), np.array(b * FSW), breath)
+        above.append(bool(parts[0, 0] / FSW > b - 4.3))
+    changes = sum(x != y for x, y in itertools.pairwise([start > low - 4.3, *above]))
+    assert changes == (2 if half != "40" else 1)
+    np.testing.assert_allclose(parts, whole, rtol=1e-11)
 
 
 def test_worked_values_of_the_linear_branch() -> None:

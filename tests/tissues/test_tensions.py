@@ -125,6 +125,11 @@ def test_mixed_gas_by_tension_and_by_the_smaller_limit() -> None:
     np.testing.assert_allclose(total[:, 0], 100.0)
     # 56 fsw on N2, 60 on He; the smaller one where both are there.
     np.testing.assert_allclose(limit[:, 0] / FSW, [56.0, 60.0, 56.0])
+    # Ceiling with both: the higher of (100 kPa - a)/dM, dM 1.4 with a 9.8 fsw and 1.2 with a 20.4 fsw.
+    both = max((100.0 / FSW - 9.8) / 1.4, (100.0 / FSW - 20.4) / 1.2)
+    assert ceilings(workman, np.array([[60.0, 40.0]]))[0] / FSW == pytest.approx(both, rel=1e-12)
+    alone = (100.0 / FSW - 20.4) / 1.2
+    assert ceilings(workman, np.array([[0.0, 100.0]]))[0] / FSW == pytest.approx(alone, rel=1e-12)
     assert np.isfinite(ceilings(one, np.zeros((1, 2)))).all()
     assert np.isfinite(ceilings(workman, np.zeros((1, 2)))).all()
 

@@ -98,6 +98,11 @@ def test_the_ends() -> None:
     assert f(3.0, "air", initial=full) == 0.0
     assert f(10.0, "oxygen", initial=full) == 0.0
     assert f(6.0, "oxygen") == np.inf
+    clean = tissues.tensions(Exposure.start("air").stay(1), "us_navy_1957").final
+    just_over = clean.copy(data=np.array([[104.1], [60.0], [60.0], [50.0], [45.0], [45.0]]) * FSW)
+    assert f(10.0, "oxygen", "us_navy_1957", initial=just_over) == 0.0
+    just_under = just_over.copy(data=just_over.values - 0.2 * FSW)
+    assert f(10.0, "oxygen", "us_navy_1957", initial=just_under) == np.inf
     # A descent that alone goes over it leaves no time.
     assert f(60.0, "air", "buhlmann_1995_a", descent_rate=1.0) == 0.0
 
@@ -232,6 +237,7 @@ def test_residual_time_is_the_stay_that_leaves_as_much() -> None:
             tissues.tensions(again, "us_navy_1957").final.sel(compartment=c).item()
         ) == pytest.approx(float(left.sel(compartment=c)), rel=1e-9)
     assert (tissues.residual_time(Exposure.start("air").stay(1), 20.0) == 0.0).all()
+    assert (tissues.residual_time(Exposure.start("oxygen").stay(30), 20.0) == 0.0).all()
     assert np.isinf(tissues.residual_time(dive, 1.0).sel(compartment="120"))
     with pytest.raises(ValidityError, match="exponential"):
         tissues.residual_time(dive, 20.0, "thalmann_vval18")
