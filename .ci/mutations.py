@@ -34,7 +34,12 @@ TESTS = {
     "gasphys/dry_air": ["tests/data", "tests/published"],
     "gasphys/constants": ["tests/data", "tests/published", "tests/twins"],
     "gasphys/real_gas": ["tests/real_gas", "tests/published", "tests/properties"],
-    "gasphys/doses": ["tests/doses", "tests/published", "tests/properties", "tests/floors/test_doses_along.py"],
+    "gasphys/doses": [
+        "tests/doses",
+        "tests/published",
+        "tests/properties",
+        "tests/floors/test_doses_along.py",
+    ],
     "gasphys/tissues": ["tests/tissues", "tests/published"],
     "gasphys/blood": ["tests/published", "tests/lungs_and_blood", "tests/properties"],
     "gasphys/lungs": ["tests/published", "tests/lungs_and_blood", "tests/properties"],
@@ -98,7 +103,9 @@ class _Places(ast.NodeVisitor):
 
     def visit_FunctionDef(self, node: ast.FunctionDef) -> None:
         names = {n.id for d in node.decorator_list for n in ast.walk(d) if isinstance(n, ast.Name)}
-        if names & {"formula", "_at_depth"} or any(n.startswith("_") for n in names) and node.decorator_list:
+        if names & {"formula", "_at_depth"} or (
+            any(n.startswith("_") for n in names) and node.decorator_list
+        ):
             self._inside += 1
             for statement in node.body:
                 if not (isinstance(statement, ast.Expr) and isinstance(statement.value, ast.Constant)):
@@ -108,7 +115,12 @@ class _Places(ast.NodeVisitor):
             self.generic_visit(node)
 
     def visit_Constant(self, node: ast.Constant) -> None:
-        if self._inside and isinstance(node.value, (int, float)) and not isinstance(node.value, bool) and node.value:
+        if (
+            self._inside
+            and isinstance(node.value, (int, float))
+            and not isinstance(node.value, bool)
+            and node.value
+        ):
             self.found.append((node, "1 % more"))
 
     def visit_BinOp(self, node: ast.BinOp) -> None:
@@ -173,7 +185,9 @@ def break_data(path: Path) -> Iterator[Mutant]:
     """Yield every break of one data file: each number 1 % larger."""
     lines = path.read_text(encoding="utf-8").split("\n")
     csv_file = path.suffix == ".csv"
-    header = next((k for k, line in enumerate(lines) if line and not line.startswith("#")), 0) if csv_file else -1
+    header = (
+        next((k for k, line in enumerate(lines) if line and not line.startswith("#")), 0) if csv_file else -1
+    )
     for k, line in enumerate(lines):
         if k <= header or line.startswith("#") or not line:
             continue
@@ -189,7 +203,9 @@ def break_data(path: Path) -> Iterator[Mutant]:
             new = repr(value * 1.01)
             changed = [*lines[:k], line[: match.start()] + new + line[match.end() :], *lines[k + 1 :]]
             yield Mutant(
-                str(path.relative_to(ROOT)), f"line {k + 1}: 1 % more: {line[:50]} [{match[0]}]", "\n".join(changed)
+                str(path.relative_to(ROOT)),
+                f"line {k + 1}: 1 % more: {line[:50]} [{match[0]}]",
+                "\n".join(changed),
             )
 
 
@@ -252,14 +268,36 @@ def _run(copy: Path, tests: str) -> int:
     os.dup2(null, 2)
     import pytest
 
-    words = ["-x", "-q", "-W", "ignore::pytest.PytestAssertRewriteWarning", "-p", "no:cacheprovider", "-p", "no:xdist", "-o", "addopts=", "--no-header", tests]
+    words = [
+        "-x",
+        "-q",
+        "-W",
+        "ignore::pytest.PytestAssertRewriteWarning",
+        "-p",
+        "no:cacheprovider",
+        "-p",
+        "no:xdist",
+        "-o",
+        "addopts=",
+        "--no-header",
+        tests,
+    ]
     # The test that asks README for its numbers and the fuzz are no help here.
     return int(pytest.main(words))
 
 
 def _preload() -> None:
     """Import once what every child needs, but nothing of gasphys."""
-    for name in ("numpy", "scipy.special", "scipy.optimize", "scipy.integrate", "sympy", "xarray", "hypothesis", "pytest"):
+    for name in (
+        "numpy",
+        "scipy.special",
+        "scipy.optimize",
+        "scipy.integrate",
+        "sympy",
+        "xarray",
+        "hypothesis",
+        "pytest",
+    ):
         with contextlib.suppress(ImportError):
             __import__(name)
 
@@ -276,7 +314,9 @@ def work(mutants: list[Mutant], copy: Path, report: Path) -> None:
             if not whole[tests]:
                 out.write(f"not tried\t{mutant.path}\t{mutant.label}\n")
                 continue
-            out.write(f"{'survived' if survives(mutant, copy) else 'killed'}\t{mutant.path}\t{mutant.label}\n")
+            out.write(
+                f"{'survived' if survives(mutant, copy) else 'killed'}\t{mutant.path}\t{mutant.label}\n"
+            )
             out.flush()
 
 
@@ -302,7 +342,11 @@ def main() -> int:
         children, reports = [], []
         for k in range(workers):
             copy = Path(folder) / f"copy{k}"
-            shutil.copytree(ROOT, copy, ignore=shutil.ignore_patterns(".git", ".venv*", "_build", "generated", "__pycache__"))
+            shutil.copytree(
+                ROOT,
+                copy,
+                ignore=shutil.ignore_patterns(".git", ".venv*", "_build", "generated", "__pycache__"),
+            )
             report = Path(folder) / f"report{k}.txt"
             reports.append(report)
             child = os.fork()
@@ -324,7 +368,8 @@ def main() -> int:
     for path, label in new:
         print(f"survived: {path} {label}")
     print(
-        f"{len(lines)} mutations, {sum(line[0] == 'killed' for line in lines)} failed a test, {len(survivors) - len(new)} survived "
+        f"{len(lines)} mutations, {sum(line[0] == 'killed' for line in lines)} failed a test, "
+        f"{len(survivors) - len(new)} survived "
         f"with a written reason, {len(new)} survived without; {time.monotonic() - began:.0f} s"
     )
     return 1 if new or untried or len(lines) != len(mutants) else 0

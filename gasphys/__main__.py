@@ -67,27 +67,51 @@ def _parser() -> argparse.ArgumentParser:
     common.add_argument("--units", default="", metavar="UNITS", help="such as atm,fsw or bar,msw or mmHg")
     common.add_argument("--save", metavar="FILE.nc", help="write exposure, gases and review as netCDF")
     common.add_argument("--figure", metavar="FILE.png", help="draw the exposure")
-    common.add_argument("--limits", metavar="FILE", help="the site's own limits (TOML), added to the shipped ones")
+    common.add_argument(
+        "--limits", metavar="FILE", help="the site's own limits (TOML), added to the shipped ones"
+    )
     common.add_argument(
         "--surface-pressure", metavar="P", help="pressure at the surface, such as '101.0 kPa' or '760 mmHg'"
     )
     common.add_argument("--breathing", metavar="FILE", help="breathing periods laid over the log (CSV)")
-    parser = argparse.ArgumentParser(prog="python -m gasphys", description=__doc__.split("\n")[0], epilog=CAUTION)
+    parser = argparse.ArgumentParser(
+        prog="python -m gasphys", description=__doc__.split("\n")[0], epilog=CAUTION
+    )
     commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
-    one = commands.add_parser("review", parents=[common], help="compare a recorded exposure with limits", epilog=CAUTION)
-    one.add_argument("file", metavar="FILE", help="log of pressure and gas (CSV) or a saved exposure (netCDF)")
+    one = commands.add_parser(
+        "review", parents=[common], help="compare a recorded exposure with limits", epilog=CAUTION
+    )
+    one.add_argument(
+        "file", metavar="FILE", help="log of pressure and gas (CSV) or a saved exposure (netCDF)"
+    )
     one.set_defaults(run=_review)
-    one = commands.add_parser("treatment", parents=[common], help="what a treatment table does to a person", epilog=CAUTION)
+    one = commands.add_parser(
+        "treatment", parents=[common], help="what a treatment table does to a person", epilog=CAUTION
+    )
     one.add_argument("name", metavar="NAME", help="such as usn_6; an unknown name lists them")
     one.add_argument("--extensions-deep", type=int, default=0, metavar="N")
     one.add_argument("--extensions-shallow", type=int, default=0, metavar="N")
     one.add_argument("--attendant", action="store_true", help="the inside attendant's exposure instead")
     one.add_argument("--descent", default="air", metavar="GAS", help="gas breathed on the way down")
     one.set_defaults(run=_treatment)
-    one = commands.add_parser("compare", parents=[common], help="was what was done what was prescribed", epilog=CAUTION)
+    one = commands.add_parser(
+        "compare", parents=[common], help="was what was done what was prescribed", epilog=CAUTION
+    )
     one.add_argument("recorded", metavar="RECORDED", help="log (CSV) or saved exposure (netCDF)")
-    one.add_argument("prescribed", metavar="PRESCRIBED", help="a treatment table's name, a log or a saved exposure")
+    one.add_argument(
+        "prescribed", metavar="PRESCRIBED", help="a treatment table's name, a log or a saved exposure"
+    )
     one.set_defaults(run=_compare)
+    one = commands.add_parser(
+        "doses", parents=[common], help="every published oxygen measure side by side", epilog=CAUTION
+    )
+    one.add_argument("file", metavar="WHAT", help="a treatment table's name, a log or a saved exposure")
+    one.set_defaults(run=_doses)
+    one = commands.add_parser(
+        "course", parents=[common], help="what a course of sessions adds up to", epilog=CAUTION
+    )
+    one.add_argument("file", metavar="FILE", help="course file (TOML or CSV): date, time, schedule or log")
+    one.set_defaults(run=_course)
     one = commands.add_parser("equations", help="list every equation, or print them all as JSON")
     one.add_argument("--json", action="store_true", help="as JSON")
     one.set_defaults(run=_equations)
@@ -106,7 +130,10 @@ def _equations(options: argparse.Namespace) -> int:
     width = max(len(r["name"]) for r in records)
     for record in records:
         arguments = ", ".join(a["name"] for a in record["arguments"])
-        print(f"{record['name']:<{width}}  {record['kind']:<8} {record['result']} [{record['unit']}] of {arguments}")
+        print(
+            f"{record['name']:<{width}}  {record['kind']:<8} "
+            f"{record['result']} [{record['unit']}] of {arguments}"
+        )
     return 0
 
 
@@ -142,22 +169,64 @@ def _review(options: argparse.Namespace) -> int:
     return _show(_exposure(options.file, options), options, role="diver")
 
 
-def _compare(options: argparse.Namespace) -> int:
-    from gasphys.comparison import compare, comparison_text
+def _named(what: str, options: argparse.Namespace, **more: Any) -> tuple[Any, str]:
+    """Return the exposure of a table's name or a file, and the role that goes with it."""
     from gasphys.schedules import names, treatment
 
+    if what in names() or not Path(what).exists():
+        return treatment(what, **more), "patient"
+    return _exposure(what, options), "diver"
+
+
+def _role(options: argparse.Namespace, otherwise: str) -> tuple[Any, str]:
+    from gasphys.person import Person
+
+    person = Person.from_toml(options.person) if options.person else None
+    return person, options.role or (person.role if person and person.role else otherwise)
+
+
+def _doses(options: argparse.Namespace) -> int:
+    from gasphys.doses import dose_text, oxygen
+
+    exposure, role = _named(options.file, options)
+    _, role = _role(options, role)
+    found = oxygen(exposure, "all", role=role)
+    print(exposure.attrs.get("title", "exposure"))
+    print(f"reviewed as: {role}\n")
+    print(dose_text(found))
+    _write(found, options.save)
+    return 0
+
+
+def _course(options: argparse.Namespace) -> int:
+    from gasphys.doses import course_doses, course_text, read_course, sessions_left
+
+    person, role = _role(options, "patient")
+    course = read_course(options.file, person=person.code if person else None)
+    print(course_text(course, role=role))
+    _write(course_doses(course, "all", role=role) if options.save else None, options.save)
+    if options.figure:
+        from gasphys.plots import course_figure, save_figure
+
+        save_figure(course_figure(sessions_left(course, role=role)), options.figure)
+        print(f"figure: {options.figure}")
+    return 0
+
+
+def _write(found: Any, path: str | None) -> None:
+    if path:
+        found.to_netcdf(path)
+        print(f"\nsaved: {path}")
+
+
+def _compare(options: argparse.Namespace) -> int:
+    from gasphys.comparison import compare, comparison_text
+
     recorded = _exposure(options.recorded, options)
-    if options.prescribed in names():
-        prescribed = treatment(options.prescribed, surface_pressure=recorded.surface_pressure)
-    elif Path(options.prescribed).exists():
-        prescribed = _exposure(options.prescribed, options)
-    else:
-        prescribed = treatment(options.prescribed)
+    prescribed, _ = _named(options.prescribed, options, surface_pressure=recorded.surface_pressure)
     found = compare(recorded, prescribed)
     print(comparison_text(found))
-    if options.save:
-        found.to_netcdf(options.save)
-        print(f"\nsaved: {options.save}")
+    _write(found, options.save)
     return 0
 
 
@@ -179,12 +248,10 @@ def _treatment(options: argparse.Namespace) -> int:
 
 def _show(exposure: Any, options: argparse.Namespace, role: str) -> int:
     from gasphys.limits import load
-    from gasphys.person import Person
     from gasphys.report import Units, review_text, summary_text
     from gasphys.reviews import review
 
-    person = Person.from_toml(options.person) if options.person else None
-    role = options.role or (person.role if person and person.role else role)
+    person, role = _role(options, role)
     limits = load(options.limits or "default")
     units = Units.parse(options.units, depth=exposure.depth_unit)
     found = review(exposure, person, role=role, limits=limits)
@@ -214,7 +281,10 @@ def _save(exposure: Any, person: Any, found: Any, path: str) -> None:
         compat="override",
         join="exact",
     )
-    whole.attrs = {**exposure.to_dataset().attrs, **{k: found.attrs[k] for k in ("role", "person", "from_memory")}}
+    whole.attrs = {
+        **exposure.to_dataset().attrs,
+        **{k: found.attrs[k] for k in ("role", "person", "from_memory")},
+    }
     whole.attrs["title"] = found.attrs["title"]
     whole.to_netcdf(path)
 

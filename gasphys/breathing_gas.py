@@ -7,7 +7,12 @@ from gasphys.maths import maximum, minimum
 
 __all__ = [
     "fraction_breathed",
-    "linear_in_piece", "loop_inert_pressure", "loop_po2", "open_circuit_inert_pressure", "open_circuit_po2"]
+    "linear_in_piece",
+    "loop_inert_pressure",
+    "loop_po2",
+    "open_circuit_inert_pressure",
+    "open_circuit_po2",
+]
 
 
 @formula(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from typing import Any
 
 import numpy as np
@@ -81,10 +82,7 @@ def compare(recorded: Exposure, prescribed: Exposure) -> xr.Dataset:
     bounds = _divide(recorded, parts)
     cut = recorded._split(np.unique(bounds[1:-1]))
     want = [_measure_window(prescribed, a, b, p) for p, (a, b) in zip(parts, _windows(parts), strict=True)]
-    got = [
-        _measure_window(cut, a, b, p)
-        for p, (a, b) in zip(parts, zip(bounds[:-1], bounds[1:], strict=True), strict=True)
-    ]
+    got = [_measure_window(cut, a, b, p) for p, (a, b) in zip(parts, itertools.pairwise(bounds), strict=True)]
     return _dataset(recorded, prescribed, parts, bounds, np.array(want), np.array(got))
 
 
@@ -133,7 +131,7 @@ def _divide(recorded: Exposure, parts: list[_Part]) -> Array:
     """Return the times that divide the record among the parts, first 0 and last its end."""
     total = float(recorded.duration)
     grid = np.linspace(0.0, total, int(np.clip(total * 6.0, 200, 6000)) + 1)
-    times, index, share = recorded.sample(grid)
+    times, _index, _share = recorded.sample(grid)
     middle = 0.5 * (times[:-1] + times[1:])
     step = np.diff(times)
     pieces = recorded.pieces()
@@ -236,7 +234,8 @@ def _dataset(
             if abs(difference[k, j]) >= worth:
                 shown = "" if unit == "1" else f" {unit}"
                 deviations.append(
-                    f"segment {k} ({part.name}): {meaning} {got[k, j]:.1f}{shown} instead of {want[k, j]:.1f}{shown}"
+                    f"segment {k} ({part.name}): {meaning} {got[k, j]:.1f}{shown} "
+                    f"instead of {want[k, j]:.1f}{shown}"
                 )
     totals = {
         "minutes": (float(prescribed.duration), float(recorded.duration)),
@@ -309,10 +308,12 @@ def comparison_text(found: xr.Dataset) -> str:
     minutes, o2, uptd = total("minutes"), total("o2_minutes"), total("uptd")
     lines = [
         str(found.attrs["title"]),
-        f"  in all: {minutes[0]:.1f} min (prescribed {minutes[1]:.1f}), oxygen {o2[0]:.1f} min ({o2[1]:.1f}), "
+        f"  in all: {minutes[0]:.1f} min (prescribed {minutes[1]:.1f}), "
+        f"oxygen {o2[0]:.1f} min ({o2[1]:.1f}), "
         f"{uptd[0]:.1f} UPTD ({uptd[1]:.1f})",
         "",
-        "  delivered (prescribed)          from      minutes    mean kPa abs     kPa/min     mean PO2 kPa         UPTD",
+        f"  {'delivered (prescribed)':<26}{'from':>9}  {'minutes':>15} {'mean kPa abs':>15} "
+        f"{'kPa/min':>12} {'mean PO2 kPa':>15} {'UPTD':>13}",
     ]
     for k in found["segment"].values:
         row = found.sel(segment=k)
@@ -325,7 +326,8 @@ def comparison_text(found: xr.Dataset) -> str:
 
         name = f"{k} {row['part'].values}"
         lines.append(
-            f"  {name:<26}{float(row['start'].values):>9.1f}  {both('minutes', 1):>15} {both('mean_pressure', 1):>15} "
+            f"  {name:<26}{float(row['start'].values):>9.1f}  "
+            f"{both('minutes', 1):>15} {both('mean_pressure', 1):>15} "
             f"{both('rate', 1):>12} {both('mean_po2', 1):>15} {both('uptd', 1):>13}"
         )
     deviations = str(found.attrs["deviations"])

@@ -160,7 +160,7 @@ BODY_VAPOR_PRESSURE = _constant(
     exact=True,
 )
 STANDARD_GRAVITY = _constant(
-    "STANDARD_GRAVITY", 9.80665, "m/s2", "g_n", "standard gravity", "cgpm_1901", "read", exact=True
+    "STANDARD_GRAVITY", 9.80665, "m/s^2", "g_n", "standard gravity", "cgpm_1901", "read", exact=True
 )
 MSW = _constant(
     "MSW", 10.0, "kPa", "p_{msw}", "pressure of one meter of sea water", "msw_convention",
@@ -209,7 +209,7 @@ FSW_32_646_PER_BAR = _constant(
 FRESH_WATER_DENSITY = _constant(
     "FRESH_WATER_DENSITY",
     1000.0,
-    "kg/m3",
+    "kg/m^3",
     r"\rho_{fw}",
     "fresh water, conventional",
     "common_practice",
@@ -408,10 +408,22 @@ CNS_ACTIVE_EXPONENT = _constant(
     "CNS_ACTIVE_EXPONENT", 3.38, "1", "n", "half the power of PO2, active divers", "arieli_2002", "read"
 )
 CNS_ACTIVE_MEDIAN = _constant(
-    "CNS_ACTIVE_MEDIAN", 9.63, "1", "m", "logarithm of the median exposure, active divers", "arieli_2002", "read"
+    "CNS_ACTIVE_MEDIAN",
+    9.63,
+    "1",
+    "m",
+    "logarithm of the median exposure, active divers",
+    "arieli_2002",
+    "read",
 )
 CNS_ACTIVE_SPREAD = _constant(
-    "CNS_ACTIVE_SPREAD", 2.02, "1", "s", "standard deviation of the logarithm, active divers", "arieli_2002", "read"
+    "CNS_ACTIVE_SPREAD",
+    2.02,
+    "1",
+    "s",
+    "standard deviation of the logarithm, active divers",
+    "arieli_2002",
+    "read",
 )
 CNS_MODERATE_MEDIAN = _constant(
     "CNS_MODERATE_MEDIAN",
@@ -441,7 +453,13 @@ CNS_IMMERSED_EXPONENT = _constant(
     "read",
 )
 CNS_IMMERSED_MEDIAN = _constant(
-    "CNS_IMMERSED_MEDIAN", 8.99, "1", "m", "logarithm of the median exposure, immersed rest", "aviner_2020", "read"
+    "CNS_IMMERSED_MEDIAN",
+    8.99,
+    "1",
+    "m",
+    "logarithm of the median exposure, immersed rest",
+    "aviner_2020",
+    "read",
 )
 CNS_IMMERSED_SPREAD = _constant(
     "CNS_IMMERSED_SPREAD",
@@ -502,7 +520,13 @@ N2_IN_AIR = _constant(
     exact=True,
 )
 MOLAR_MASS_HYDROXIDE = _constant(
-    "MOLAR_MASS_HYDROXIDE", 74.093, "g/mol", "M_{Ca(OH)_2}", "molar mass of calcium hydroxide", "ciaaw", "memory_high"
+    "MOLAR_MASS_HYDROXIDE",
+    74.093,
+    "g/mol",
+    "M_{Ca(OH)_2}",
+    "molar mass of calcium hydroxide",
+    "ciaaw",
+    "memory_high",
 )
 EVA_HALF_TIME = _constant(
     "EVA_HALF_TIME",

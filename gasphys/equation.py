@@ -121,7 +121,8 @@ class Working:
     __repr__ = __str__
 
     def _repr_latex_(self) -> str:
-        return f"$\\displaystyle {self._latex} = {self.result:.6g}\\ \\mathrm{{{_tex_unit(self.equation.result.unit)}}}$"
+        unit = _tex_unit(self.equation.result.unit)
+        return f"$\\displaystyle {self._latex} = {self.result:.6g}\\ \\mathrm{{{unit}}}$"
 
 
 def _shown(unit: str) -> str:
@@ -431,7 +432,7 @@ def _shell_function(body: Any, spec: Spec) -> Any:
         "float": float,
         "inf": float("inf"),
     }
-    exec(compile(text, f"<shell of {spec.name}>", "exec"), space)  # noqa: S102
+    exec(compile(text, f"<shell of {spec.name}>", "exec"), space)
     f = space[body.__name__]
     f.__module__, f.__qualname__ = body.__module__, body.__qualname__
     f.__annotations__ = dict(body.__annotations__)
@@ -568,7 +569,7 @@ def _tidy(expression: Any) -> Any:
     """Write 37 for 37.0: whole numbers of a body are floats only to the computer."""
     import sympy as sp
 
-    whole = {x: sp.Integer(int(x)) for x in expression.atoms(sp.Float) if x == int(x) and abs(x) < 1e15}
+    whole = {x: sp.Integer(int(x)) for x in expression.atoms(sp.Float) if float(x).is_integer()}
     return expression.xreplace(whole)
 
 
@@ -684,7 +685,8 @@ def _trace_nested(f: Any) -> tuple[Any, dict[Any, tuple[Any, int]]]:
 
         return answer
 
-    code, space = f._body.__code__, {"__builtins__": {}}
+    code = f._body.__code__
+    space: dict[str, Any] = {"__builtins__": {}}
     known = symbolic_names()
     for name in code.co_names:
         value = f._body.__globals__.get(name, _MISSING)
@@ -735,9 +737,7 @@ def _derivative(f: Any, name: str) -> Derivative:
         expression = _differentiate(_trace(f), sp.Symbol(name))
         right = _tex(f, expression)
         left = rf"\frac{{\partial {f.result.symbol}}}{{\partial {_argument(f, name).quantity.symbol}}}"
-        cache[name] = Derivative(
-            f, name, expression, _numeric(f, expression), f"{left} = {right}"
-        )
+        cache[name] = Derivative(f, name, expression, _numeric(f, expression), f"{left} = {right}")
     return cache[name]  # type: ignore[no-any-return]
 
 
@@ -774,8 +774,7 @@ def _known(f: Any, name: str, known: dict[str, Any]) -> tuple[float, dict[str, f
     keys = [k for k in dict.fromkeys((f.result.name, short, "result")) if k in known and k != name]
     if len(keys) != 1 or any(a.name == keys[0] for a in f.arguments):
         raise TypeError(
-            f"{f.name}.solve_for({name!r}) needs the result once, as {f.result.name}=, {short}= or "
-            "result="
+            f"{f.name}.solve_for({name!r}) needs the result once, as {f.result.name}=, {short}= or result="
         )
     wanted = number(known.pop(keys[0]), Argument(f.result.name, f.result))
     if not np.isfinite(wanted):
@@ -1029,9 +1028,7 @@ def _choice(
                     kwargs.update(function(kwargs.pop(argument)))
             keep = {a.name for a in chosen.arguments}
             unused = (set(signature.parameters) | set(arguments)) - keep
-            return getattr(chosen, method)(
-                *args, **{k: v for k, v in kwargs.items() if k not in unused}
-            )
+            return getattr(chosen, method)(*args, **{k: v for k, v in kwargs.items() if k not in unused})
 
         return passed
 
@@ -1064,7 +1061,7 @@ def _dispatcher(
         for number, (key, member) in enumerate(registry.items()):
             space[f"_member{number}"] = member
             inputs = ", ".join(f"{a.name}={a.name}" for a in member.arguments)
-            routes[key] = eval(f"lambda {passed}: _member{number}({inputs})", space)  # noqa: S307
+            routes[key] = eval(f"lambda {passed}: _member{number}({inputs})", space)
     key = options[0] if len(options) == 1 else f"({', '.join(options)})"
     chosen = f"({', '.join(options)},)"
     every = ", ".join(f"{n}={n}" for n in parameters)
@@ -1079,7 +1076,7 @@ def _dispatcher(
         f"    return _route({passed})\n"
     )
     space |= {"_routes": routes, "KeyError": KeyError, "TypeError": TypeError, "dict": dict}
-    exec(compile(text, f"<choice {body.__name__}>", "exec"), space)  # noqa: S102
+    exec(compile(text, f"<choice {body.__name__}>", "exec"), space)
     f = space[body.__name__]
     f.__module__, f.__qualname__ = body.__module__, body.__qualname__
     return f
@@ -1207,9 +1204,7 @@ def inverse(
     _equip(g, spec, forward.sources, forward.constants, body)
 
     def not_traceable(*_: Any, **__: Any) -> Any:
-        raise NotTraceable(
-            f"{spec.name} is an inverse without a closed form; trace {forward.name} instead"
-        )
+        raise NotTraceable(f"{spec.name} is an inverse without a closed form; trace {forward.name} instead")
 
     def put_back(values: list[Any], found: Any) -> list[Any]:
         rest = values[1:]
@@ -1237,9 +1232,7 @@ def inverse(
         found = f(**plain)
         back = put_back(list(plain.values()), found)
         check = float(np.asarray(forward.raw(*back)))
-        note = (
-            f"put back into {forward.name}: {forward.result.name} = {check:.7g} {forward.result.unit}"
-        )
+        note = f"put back into {forward.name}: {forward.result.name} = {check:.7g} {forward.result.unit}"
         text = f"{argument} such that {forward.result.name} = {forward.name}(...)"
         tex = forward.latex() if forward.kind == "formula" else ""
         return Working(g, plain, found, text, tex, (note,))
@@ -1383,7 +1376,13 @@ def _docstring(text: str, f: Any, body: Any) -> str:
     out += ["", "Raises", "------", "RangeError"]
     out.append("    If one number is not possible for its quantity; in arrays that element is NaN.")
     out += ["UnitError", "    If a unit is missing, unknown or of another kind."]
-    out += ["", "Warns", "-----", "ValidityWarning", "    Outside the validity range, see :func:`gasphys.validity`."]
+    out += [
+        "",
+        "Warns",
+        "-----",
+        "ValidityWarning",
+        "    Outside the validity range, see :func:`gasphys.validity`.",
+    ]
     if "Notes" in own:
         out += ["", "Notes", "-----", own["Notes"].strip()]
         out += ["", f"Provenance: {f.provenance}."]

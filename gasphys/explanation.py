@@ -103,7 +103,8 @@ def _select(ds: xr.Dataset, name: str, time: float | None, labels: dict[str, Any
         if abs(times[index] - time) > 1e-9 * max(1.0, abs(time)):
             near = ", ".join(f"{t:g}" for t in times[max(0, index - 1) : index + 2])
             raise GasphysError(
-                f"time = {time:g} min is not a time of the Dataset (nearest: {near}); compute it with at=[{time:g}]"
+                f"time = {time:g} min is not a time of the Dataset (nearest: {near}); compute it with "
+                f"at=[{time:g}]"
             )
         row = row.isel(time=index)
         if "segment" in row.dims and "segment_of_time" in row:
@@ -169,7 +170,7 @@ def _input(
         return top / bottom
     name, _, label = source[1:].partition(":")
     if label:
-        gas = labels[label] if label in labels else label
+        gas = labels.get(label, label)
         value = float(row[name].sel(gas=gas).values)
         given[f"{name} of {gas}"] = value
         return value

@@ -7,7 +7,7 @@ are constant; a switch is a boundary between pieces. Every builder method return
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -325,7 +325,9 @@ class Exposure:
             return new._piece(time, target)
         new, speed = new._plain(rate, "rate")
         if not np.all(speed > 0.0):
-            raise RangeError(f"rate = {float(np.min(speed)):g} must be positive; the direction follows from the target")
+            raise RangeError(
+                f"rate = {float(np.min(speed)):g} must be positive; the direction follows from the target"
+            )
         if depth is not None:
             now, there = new._pressure_to_depth(new.pressure), new._pressure_to_depth(target)
             return new._piece(np.abs(there - now) / speed, target)
@@ -541,7 +543,9 @@ class Exposure:
         when = float(self._value(at, "time")[1])
         time = float(self._value(minutes, "duration")[1])
         if not 0.0 <= when <= self._one_duration():
-            raise ExposureError(f"at = {when:g} min is not within the exposure of {self._one_duration():g} min")
+            raise ExposureError(
+                f"at = {when:g} min is not within the exposure of {self._one_duration():g} min"
+            )
         cut = self._split([when])
         times = cut.pieces().times
         index = int(np.argmin(np.abs(times - when)))
@@ -609,11 +613,10 @@ class Exposure:
         loop = ~np.isnan(setpoint)
         with np.errstate(invalid="ignore"):
             po2 = [
-                np.where(loop, loop_po2.raw(setpoint, p), open_circuit_po2.raw(oxygen, p)) for p in (start, end)
+                np.where(loop, loop_po2.raw(setpoint, p), open_circuit_po2.raw(oxygen, p))
+                for p in (start, end)
             ]
-        times = np.concatenate(
-            [np.zeros((*duration.shape[:-1], 1)), np.cumsum(duration, axis=-1)], axis=-1
-        )
+        times = np.concatenate([np.zeros((*duration.shape[:-1], 1)), np.cumsum(duration, axis=-1)], axis=-1)
         return Pieces(duration, start, end, po2[0], po2[1], dict(self.fractions), setpoint, times)
 
     def to_dataset(self, at: Any = None) -> xr.Dataset:
@@ -750,10 +753,18 @@ class Exposure:
 
         def put(name: str, extra: tuple[str, ...], values: Array, **attrs: Any) -> None:
             lead = self.dims if values.ndim > len(extra) + 1 else ()
-            values = np.broadcast_to(values, (*self._shape()[:-1], *values.shape[len(self.dims) :])) if lead else values
+            values = (
+                np.broadcast_to(values, (*self._shape()[:-1], *values.shape[len(self.dims) :]))
+                if lead
+                else values
+            )
             ds[name] = ((*lead, *extra, *dims), values.copy(), attributes(name, **attrs))
 
-        ds["share_of_piece"] = (dims, share, {"units": "1", "long_name": "share of the piece passed at this time"})
+        ds["share_of_piece"] = (
+            dims,
+            share,
+            {"units": "1", "long_name": "share of the piece passed at this time"},
+        )
         put(
             "ambient_pressure",
             (),
@@ -771,7 +782,10 @@ class Exposure:
             '"ambient_pressure": "@ambient_pressure"}',
         )
         inert = [g for g in self.fractions if g not in ("O2", "CO2")]
-        values = [np.broadcast_to(at_times(*pieces.inert_pressure(g)), (*self._shape()[:-1], len(index))) for g in inert]
+        values = [
+            np.broadcast_to(at_times(*pieces.inert_pressure(g)), (*self._shape()[:-1], len(index)))
+            for g in inert
+        ]
         ds.coords["inert_gas"] = inert
         put(
             "breathing_gas_inert_pressure",
@@ -857,9 +871,7 @@ class Exposure:
             name: column(ds[name], name) if name in ds else np.full((*[1] * len(dims), n), np.nan)
             for name in _NUMERIC
         }
-        fractions = {
-            str(g): column(ds["gas_fraction"].sel(gas=g), "gas_fraction") for g in ds["gas"].values
-        }
+        fractions = {str(g): column(ds["gas_fraction"].sel(gas=g), "gas_fraction") for g in ds["gas"].values}
         for needed_gas in ("O2", "N2"):
             fractions.setdefault(needed_gas, np.zeros((*[1] * len(dims), n)))
         surface: Any = ds.attrs.get("surface_pressure", float(ATMOSPHERE))
@@ -960,7 +972,8 @@ class Exposure:
             pressure=float(log.ambient_pressure[-1]),
             setpoint_now=float(log.setpoint[-1]),
             history=tuple(log.history),
-            attrs={"title": f"exposure read from {os.path.basename(log.path)}"} | ({"start": log.start} if log.start else {}),
+            attrs={"title": f"exposure read from {os.path.basename(log.path)}"}
+            | ({"start": log.start} if log.start else {}),
         )
         new._check()
         return new._split_clamps()._merge()
@@ -1029,7 +1042,9 @@ class Exposure:
         if isinstance(value, xr.DataArray) and value.ndim:
             new = self
             for dim in value.dims:
-                new = new._adopt(str(dim), value[dim].values if dim in value.coords else np.arange(value.sizes[dim]))
+                new = new._adopt(
+                    str(dim), value[dim].values if dim in value.coords else np.arange(value.sizes[dim])
+                )
             order = [d for d in new.dims if d in value.dims]
             values = value.transpose(*order).values.astype(float)
             return new, values.reshape([value.sizes.get(d, 1) for d in new.dims])
@@ -1049,14 +1064,18 @@ class Exposure:
                 raise ExposureError(f"dimension {dim!r} has other labels than before")
             return self
         if dim in ("segment", "time", "point", "gas", "inert_gas"):
-            raise ExposureError(f"{dim!r} is a dimension of the exposure itself; name the scenario's another way")
+            raise ExposureError(
+                f"{dim!r} is a dimension of the exposure itself; name the scenario's another way"
+            )
 
         def widen(values: Any) -> Any:
             values = np.asarray(values, dtype=float)
             return values.reshape((*values.shape[: len(self.dims)], 1, *values.shape[len(self.dims) :]))
 
         def widen_state(value: Any) -> Any:
-            return np.asarray(value, dtype=float).reshape((*np.shape(value), *(1,) * (len(self.dims) + 1 - np.ndim(value))))
+            return np.asarray(value, dtype=float).reshape(
+                (*np.shape(value), *(1,) * (len(self.dims) + 1 - np.ndim(value)))
+            )
 
         return replace(
             self,
@@ -1083,7 +1102,10 @@ class Exposure:
             for formula in gas["gas"].values:
                 new, mix[str(formula)] = new._plain(gas.sel(gas=formula, drop=True), "gas_fraction")
             # _plain may have added dimensions after the first formula was read
-            mix = {k: np.asarray(v).reshape((*np.shape(v), *(1,) * (len(new.dims) - np.ndim(v)))) for k, v in mix.items()}
+            mix = {
+                k: np.asarray(v).reshape((*np.shape(v), *(1,) * (len(new.dims) - np.ndim(v))))
+                for k, v in mix.items()
+            }
             total = sum(mix.values())
             if not np.all(np.abs(total - 1.0) <= 1e-6):
                 raise ExposureError("the gas fractions do not sum to 1 within 1e-6")
@@ -1104,7 +1126,9 @@ class Exposure:
             depth = number
         new, plain = self._plain(depth, "depth")
         if not np.all(plain >= 0.0):
-            raise RangeError(f"depth = {float(np.min(plain)):g} must not be negative; for altitude use pressure=")
+            raise RangeError(
+                f"depth = {float(np.min(plain)):g} must not be negative; for altitude use pressure="
+            )
         return new, _pressure(water, plain, new.surface_pressure)
 
     def _pressure_to_depth(self, pressure: Any) -> Any:
@@ -1122,17 +1146,18 @@ class Exposure:
     def _piece(self, minutes: Any, target: Any) -> Exposure:
         minutes, target = np.asarray(minutes, dtype=float), np.asarray(target, dtype=float)
         if np.all(minutes == 0.0):
-            if not np.array_equal(*np.broadcast_arrays(target, np.asarray(self.pressure))):
+            if not np.all(target == np.asarray(self.pressure)):
                 raise ExposureError("a change of pressure needs time")
             return self
         low, high = quantity("ambient_pressure").possible
-        if not np.all((target >= low) & (target <= high)):
-            raise quantity("ambient_pressure").range_error(float(target.flat[0]))
+        inside = (target >= low) & (target <= high)
+        if not np.all(inside):
+            raise quantity("ambient_pressure").range_error(float(target[~inside].flat[0]))
         rank = len(self.dims)
 
         def column(value: Any) -> Array:
-            value = np.asarray(value, dtype=float)
-            return value.reshape((*value.shape, *(1,) * (rank - value.ndim), 1))
+            plain: Array = np.asarray(value, dtype=np.float64)
+            return plain.reshape((*plain.shape, *(1,) * (rank - plain.ndim), 1))
 
         added = {
             "segment_duration": column(minutes),
@@ -1147,9 +1172,7 @@ class Exposure:
         new = replace(
             self,
             columns={k: _append(self.columns[k], v) for k, v in added.items()},
-            fractions={
-                g: _append(self.fractions.get(g, empty), column(self.gas.get(g, 0.0))) for g in gases
-            },
+            fractions={g: _append(self.fractions.get(g, empty), column(self.gas.get(g, 0.0))) for g in gases},
             part=(*self.part, self.part_now),
             session=(*self.session, self.session[-1] if self.session else 0),
             pressure=target if rank else float(target),
@@ -1174,7 +1197,9 @@ class Exposure:
             new,
             columns={k: _append(new.columns[k], turn(other.columns[k])) for k in _NUMERIC},
             fractions={
-                g: _append(new.fractions.get(g, here), turn(other.fractions[g]) if g in other.fractions else there)
+                g: _append(
+                    new.fractions.get(g, here), turn(other.fractions[g]) if g in other.fractions else there
+                )
                 for g in gases
             },
             part=(*new.part, *other.part),
@@ -1209,7 +1234,9 @@ class Exposure:
         length = self.columns["segment_duration"][..., index]
         start, end = self.columns["start_pressure"][..., index], self.columns["end_pressure"][..., index]
         middle = start + (end - start) * share
-        shape = np.broadcast_shapes(np.shape(middle), np.shape(length * share), columns["segment_duration"].shape[:-1])
+        shape = np.broadcast_shapes(
+            np.shape(middle), np.shape(length * share), columns["segment_duration"].shape[:-1]
+        )
         for name in ("segment_duration", "start_pressure", "end_pressure"):
             full = np.broadcast_to(columns[name], (*shape, columns[name].shape[-1])).copy()
             columns[name] = full

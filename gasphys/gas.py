@@ -269,11 +269,11 @@ def _fraction(value: Any, name: str) -> float:
         value = convert(number, unit, "1") if unit else number
     if isinstance(value, bool) or not isinstance(value, (int, float, np.floating, np.integer)):
         raise UnitError(f"{name} must be a fraction between 0 and 1, not {type(value).__name__}")
-    value = float(value)
-    if not 0.0 <= value <= 1.0:
-        hint = f"; did you mean '{value:g} %'?" if 1.0 < value <= 100.0 else ""
-        raise RangeError(f"{name} = {value:g} is not a fraction between 0 and 1{hint}")
-    return value
+    fraction = float(value)
+    if not 0.0 <= fraction <= 1.0:
+        hint = f"; did you mean '{fraction:g} %'?" if 1.0 < fraction <= 100.0 else ""
+        raise RangeError(f"{name} = {fraction:g} is not a fraction between 0 and 1{hint}")
+    return fraction
 
 
 def _percent(text: str, whole: str) -> float:

@@ -183,12 +183,7 @@ def _btps_to_stpd(
     volume: Value, ambient_pressure: Value, body_vapor_pressure: Value = BODY_VAPOR_PRESSURE
 ) -> Value:
     """Volume at STPD of gas given at BTPS."""
-    return (
-        volume
-        * (ambient_pressure - body_vapor_pressure)
-        / ATMOSPHERE
-        * (ZERO_CELSIUS / BODY_TEMPERATURE)
-    )
+    return volume * (ambient_pressure - body_vapor_pressure) / ATMOSPHERE * (ZERO_CELSIUS / BODY_TEMPERATURE)
 
 
 @formula(**_state, register=False)  # type: ignore[arg-type]
@@ -196,12 +191,7 @@ def _stpd_to_btps(
     volume: Value, ambient_pressure: Value, body_vapor_pressure: Value = BODY_VAPOR_PRESSURE
 ) -> Value:
     """Volume at BTPS of gas given at STPD."""
-    return (
-        volume
-        * ATMOSPHERE
-        / (ambient_pressure - body_vapor_pressure)
-        * (BODY_TEMPERATURE / ZERO_CELSIUS)
-    )
+    return volume * ATMOSPHERE / (ambient_pressure - body_vapor_pressure) * (BODY_TEMPERATURE / ZERO_CELSIUS)
 
 
 @formula(**_state, register=False)  # type: ignore[arg-type]

@@ -89,9 +89,7 @@ def mean_power(start: Any, end: Any, exponent: Any) -> Any:
     near = np.abs(half) <= _NEAR * np.abs(middle)
     ratio = np.where(near, half / np.where(middle == 0.0, 1.0, middle), 0.0) ** 2
     c1, c2, c3 = _power_series(exponent)
-    series = np.maximum(middle, 0.0) ** exponent * (
-        1.0 + ratio * (c1 + ratio * (c2 + ratio * c3))
-    )
+    series = np.maximum(middle, 0.0) ** exponent * (1.0 + ratio * (c1 + ratio * (c2 + ratio * c3)))
     span = np.where(near, 1.0, end - start)
     closed = (b ** (exponent + 1.0) - a ** (exponent + 1.0)) / ((exponent + 1.0) * span)
     result = np.where(near, series, closed)
@@ -114,12 +112,7 @@ def mean_power_slope(start: Any, end: Any, exponent: Any) -> Any:
     series = (
         0.5
         * m ** (n - 1.0)
-        * (
-            n
-            + 2.0 * c1 * x
-            + x**2 * (c1 * (n - 2.0) + 4.0 * c2 * x)
-            + x**4 * (c2 * (n - 4.0) + 6.0 * c3 * x)
-        )
+        * (n + 2.0 * c1 * x + x**2 * (c1 * (n - 2.0) + 4.0 * c2 * x) + x**4 * (c2 * (n - 4.0) + 6.0 * c3 * x))
     )
     flat = start == end
     span = np.where(near | flat, 1.0, end - start)
@@ -334,9 +327,7 @@ def symbolic_names() -> dict[str, Any]:
             a, b = self.args
             one, other = (a, b) if argindex == 1 else (b, a)
             near = -1 / (2 * one**2)
-            return sp.Piecewise(
-                ((1 / one - MeanLog(a, b)) / (one - other), sp.Ne(a, b)), (near, True)
-            )
+            return sp.Piecewise(((1 / one - MeanLog(a, b)) / (one - other), sp.Ne(a, b)), (near, True))
 
         def _latex(self, printer: Any, exp: str = "") -> str:
             return _raised(printer._print(self.doit()), exp)
@@ -377,7 +368,7 @@ def symbolic_names() -> dict[str, Any]:
             return sp.erfc(-self.args[0] / sp.sqrt(2)) / 2
 
         def fdiff(self, argindex: int = 1) -> Any:
-            return sp.exp(-self.args[0] ** 2 / 2) / sp.sqrt(2 * sp.pi)
+            return sp.exp(-(self.args[0] ** 2) / 2) / sp.sqrt(2 * sp.pi)
 
         def _latex(self, printer: Any, exp: str = "") -> str:
             return _raised(rf"\Phi\left({printer._print(self.args[0])}\right)", exp)
@@ -486,9 +477,7 @@ def find_root(
             xi = (a - b) / (c - b)
             phi = (fa - fb) / (fc - fb)
             quadratic = (phi**2 < xi) & ((1.0 - phi) ** 2 < 1.0 - xi)
-            step = fa / (fb - fa) * fc / (fb - fc) + (c - a) / (b - a) * fa / (fc - fa) * fb / (
-                fc - fb
-            )
+            step = fa / (fb - fa) * fc / (fb - fc) + (c - a) / (b - a) * fa / (fc - fa) * fb / (fc - fb)
             t = np.where(quadratic & np.isfinite(step), step, 0.5)
             t = np.minimum(1.0 - room, np.maximum(room, t))
             t = np.where(done | ~np.isfinite(t), 0.0, t)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass
 from typing import Any
 
@@ -215,9 +216,7 @@ def _shorter(text: str) -> str:
     return ", ".join(parts)
 
 
-def review_text(
-    exposure: Exposure, found: xr.Dataset, limits: tuple[Limit, ...], units: Units
-) -> str:
+def review_text(exposure: Exposure, found: xr.Dataset, limits: tuple[Limit, ...], units: Units) -> str:
     """Return a review in words.
 
     Parameters
@@ -300,7 +299,7 @@ def _group_text(
         if status[limit.id] == "beyond":
             state.append(f"beyond {letters[limit.id]} {minutes_text(float(row['time_beyond'].values))}")
         else:
-            margin, shown = units.show(float(row["margin"].values), name)
+            margin, _shown = units.show(float(row["margin"].values), name)
             state.append(f"within {letters[limit.id]} by {_round(margin)}")
     lines += _wrapped(", ".join(state), "    ")
     crossed = [float(rows[x.id]["first_crossing"].values) for x in ordered if status[x.id] == "beyond"]
@@ -338,7 +337,7 @@ def _ruler(ordered: list[Limit], letters: dict[str, str], worst: float, units: U
     span = max(marks[-1][0] - marks[0][0], 1e-300)
     room = max(_WIDTH - 8 - sum(len(text) for _, text in marks), 4 * len(marks))
     line = marks[0][1]
-    for (before, _), (after, text) in zip(marks, marks[1:], strict=False):
+    for (before, _), (after, text) in itertools.pairwise(marks):
         line += " " + "-" * max(2, round(room * 0.8 * (after - before) / span)) + " " + text
     return line
 
@@ -391,7 +390,9 @@ def _unjudged(
         if status[limit.id] == state:
             reason = str(rows[limit.id]["reason"].values)
             by_reason.setdefault(reason, []).append(
-                f"{limit.title} ({limit.published_value:g} {limit.unit}, {limit.authority})".replace(" 1,", ",")
+                f"{limit.title} ({limit.published_value:g} {limit.unit}, {limit.authority})".replace(
+                    " 1,", ","
+                )
             )
     if not by_reason:
         return []

@@ -122,7 +122,11 @@ def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
             return Trace(before, reached, reason="the exposure lasts longer than the 24 h of this total")
         outside = outside_fit(measure, pieces, np.ones(each.shape[-1], dtype=bool)) >= 1.0 - _ROUNDING
         low = MEASURES[measure].fit[0] / ATMOSPHERE
-        why = f"breathing gas PO2 stays below {low:.2g} atm, where the model was fitted" if np.any(outside) else ""
+        why = (
+            f"breathing gas PO2 stays below {low:.2g} atm, where the model was fitted"
+            if np.any(outside)
+            else ""
+        )
 
         def within(share: Array) -> Array:
             partial = replace(
@@ -280,7 +284,10 @@ def _judge(limit: Limit, trace: Trace | None, pieces: Pieces, role: str) -> dict
     nan = np.full(pieces.duration.shape[:-1], np.nan)
     nothing = dict.fromkeys(_NUMBERS, nan) | {"limit_value": limit.value}
     if trace is None:
-        return nothing | {"status": "not judged", "reason": f"{limit.quantity} does not follow from an exposure"}
+        return nothing | {
+            "status": "not judged",
+            "reason": f"{limit.quantity} does not follow from an exposure",
+        }
     if role not in limit.roles:
         reason = f"made for {_listed(limit.roles)}, not for {_with_article(role)}"
         if trace.status == "not applicable" and trace.reason:
@@ -330,7 +337,9 @@ def _measured(limit: Limit, trace: Trace, pieces: Pieces) -> dict[str, Any]:
     beyond = np.where(above, length, 0.0)
     beyond = np.where(rising, length * (1.0 - share), beyond)
     beyond = np.where(falling, length * share, beyond)
-    begins = np.where(rising, times[..., :-1] + share * length, np.where(above | falling, times[..., :-1], np.inf))
+    begins = np.where(
+        rising, times[..., :-1] + share * length, np.where(above | falling, times[..., :-1], np.inf)
+    )
     first = begins.min(axis=-1)
     return {
         "worst": sign * worst,
@@ -406,8 +415,8 @@ def _dataset(
         np.stack(columns["status"]).astype(str),
         {"long_name": "beyond, within, not applicable or not judged"},
     )
-    for name, (values, meaning) in texts.items():
-        ds[name] = ("limit", np.array(values, dtype=str), {"long_name": meaning})
+    for name, (words, meaning) in texts.items():
+        ds[name] = ("limit", np.array(words, dtype=str), {"long_name": meaning})
     shape = tuple(len(exposure.coords[d]) for d in exposure.dims)
     minutes = np.broadcast_to(np.asarray(exposure.duration), shape)
     ds["duration"] = (exposure.dims, minutes.copy(), attributes("duration"))
@@ -555,6 +564,14 @@ def _solve(change: Callable[[float], Exposure], limit: Limit, most: float) -> fl
     return float(brentq(excess, 0.0, most, xtol=1e-9))
 
 
+def _lower(pressure: Array, bound: float) -> Array:
+    return np.minimum(pressure, bound)
+
+
+def _higher(pressure: Array, bound: float) -> Array:
+    return np.maximum(pressure, bound)
+
+
 def _pressure_lever(exposure: Exposure, limit: Limit, same: NDArray[np.bool_]) -> float | None:
     if limit.quantity == "compression_rate":
         return None
@@ -564,10 +581,10 @@ def _pressure_lever(exposure: Exposure, limit: Limit, same: NDArray[np.bool_]) -
     surface = float(exposure.surface_pressure)
     if limit.comparison == "<=":
         extreme, sign = float(np.where(real, np.maximum(start, end), -np.inf).max()), -1.0
-        most, bring = extreme - surface, np.minimum
+        most, bring = extreme - surface, _lower
     else:
         extreme, sign = float(np.where(real, np.minimum(start, end), np.inf).min()), 1.0
-        most, bring = 10.0 * surface, np.maximum
+        most, bring = 10.0 * surface, _higher
 
     def change(x: float) -> Exposure:
         bound = extreme + sign * x
@@ -581,9 +598,7 @@ def _pressure_lever(exposure: Exposure, limit: Limit, same: NDArray[np.bool_]) -
     return None if found is None else sign * found
 
 
-def _gas_lever(
-    exposure: Exposure, limit: Limit, index: int, same: NDArray[np.bool_]
-) -> str | None:
+def _gas_lever(exposure: Exposure, limit: Limit, index: int, same: NDArray[np.bool_]) -> str | None:
     if not np.isnan(exposure.columns["setpoint"][index]) or limit.quantity == "compression_rate":
         return None
     zero = np.zeros(len(exposure.part))
@@ -670,5 +685,3 @@ def rests_on_memory(found: xr.Dataset) -> list[str]:
         if str(row["provenance"].values).startswith("memory") and status & {"beyond", "within"}:
             lines.append(f"{row['published'].values} ({row['authority'].values}, {row['provenance'].values})")
     return lines
-
-

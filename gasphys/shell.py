@@ -156,7 +156,8 @@ def _array(value: Any, argument: Argument) -> NDArray[np.float64] | float:
         value = np.array([number(v, argument) for v in value.flat]).reshape(value.shape)
     if value.dtype.kind not in "fiu":
         raise TypeError(f"{argument.name} must hold numbers, not {value.dtype}")
-    return value.astype(np.float64, copy=False)
+    numbers_: NDArray[np.float64] = value.astype(np.float64, copy=False)
+    return numbers_
 
 
 def _is_series(value: Any) -> bool:
@@ -164,9 +165,7 @@ def _is_series(value: Any) -> bool:
 
 
 def _is_labelled(value: Any) -> bool:
-    return type(value).__name__ in ("DataArray", "Variable") and type(value).__module__.startswith(
-        "xarray"
-    )
+    return type(value).__name__ in ("DataArray", "Variable") and type(value).__module__.startswith("xarray")
 
 
 def call(spec: Spec, values: Sequence[Any]) -> Any:
@@ -270,9 +269,7 @@ def _all_within(value: NDArray[np.float64], low: float, high: float) -> bool:
     return bool(low <= value.min() and value.max() <= high)
 
 
-def _screen(
-    spec: Spec, arrays: list[Any], report: bool
-) -> tuple[list[Any], NDArray[np.bool_] | None]:
+def _screen(spec: Spec, arrays: list[Any], report: bool) -> tuple[list[Any], NDArray[np.bool_] | None]:
     """Blank impossible elements and report them; return the arrays and where validity ends."""
     outside: NDArray[np.bool_] | None = None
     for k, (argument, value) in enumerate(zip(spec.arguments, arrays, strict=True)):
@@ -297,10 +294,7 @@ def _screen(
                 index = tuple(int(i) for i in first)
                 text = f"{count} of {value.size} values ({argument.name}{list(index)} = {worst:g})"
                 if impossible_kind:
-                    message = (
-                        f"{spec.name}: {text}: {argument.range_error(worst)}; those results "
-                        "are nan"
-                    )
+                    message = f"{spec.name}: {text}: {argument.range_error(worst)}; those results are nan"
                 else:
                     message = f"{spec.name}: {text}: {_outside_text(spec, argument, worst)}"
                 outside_validity(message)
@@ -343,7 +337,9 @@ def _doubtful(
         lost = lost & ~np.isnan(value)
     found: list[tuple[NDArray[np.bool_], Callable[[float], str]]] = []
     if lost.any():
-        why = "no result from these inputs" if target is None else f"not reached by any possible {target.name}"
+        why = (
+            "no result from these inputs" if target is None else f"not reached by any possible {target.name}"
+        )
         found.append((lost, lambda _: f"{spec.name}: {why}; they are nan"))
     if beyond.any() and target is None:
         found.append((beyond, lambda value: _result_text(spec, f"{value:g}")))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import functools
+from collections.abc import Callable
 from typing import Any
 
 from gasphys.constants import (
@@ -28,7 +28,17 @@ __all__ = [
     "standard_atmosphere_pressure",
 ]
 
-_at_depth: Any = functools.partial(formula, result="ambient_pressure", register=False)
+
+def _at_depth(
+    *, source: str, provenance: str, quantities: dict[str, str] | None = None
+) -> Callable[[Callable[..., Any]], EquationFunction]:
+    return formula(
+        result="ambient_pressure",
+        quantities=quantities,
+        source=source,
+        provenance=provenance,
+        register=False,
+    )
 
 
 @_at_depth(quantities={"depth": "depth_msw"}, source="msw_convention", provenance="secondary")

@@ -210,9 +210,7 @@ def unit(name: str) -> Unit:
     factor = 1.0
     dimension = [0, 0, 0, 0, 0]
     parts = re.findall(r"([*/ ]?)\s*([A-Za-z%_°µ][\w%°µ]*|1)(?:\^?(-?\d+))?", text)
-    if not parts or "".join(f"{a}{b}{c}" for a, b, c in parts).replace(" ", "") != re.sub(
-        r"[\s^]", "", text
-    ):
+    if not parts or "".join(f"{a}{b}{c}" for a, b, c in parts).replace(" ", "") != re.sub(r"[\s^]", "", text):
         raise _unknown_unit(name)
     for operator, part, power in parts:
         part_name = _ALIASES.get(part, part)
@@ -225,9 +223,7 @@ def unit(name: str) -> Unit:
             part_name, power = match[1], match[2]
         one = UNITS[part_name]
         if one.offset:
-            raise UnitError(
-                f"unit {name!r} holds the scale {part_name}; write delta_{part_name} or K"
-            )
+            raise UnitError(f"unit {name!r} holds the scale {part_name}; write delta_{part_name} or K")
         exponent = int(power or 1) * (-1 if operator == "/" else 1)
         factor *= one.factor**exponent
         dimension = [d + exponent * e for d, e in zip(dimension, one.dimension, strict=True)]
@@ -283,10 +279,8 @@ def convert(value: Any, source_unit: str, target_unit: str) -> Any:
     if not source.is_like(target):
         raise UnitError(f"cannot convert {source_unit!r} to {target_unit!r}: different quantities")
     if (source.name, target.name) in _MIXED_TEMPERATURE:
-        raise UnitError(
-            f"{source_unit!r} to {target_unit!r} mixes a temperature scale and a difference"
-        )
-    if isinstance(value, bool) or isinstance(value, str):
+        raise UnitError(f"{source_unit!r} to {target_unit!r} mixes a temperature scale and a difference")
+    if isinstance(value, (bool, str)):
         raise UnitError(f"value must be a number or an array, not {type(value).__name__}")
     if isinstance(value, (list, tuple)):
         import numpy as np

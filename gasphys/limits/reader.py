@@ -20,7 +20,7 @@ __all__ = ["Limit", "load"]
 
 ROLES = ("diver", "patient", "attendant")
 
-_FIELDS = {
+_FIELDS: dict[str, type | tuple[type, ...]] = {
     "id": str,
     "title": str,
     "quantity": str,
@@ -178,7 +178,9 @@ def _parse(text: str, path: str, site: bool) -> list[Limit]:
             path=path,
             remedy="begin every limit with a line [[limit]]",
         )
-    return [_limit(row, path, starts[k] if k < len(starts) else None, text, site) for k, row in enumerate(rows)]
+    return [
+        _limit(row, path, starts[k] if k < len(starts) else None, text, site) for k, row in enumerate(rows)
+    ]
 
 
 def _limit(row: dict[str, Any], path: str, start: int | None, text: str, site: bool) -> Limit:
@@ -233,5 +235,3 @@ def _limit(row: dict[str, Any], path: str, start: int | None, text: str, site: b
         raise refuse("value", str(one.range_error(value)), "correct the value or its unit")
     kept = {k: row[k] for k in _FIELDS if k not in ("value", "roles")}
     return Limit(**kept, value=value, published_value=published, roles=tuple(row["roles"]), site=site)
-
-

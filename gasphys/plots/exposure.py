@@ -16,9 +16,7 @@ from gasphys.units import convert
 __all__ = ["exposure_figure"]
 
 
-def exposure_figure(
-    exposure: Exposure, found: xr.Dataset | None = None, units: Units | None = None
-) -> Any:
+def exposure_figure(exposure: Exposure, found: xr.Dataset | None = None, units: Units | None = None) -> Any:
     """Draw pressure against time, filled by the partial pressures of the gases breathed.
 
     Parameters
@@ -57,9 +55,7 @@ def exposure_figure(
     lanes = _lanes(found)
     figure = new_figure(8.2, 4.6 + 0.24 * len(lanes))
     if lanes:
-        axes, below = figure.subplots(
-            2, 1, sharex=True, height_ratios=[4.0, 0.36 + 0.24 * len(lanes)]
-        )
+        axes, below = figure.subplots(2, 1, sharex=True, height_ratios=[4.0, 0.36 + 0.24 * len(lanes)])
     else:
         axes, below = figure.subplots(), None
     _draw_gases(axes, exposure, units)
@@ -100,7 +96,9 @@ def _draw_gases(axes: Any, exposure: Exposure, units: Units) -> None:
     top = sum(layers.values())
     for gas, values in layers.items():
         hatch, fill = HATCH[gas]
-        axes.fill_between(times, floor, floor + values, facecolor=fill, hatch=hatch, edgecolor=ACCENT, linewidth=0.4)
+        axes.fill_between(
+            times, floor, floor + values, facecolor=fill, hatch=hatch, edgecolor=ACCENT, linewidth=0.4
+        )
         _label(axes, WORDS[gas], times, floor, values, float(np.max(top)))
         floor = floor + values
     axes.plot(times, top, color=INK, linewidth=1.4)

@@ -80,7 +80,7 @@ def newton(start: Any, wanted: Any, level: Callable[[Any], Any], slope: Callable
     Examples
     --------
     >>> newton(1.0, 2.0, lambda x: x * x, lambda x: 2.0 * x)
-    1.414213562373095
+    1.4142135623730951
     """
     x = start
     for _ in range(40):

@@ -233,7 +233,13 @@ def _attendant(rows: list[Segment], table: dict[str, Any], extensions: int, name
         if on_oxygen:
             breathed.insert(
                 0,
-                replace(row, minutes=on_oxygen, gas="oxygen", part="oxygen", provenance=table["attendant_provenance"]),
+                replace(
+                    row,
+                    minutes=on_oxygen,
+                    gas="oxygen",
+                    part="oxygen",
+                    provenance=table["attendant_provenance"],
+                ),
             )
         if row.minutes - on_oxygen > 0.0:
             part = row.part if row.part == "descent" else "travel on air" if row.is_travel else "air"

@@ -18,7 +18,14 @@ import pytest
 import xarray as xr
 
 import gasphys as gp
-from gasphys.errors import NotReachableError, ProvenanceError, RangeError, UnitError, ValidityError, ValidityWarning
+from gasphys.errors import (
+    NotReachableError,
+    ProvenanceError,
+    RangeError,
+    UnitError,
+    ValidityError,
+    ValidityWarning,
+)
 from gasphys.policy import PROVENANCE
 from gasphys.quantities import CAUTION, attributes
 

@@ -231,7 +231,9 @@ def test_derivative_as_an_expression(name: str) -> None:
     f = FORMULAS_ONLY[name]
     for a in f.arguments:
         derivative = f.derivative(a.name)
-        assert derivative.latex().startswith(rf"\frac{{\partial {f.result.symbol}}}{{\partial {a.quantity.symbol}}} = ")
+        assert derivative.latex().startswith(
+            rf"\frac{{\partial {f.result.symbol}}}{{\partial {a.quantity.symbol}}} = "
+        )
         assert sp.sympify(derivative) == derivative.expression
 
 
@@ -258,7 +260,9 @@ def test_every_invertible_argument_is_inverted(name: str, argument: str) -> None
             with np.errstate(all="ignore"):
                 again = f.raw(*[np.float64({**row, argument: root}[a.name]) for a in f.arguments])
             np.testing.assert_allclose(again, value, rtol=1e-9, atol=1e-12)
-        named = f.solve_for(argument, **known, **({f.result.name: value} if f.result.name not in row else {"result": value}))
+        named = f.solve_for(
+            argument, **known, **({f.result.name: value} if f.result.name not in row else {"result": value})
+        )
         np.testing.assert_array_equal(named, roots)
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import itertools
 from pathlib import Path
 
 import pytest
@@ -56,7 +57,7 @@ def test_tables_are_whole(name: str) -> None:
     pieces = table["segments"]
     assert pieces[0].start in ("0", "surface")
     assert pieces[-1].end in ("0", "surface")
-    for before, after in zip(pieces, pieces[1:], strict=False):
+    for before, after in itertools.pairwise(pieces):
         assert before.end == after.start
         assert after.minutes > 0
     for key in ("title", "edition", "clock", "source"):
@@ -78,7 +79,13 @@ def test_attendants_and_extensions() -> None:
         assert tables()[name]["attendant_stop_minutes"] == minutes
         assert tables()[name]["attendant_depth"] == depth
     most = {name: (t["most_deep"], t["most_shallow"]) for name, t in tables().items()}
-    assert most == {"usn_5": (0, 2), "usn_6": (2, 2), "usn_6a": (2, 2), "usn_9": (0, 0), "clinical_2_4_atm": (0, 0)}
+    assert most == {
+        "usn_5": (0, 2),
+        "usn_6": (2, 2),
+        "usn_6a": (2, 2),
+        "usn_9": (0, 0),
+        "clinical_2_4_atm": (0, 0),
+    }
 
 
 def test_every_limit() -> None:
@@ -93,7 +100,11 @@ def test_every_limit() -> None:
         assert limit.comparison == row["comparison"]
         assert limit.unit == row["unit"]
         canonical = quantity(limit.quantity)
-        expected = canonical.from_unit(float(row["value"]), row["unit"]) if row["unit"] != canonical.unit else float(row["value"])
+        expected = (
+            canonical.from_unit(float(row["value"]), row["unit"])
+            if row["unit"] != canonical.unit
+            else float(row["value"])
+        )
         assert limit.value == pytest.approx(expected, rel=1e-15)
 
 
@@ -102,7 +113,10 @@ def test_limits_are_whole() -> None:
     for limit in load():
         assert limit.id not in seen
         seen.add(limit.id)
-        assert limit.roles and limit.authority and limit.edition and limit.conditions
+        assert limit.roles
+        assert limit.authority
+        assert limit.edition
+        assert limit.conditions
 
 
 #: What is assumed of a person, as the reference table gives it: PaCO2 40 mmHg, R 0.8, Hb 15, a/A 0.80-0.85,

@@ -14,7 +14,9 @@ def exposures(draw: st.DrawFn, loops: bool = True) -> Exposure:
     """Draw an exposure of two to seven pieces, with switches and, if asked, loops."""
     exposure = Exposure.start(draw(st.sampled_from(GASES)))
     for _ in range(draw(st.integers(2, 7))):
-        kind = draw(st.sampled_from(("stay", "travel", "switch", "loop") if loops else ("stay", "travel", "switch")))
+        kind = draw(
+            st.sampled_from(("stay", "travel", "switch", "loop") if loops else ("stay", "travel", "switch"))
+        )
         if kind == "switch":
             exposure = exposure.switch(draw(st.sampled_from(GASES)))
         elif kind == "loop":

@@ -14,7 +14,14 @@ from gasphys.__main__ import main
 from gasphys.quantities import CAUTION
 
 DATA = Path(__file__).parents[2] / "notebooks" / "data"
-DIVE = "time_min,depth_msw,gas\n0,0,trimix 17/48\n2.8,56,trimix 17/48\n22,56,trimix 17/48\n26,20,nitrox 48\n30,20,nitrox 48\n32,0,nitrox 48\n"
+DIVE = """time_min,depth_msw,gas
+0,0,trimix 17/48
+2.8,56,trimix 17/48
+22,56,trimix 17/48
+26,20,nitrox 48
+30,20,nitrox 48
+32,0,nitrox 48
+"""
 
 
 @pytest.fixture
@@ -65,7 +72,11 @@ def test_review_of_a_log(capsys, log) -> None:
 
 @pytest.mark.parametrize(
     ("units", "words"),
-    [("atm,fsw", "6.527 atm absolute (183.7 fsw"), ("bar", "6.613 bar absolute (56 msw"), ("mmHg", "4960 mmHg absolute")],
+    [
+        ("atm,fsw", "6.527 atm absolute (183.7 fsw"),
+        ("bar", "6.613 bar absolute (56 msw"),
+        ("mmHg", "4960 mmHg absolute"),
+    ],
 )
 def test_units(capsys, log, units: str, words: str) -> None:
     _, out, _ = run(capsys, "review", log, "--units", units)

@@ -96,7 +96,18 @@ def test_text_files_and_refusals(tmp_path, capsys) -> None:
         found.to_netcdf(tmp_path / f"{engine}.nc", engine=engine)
         with xr.open_dataset(tmp_path / f"{engine}.nc", engine=engine) as back:
             assert back.load().identical(found)
-    assert main(["compare", str(DATA / "p01_chamber_log.csv"), "clinical_2_4_atm", "--save", str(tmp_path / "c.nc")]) == 0
+    assert (
+        main(
+            [
+                "compare",
+                str(DATA / "p01_chamber_log.csv"),
+                "clinical_2_4_atm",
+                "--save",
+                str(tmp_path / "c.nc"),
+            ]
+        )
+        == 0
+    )
     assert "DEVIATIONS" in capsys.readouterr().out
     assert main(["compare", str(DATA / "p01_chamber_log.csv"), "clinical"]) == 2
     with pytest.raises(ExposureError, match="no piece"):

@@ -25,7 +25,9 @@ TABLES = [
 
 
 @pytest.mark.parametrize(("name", "minutes", "duration", "periods", "table", "whole"), TABLES)
-def test_treatment_tables(name: str, minutes: float, duration: float, periods: float, table: float, whole: float) -> None:
+def test_treatment_tables(
+    name: str, minutes: float, duration: float, periods: float, table: float, whole: float
+) -> None:
     exposure = treatment(name)
     assert exposure.attrs["table_minutes"] == minutes
     assert exposure.duration == pytest.approx(duration, rel=1e-12)
@@ -35,14 +37,23 @@ def test_treatment_tables(name: str, minutes: float, duration: float, periods: f
 
 @pytest.mark.parametrize(
     ("deep", "shallow", "minutes", "periods", "all_segments"),
-    [(2, 0, 335.0, 784.4, 790.5), (2, 2, 485.0, None, None), (0, 2, 435.0, None, None), (1, 1, 385.0, None, None)],
+    [
+        (2, 0, 335.0, 784.4, 790.5),
+        (2, 2, 485.0, None, None),
+        (0, 2, 435.0, None, None),
+        (1, 1, 385.0, None, None),
+    ],
 )
-def test_extensions_of_table_6(deep: int, shallow: int, minutes: float, periods: float, all_segments: float) -> None:
+def test_extensions_of_table_6(
+    deep: int, shallow: int, minutes: float, periods: float, all_segments: float
+) -> None:
     exposure = treatment("usn_6", deep, shallow)
     assert exposure.attrs["table_minutes"] == minutes
     if periods is not None:
         assert float(oxygen(exposure, ["uptd"], count="oxygen").dose[0]) == pytest.approx(periods, abs=0.05)
-        assert float(oxygen(exposure, ["uptd"], count="table").dose[0]) == pytest.approx(all_segments, abs=0.05)
+        assert float(oxygen(exposure, ["uptd"], count="table").dose[0]) == pytest.approx(
+            all_segments, abs=0.05
+        )
 
 
 def test_table_5_extensions_stand_before_the_last_ascent() -> None:
@@ -54,7 +65,15 @@ def test_table_5_extensions_stand_before_the_last_ascent() -> None:
 @pytest.mark.parametrize(
     ("name", "extensions", "minutes_at_stop"),
     # Oxygen minutes at the stop, plus the whole ascent: US Navy Diving Manual, Rev 4 Change A, p 21-26.
-    [("usn_5", 0, 0), ("usn_6", 0, 30), ("usn_6", 1, 30), ("usn_6", 2, 60), ("usn_6a", 0, 60), ("usn_6a", 2, 90), ("usn_9", 0, 15)],
+    [
+        ("usn_5", 0, 0),
+        ("usn_6", 0, 30),
+        ("usn_6", 1, 30),
+        ("usn_6", 2, 60),
+        ("usn_6a", 0, 60),
+        ("usn_6a", 2, 90),
+        ("usn_9", 0, 15),
+    ],
 )
 def test_attendant_oxygen(name: str, extensions: int, minutes_at_stop: float) -> None:
     exposure = treatment(name, extensions_deep=extensions, attendant=True)
@@ -110,7 +129,15 @@ def test_uptd_against_quadrature(exposure: Exposure) -> None:
             return max((a + (b - a) * s) / 101.325 - 0.5, 0.0)
 
         knee = [] if a == b else [s for s in [(50.6625 - a) / (b - a)] if 0 < s < 1]
-        whole = quad(lambda s: (rate(s) / 0.5) ** (5 / 6), 0, 1, points=knee or None, epsabs=1e-13, epsrel=1e-12, limit=400)
+        whole = quad(
+            lambda s: (rate(s) / 0.5) ** (5 / 6),
+            0,
+            1,
+            points=knee or None,
+            epsabs=1e-13,
+            epsrel=1e-12,
+            limit=400,
+        )
         expected += t * whole[0]
     assert float(oxygen(exposure, ["uptd"]).dose[0]) == pytest.approx(expected, rel=1e-8, abs=1e-9)
 

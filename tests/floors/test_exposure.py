@@ -11,7 +11,14 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from gasphys import Exposure, Gas
-from gasphys.errors import ExposureError, GasphysError, RangeError, UnitError, UnknownNameError, ValidityWarning
+from gasphys.errors import (
+    ExposureError,
+    GasphysError,
+    RangeError,
+    UnitError,
+    UnknownNameError,
+    ValidityWarning,
+)
 from tests.floors.exposures import exposures
 
 
@@ -35,7 +42,9 @@ def test_pressures_and_times_by_hand() -> None:
     )
     # A boundary belongs to the piece that begins there: nitrox 48 at 20 msw is 144.6 kPa.
     np.testing.assert_allclose(ds.breathing_gas_po2[3], 0.48 * 301.325, rtol=1e-12)
-    np.testing.assert_allclose(ds.breathing_gas_inert_pressure.sel(inert_gas="He")[2], 0.48 * 661.325, rtol=1e-12)
+    np.testing.assert_allclose(
+        ds.breathing_gas_inert_pressure.sel(inert_gas="He")[2], 0.48 * 661.325, rtol=1e-12
+    )
     assert ds.gas_fraction.sel(gas="N2").values[0] == pytest.approx(0.35, abs=1e-12)
 
 
@@ -49,13 +58,17 @@ def test_depth_units(unit: str, depth: float, expected: float) -> None:
 
 
 def test_depth_of_a_named_water_and_altitude() -> None:
-    lake = Exposure.start("air", surface_pressure=85.0, depth_unit="m", water="fresh").travel(depth=38, rate=10)
+    lake = Exposure.start("air", surface_pressure=85.0, depth_unit="m", water="fresh").travel(
+        depth=38, rate=10
+    )
     assert lake.pressure == pytest.approx(85.0 + 38 * 9.80665, rel=1e-12)
     assert lake.duration == pytest.approx(3.8, rel=1e-9)
 
 
 def test_rate_in_the_depth_unit_and_in_kpa() -> None:
-    assert Exposure.start("air", depth_unit="fsw").travel(depth=60, rate=20).duration == pytest.approx(3.0, rel=1e-12)
+    assert Exposure.start("air", depth_unit="fsw").travel(depth=60, rate=20).duration == pytest.approx(
+        3.0, rel=1e-12
+    )
     assert Exposure.start("air").travel(pressure=201.325, rate=50).duration == pytest.approx(2.0, rel=1e-12)
     assert Exposure.start("air").travel(pressure="2.4 atm", minutes=10).pressure == pytest.approx(243.18)
 
@@ -199,7 +212,9 @@ def test_each_scenario_is_its_single_run() -> None:
             one = Exposure.start("air").travel(depth=depth, minutes=2).stay(stay).travel(depth=0, rate=10)
             single = one.to_dataset()
             np.testing.assert_allclose(ds.time.isel(depth=i, bottom=j), single.time, rtol=1e-12)
-            np.testing.assert_allclose(ds.breathing_gas_po2.isel(depth=i, bottom=j), single.breathing_gas_po2, rtol=1e-12)
+            np.testing.assert_allclose(
+                ds.breathing_gas_po2.isel(depth=i, bottom=j), single.breathing_gas_po2, rtol=1e-12
+            )
 
 
 def test_scenarios_of_gas_and_setpoint() -> None:
@@ -211,13 +226,17 @@ def test_scenarios_of_gas_and_setpoint() -> None:
     ds = Exposure.start(mix).travel(depth=20, minutes=2).to_dataset()
     np.testing.assert_allclose(ds.breathing_gas_po2[:, -1], [0.21 * 301.325, 0.18 * 301.325], rtol=1e-12)
     setpoint = xr.DataArray([70.0, 120.0], dims="setpoint_used", attrs={"units": "kPa"})
-    loop = Exposure.start("heliox 16/84").loop(setpoint, "heliox 16/84").travel(depth=20, minutes=2).to_dataset()
+    loop = (
+        Exposure.start("heliox 16/84").loop(setpoint, "heliox 16/84").travel(depth=20, minutes=2).to_dataset()
+    )
     np.testing.assert_allclose(loop.breathing_gas_po2.max("point"), [70.0, 120.0], rtol=1e-12)
 
 
 def test_several_persons_in_one_run() -> None:
     mix = xr.DataArray(
-        [[1.0, 0.0], [0.21, 0.79]], dims=("person", "gas"), coords={"gas": ["O2", "N2"], "person": ["P-01", "A-1"]}
+        [[1.0, 0.0], [0.21, 0.79]],
+        dims=("person", "gas"),
+        coords={"gas": ["O2", "N2"], "person": ["P-01", "A-1"]},
     )
     session = Exposure.start("air").travel(pressure="2.4 atm", minutes=10).switch(mix).stay(30)
     ds = session.to_dataset()
@@ -251,7 +270,18 @@ def test_gas_names_read_back(oxygen: float, share: float) -> None:
 
 @pytest.mark.parametrize(
     "text",
-    ["nitrox ３２", "mix O2=0.2_1", "mix O2=0.2 O2=0.3", "mix N2=0.7", "nitrox 132", "heliox 20/70", "trimix 60/50", "", "nitrox", "mix O2"],
+    [
+        "nitrox ３２",
+        "mix O2=0.2_1",
+        "mix O2=0.2 O2=0.3",
+        "mix N2=0.7",
+        "nitrox 132",
+        "heliox 20/70",
+        "trimix 60/50",
+        "",
+        "nitrox",
+        "mix O2",
+    ],
 )
 def test_gas_names_that_are_refused(text: str) -> None:
     with pytest.raises(GasphysError):
@@ -259,7 +289,7 @@ def test_gas_names_that_are_refused(text: str) -> None:
 
 
 def test_dry_air_has_its_argon() -> None:
-    """CIPM-2007: O2 0.20939, Ar 0.009332; M 28.96546 g/mol at 400 ppm CO2, trace gases counted as nitrogen here."""
+    """CIPM-2007: O2 0.20939, Ar 0.009332; M 28.96546 g/mol at 400 ppm CO2; traces counted as nitrogen."""
     air = Gas.dry_air("cipm_2007")
     assert air.fraction("Ar") == 0.009332
     assert air.molar_mass == pytest.approx(28.96546, rel=2e-5)

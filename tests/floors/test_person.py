@@ -142,4 +142,5 @@ def test_explain_refuses_what_is_open() -> None:
     with pytest.raises(GasphysError, match="inert_gas"):
         explain(ds, "breathing_gas_inert_pressure", time=0.0)
     text = str(explain(ds, "arterial_dissolved_o2", time=3.0))
-    assert "lungs.alveolar_po2" in text and "provenance" in text
+    assert "lungs.alveolar_po2" in text
+    assert "provenance" in text

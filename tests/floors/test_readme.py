@@ -31,7 +31,8 @@ def test_exactly_two_commands() -> None:
     assert "-m gasphys review notebooks/data/dive_in_the_sound.csv" in commands[0]
     assert "-m pytest" in commands[1]
     for command in commands:
-        assert "venv" in command and "pip install" in command
+        assert "venv" in command
+        assert "pip install" in command
 
 
 def test_python_of_the_tour() -> None:

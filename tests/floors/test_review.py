@@ -74,7 +74,9 @@ def test_dose_crossing_is_a_root(exposure: Exposure, share: float) -> None:
     reached = TRACES["uptd"](cut, cut.pieces()).end
     index = int(np.argmin(np.abs(times[1:] - float(found.first_crossing))))
     assert reached[index] == pytest.approx(value, rel=1e-9)
-    assert float(found.time_beyond) == pytest.approx(exposure.duration - float(found.first_crossing), rel=1e-9, abs=1e-9)
+    assert float(found.time_beyond) == pytest.approx(
+        exposure.duration - float(found.first_crossing), rel=1e-9, abs=1e-9
+    )
 
 
 def test_a_value_on_the_limit_is_within() -> None:
@@ -109,14 +111,17 @@ def test_every_default_limit_has_a_status_for_every_role() -> None:
             judged = str(row.status.values) in ("beyond", "within")
             assert judged == (str(row.reason.values) == "")
             if judged:
-                assert np.isfinite(row.worst) and np.isfinite(row.margin)
+                assert np.isfinite(row.worst)
+                assert np.isfinite(row.margin)
 
 
 def test_scenarios_equal_single_reviews() -> None:
     depth = xr.DataArray([5.0, 20.0, 40.0], dims="depth", attrs={"units": "msw"})
     many = review(Exposure.start("nitrox 48").travel(depth=depth, rate=10).stay(30).travel(depth=0, rate=9))
     for k, one in enumerate((5.0, 20.0, 40.0)):
-        single = review(Exposure.start("nitrox 48").travel(depth=one, rate=10).stay(30).travel(depth=0, rate=9))
+        single = review(
+            Exposure.start("nitrox 48").travel(depth=one, rate=10).stay(30).travel(depth=0, rate=9)
+        )
         for name in ("worst", "margin", "time_of_worst", "first_crossing", "time_beyond"):
             got, expected = many[name].isel(depth=k).values, single[name].values
             # NOAA is refused for all scenarios where one leaves its table.
@@ -177,8 +182,11 @@ def test_levers_of_density_use_helium() -> None:
     exposure = Exposure.start("air").travel(depth=45, minutes=3).stay(5)
     bound = next(x for x in load() if x.id == "density_recommended")
     (lever,) = levers(exposure, bound)
-    assert lever.gas is not None and lever.gas.startswith("trimix 21/")
-    assert review(Exposure.start(lever.gas).travel(depth=45, minutes=3), limits=[bound]).status.values == ["within"]
+    assert lever.gas is not None
+    assert lever.gas.startswith("trimix 21/")
+    assert review(Exposure.start(lever.gas).travel(depth=45, minutes=3), limits=[bound]).status.values == [
+        "within"
+    ]
 
 
 def test_refusals() -> None:

@@ -22,7 +22,9 @@ def test_combined_law_is_boyle_then_charles(v: float, p1: float, p2: float, t1: 
     stepwise = laws.charles_volume(laws.boyle_volume(v, p1, p2), t1, t2)
     assert laws.combined_gas_volume(v, p1, p2, t1, t2) == pytest.approx(stepwise, rel=1e-13)
     # At the volume it began with, the pressure is Gay-Lussac's.
-    assert laws.combined_gas_volume(v, p1, laws.gay_lussac_pressure(p1, t1, t2), t1, t2) == pytest.approx(v, rel=1e-13)
+    assert laws.combined_gas_volume(v, p1, laws.gay_lussac_pressure(p1, t1, t2), t1, t2) == pytest.approx(
+        v, rel=1e-13
+    )
 
 
 @covers("laws.graham_rate_ratio")
@@ -87,7 +89,9 @@ def test_ratio_scales_and_one_is_identity(alveolar: float, ratio: float) -> None
 @given(st.floats(0.1, 1000.0), st.floats(-90.0, 90.0))
 def test_sea_water_by_two_standards(depth: float, latitude: float) -> None:
     p = surroundings.pressure_at_depth(depth, water="teos10", latitude=latitude)
-    assert surroundings.depth_at_pressure(p, water="teos10", latitude=latitude) == pytest.approx(depth, rel=1e-9)
+    assert surroundings.depth_at_pressure(p, water="teos10", latitude=latitude) == pytest.approx(
+        depth, rel=1e-9
+    )
     other = surroundings.depth_at_pressure(p, water="unesco_1983", latitude=latitude)
     assert other == pytest.approx(depth, rel=2e-4)
 

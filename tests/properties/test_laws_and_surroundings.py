@@ -111,7 +111,9 @@ def test_on_pure_oxygen_the_exchange_ratio_does_not_matter(
 
 @covers("lungs.alveolar_po2")
 @given(st.floats(90.0, 3000.0), st.floats(0.21, 1.0), st.floats(2.0, 9.0))
-def test_at_a_ratio_of_one_oxygen_and_carbon_dioxide_change_places(p: float, fio2: float, pco2: float) -> None:
+def test_at_a_ratio_of_one_oxygen_and_carbon_dioxide_change_places(
+    p: float, fio2: float, pco2: float
+) -> None:
     ours = lungs.alveolar_po2(p, fio2, pco2, respiratory_exchange_ratio=1.0)
     assert ours == pytest.approx(lungs.inspired_po2(p, fio2) - pco2, rel=1e-12)
 

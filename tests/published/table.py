@@ -90,7 +90,9 @@ def arguments(part: str) -> dict[str, Any]:
         if not equal or not value or name in found:
             raise ValueError(f"{piece!r} is not 'argument=value', each argument once")
         try:
-            found[name] = {"True": True, "False": False}[value] if value in ("True", "False") else float(value)
+            found[name] = (
+                {"True": True, "False": False}[value] if value in ("True", "False") else float(value)
+            )
         except ValueError:
             found[name] = value
     return found

@@ -5,8 +5,6 @@ from __future__ import annotations
 import pytest
 
 import gasphys as gp
-from gasphys.constants import HUEFNER
-from gasphys.sources import sources
 
 from . import table
 
