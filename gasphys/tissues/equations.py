@@ -286,12 +286,8 @@ def linear_washout_time(
     fall = x * (start_threshold - start_inert_pressure) + change
     end_fall = x * (end_threshold - end_inert_pressure) + change
     above = initial_tissue_pressure - start_threshold
-    return (
-        segment_duration
-        * 2.0
-        * above
-        / (fall + sqrt(maximum(fall * fall + 2.0 * above * (end_fall - fall), 0.0)))
-    )
+    root = sqrt(maximum(fall * fall + 2.0 * above * (end_fall - fall), 0.0))
+    return segment_duration * 2.0 * above / (fall + root)
 
 
 @formula(

@@ -608,14 +608,14 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
         """``(..., stretch)`` to ``(place in block, ..., block)``; what is added has no length."""
         if pad:
             values = np.concatenate([values, np.zeros((*values.shape[:-1], pad))], axis=-1)
-        return np.moveaxis(values.reshape(*values.shape[:-1], count, block), -1, 0)
+        return np.ascontiguousarray(np.moveaxis(values.reshape(*values.shape[:-1], count, block), -1, 0))
 
     t = blocks(row.duration)[..., None, None, :]
     first = blocks(np.swapaxes(row.start_inert, -1, -2))[..., None, :, :]
     change = blocks(np.swapaxes(row.end_inert - row.start_inert, -1, -2))[..., None, :, :]
     rate = (-np.log(2.0) / model.half_time)[..., None]
     shape = (*lead, *model.half_time.shape, count)
-    total, gone = np.empty((block, *shape)), np.empty((block, *shape))
+    total = np.empty((block, *shape))
     with np.errstate(divide="ignore", invalid="ignore"):
         for k in range(block):
             x = rate * t[k]
@@ -625,14 +625,11 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
                 np.subtract(total[k - 1], first[k], out=total[k])
                 total[k] *= share
                 total[k] += total[k - 1]
-                np.multiply(share, gone[k - 1], out=gone[k])
-                gone[k] += share
-                gone[k] += gone[k - 1]
             else:
                 np.multiply(-first[k], share, out=total[k])
-                gone[k] = share
             total[k] += followed
-    lost, added = (np.ascontiguousarray(np.moveaxis(v[-1], -1, 0)) for v in (gone, total))
+    elapsed = np.cumsum(t, axis=0)
+    lost, added = (np.moveaxis(v, -1, 0) for v in (np.expm1(rate * elapsed[-1]), total[-1]))
     carry = np.empty((count, *shape[:-1]))
     carry[0] = state
     for j in range(1, count):
@@ -640,10 +637,10 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
         carry[j] += added[j - 1]
         carry[j] += carry[j - 1]
     begin = np.ascontiguousarray(np.moveaxis(carry, 0, -1))
-    gone *= begin
-    total += gone
-    total += begin
-    out = np.empty((*shape[:-1], n + 1))
+    for k in range(block):
+        total[k] += begin
+        total[k] += begin * np.expm1(rate * elapsed[k])
+    out = np.empty((*shape[:-1], count * block + 1))
     out[..., 0] = state
-    out[..., 1:] = np.moveaxis(total, 0, -1).reshape(*shape[:-1], count * block)[..., :n]
-    return out
+    out[..., 1:].reshape(*shape[:-1], count, block)[...] = np.moveaxis(total, 0, -1)
+    return out[..., : n + 1]

@@ -112,11 +112,22 @@ def dive_log(loop: bool) -> str:
     return NOTICE + head + "\n".join(rows) + "\n"
 
 
+def course() -> str:
+    """P-01's course: 40 sessions on weekdays from 3 March to 25 April 2042, 08:00."""
+    day, rows = datetime.date(2042, 3, 3), []
+    while day <= datetime.date(2042, 4, 25):
+        if day.weekday() < 5:
+            rows.append(f"{day.isoformat()},08:00,clinical_2_4_atm,P-01")
+        day += datetime.timedelta(days=1)
+    return NOTICE + "date,time,schedule,person\n" + "\n".join(rows) + "\n"
+
+
 #: Name of every file to the text it holds.
 FILES = {
     "p01_chamber_log.csv": chamber_log,
     "dive_in_the_sound.csv": lambda: dive_log(loop=False),
     "dive_in_the_sound_loop.csv": lambda: dive_log(loop=True),
+    "p01_course.csv": course,
     "p01.toml": lambda: NOTICE + PERSON,
 }
 

@@ -131,6 +131,17 @@ def test_working_shows_inputs_result_and_sources(name: str) -> None:
         assert "put back" in text
 
 
+def _has_no_slope(f: Any, argument: str) -> bool:
+    """Whether a table refuses one derivative, saying which."""
+    row = samples(next(n for n, leaf in LEAVES.items() if leaf is f))[0]
+    with contextlib.suppress(NotTraceable):
+        f.derivative(argument)(**row)
+        return False
+    with pytest.raises(NotTraceable, match=argument):
+        f.derivative(argument)(**row)
+    return True
+
+
 def _rests_on_a_table(f: Any) -> bool:
     return "table" in (f.kind, getattr(f, "forward", f).kind)
 
@@ -185,13 +196,9 @@ def _slope(f: Any, name: str, row: dict[str, float], step: float) -> float:
 def test_derivative_against_differences_and_beside_every_kink(name: str, argument: str) -> None:
     f = LEAVES[name]
     low, high = _argument(f, argument).possible
-    try:
-        derivative = f.derivative(argument)
-        derivative(**samples(name)[0])
-    except NotTraceable as error:
-        assert _rests_on_a_table(f)
-        assert argument in str(error), "a table without this slope must say so"
+    if _rests_on_a_table(f) and _has_no_slope(f, argument):
         return
+    derivative = f.derivative(argument)
     for row in samples(name):
         scale = _scale(f, argument, row[argument])
         kinks = _kinks(f, argument, row)

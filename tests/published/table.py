@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import csv
 import importlib
+import os
 from collections.abc import Iterator
 from dataclasses import dataclass, fields
 from decimal import Decimal
@@ -58,8 +59,10 @@ COLUMNS = tuple(f.name for f in fields(Row) if f.name != "file")
 
 
 def rows() -> list[Row]:
-    """Return every row of every file."""
-    return [row for path in sorted(FOLDER.glob("*.csv")) for row in _read(path)]
+    """Return every row of every file; with GASPHYS_ROWS only equations that begin with it."""
+    only = tuple(os.environ.get("GASPHYS_ROWS", "").split())
+    found = [row for path in sorted(FOLDER.glob("*.csv")) for row in _read(path)]
+    return [row for row in found if row.equation.startswith(only)] if only else found
 
 
 def _read(path: Path) -> Iterator[Row]:

@@ -1,0 +1,103 @@
+"""Speed of the tissue kernels as ratios within one run; never part of pass or fail.
+
+Run ``python tests/benchmarks/bench_tissues.py``; numba is needed for the compiled loop only. Other work on the
+machine disturbs small vector operations more than a compiled loop: take the smallest ratio of several runs.
+"""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+import xarray as xr
+
+import gasphys as gp
+from gasphys import Exposure, tissues
+from gasphys.exposure import Pieces
+from gasphys.tissues.kinetics import along, equilibrium, stretches
+
+
+def best(*functions: Callable[[], Any], repeats: int = 200) -> list[float]:
+    """Return the shortest time of each function [ms], measured in turn."""
+    found = [math.inf] * len(functions)
+    for _ in range(repeats):
+        for k, f in enumerate(functions):
+            begin = time.perf_counter()
+            f()
+            found[k] = min(found[k], time.perf_counter() - begin)
+    return [1e3 * x for x in found]
+
+
+def log_of(n: int, regular: bool) -> Pieces:
+    """Return a log of n stretches on trimix, ten seconds each or irregular."""
+    rng = np.random.default_rng(1)
+    duration = np.full(n, 1.0 / 6.0) if regular else rng.uniform(0.05, 1.0, n)
+    pressure = 101.325 + np.abs(np.cumsum(rng.normal(0.0, 5.0, n + 1)))
+    return Pieces(
+        duration=duration,
+        start_pressure=pressure[:-1],
+        end_pressure=pressure[1:],
+        start_po2=0.17 * pressure[:-1],
+        end_po2=0.17 * pressure[1:],
+        fractions={"O2": np.full(n, 0.17), "N2": np.full(n, 0.35), "He": np.full(n, 0.48)},
+        setpoint=np.full(n, np.nan),
+        times=np.append(0.0, np.cumsum(duration)),
+    )
+
+
+def compiled_loop() -> Callable[..., None]:
+    """Return the obvious loop, compiled."""
+    import numba
+
+    @numba.njit
+    def loop(state: Any, duration: Any, first: Any, last: Any, half_time: Any, out: Any) -> None:
+        for c in range(half_time.shape[0]):
+            for g in range(half_time.shape[1]):
+                p, k = state[c, g], math.log(2.0) / half_time[c, g]
+                out[c, g, 0] = p
+                for i in range(duration.shape[0]):
+                    t = duration[i]
+                    if t > 0.0:
+                        share = -math.expm1(-k * t)
+                        rate = (last[i, g] - first[i, g]) / t
+                        p = p + (first[i, g] - p) * share + rate * (t - share / k)
+                    out[c, g, i + 1] = p
+
+    return loop
+
+
+def long_log() -> None:
+    """Print the time of a 10 000-point log, 16 compartments, 2 gases."""
+    model = tissues.load("buhlmann_1995_c")
+    loop = compiled_loop()
+    for regular in (True, False):
+        row, _ = stretches(model, log_of(10_000, regular))
+        state, half_time = equilibrium(model, 101.325), np.array(model.half_time)
+        out = np.empty((*half_time.shape, 10_001))
+        loop(state, row.duration, row.start_inert, row.end_inert, half_time, out)
+        np.testing.assert_allclose(along(model, state, row), out, rtol=1e-9)
+        compiled, ours = best(
+            lambda: loop(state, row.duration, row.start_inert, row.end_inert, half_time, out),
+            lambda: along(model, state, row),
+        )
+        kind = "regular" if regular else "irregular"
+        print(f"10 000 {kind} points: compiled {compiled:.2f} ms, ours {ours:.2f} ms, ratio {ours / compiled:.2f}")
+
+
+def scenarios() -> None:
+    """Print the time for one dive and for many at once, and the cost of a scenario."""
+    for model in ("buhlmann_1995_c", "thalmann_vval18"):
+        for n in (1, 100, 10_000):
+            depth = xr.DataArray(np.linspace(10.0, 40.0, n), dims="n", attrs={"units": "msw"})
+            dive = Exposure.start("air").travel(depth=depth, minutes=2).stay(20).travel(depth=0, minutes=4).stay(60)
+            with gp.validity("ignore"):
+                (ms,) = best(lambda d=dive, m=model: tissues.tensions(d, m), repeats=5)  # type: ignore[misc]
+            print(f"{model}: {n} scenarios {ms:.1f} ms, {1e3 * ms / n:.1f} us each")
+
+
+if __name__ == "__main__":
+    long_log()
+    scenarios()
