@@ -7,10 +7,16 @@ from typing import Any
 
 import numpy as np
 import xarray as xr
+from numpy.typing import NDArray
 
+from gasphys.constants import MSW
+from gasphys.doses import MEASURES
 from gasphys.equation import EquationFunction, Working
 from gasphys.errors import GasphysError, unknown_name
+from gasphys.exposure import Exposure, Pieces
+from gasphys.gas import FORMULAS
 from gasphys.policy import validity
+from gasphys.real_gas import ideal_density
 from gasphys.registry import equations
 
 __all__ = ["Explanation", "explain"]
@@ -86,11 +92,174 @@ def explain(ds: xr.Dataset, name: str, time: float | None = None, **labels: Any)
     """
     if name not in ds.variables:
         raise unknown_name("variable", name, [str(v) for v in ds.data_vars])
+    if name in ("dose", "total") and "measure" in ds.dims:
+        return _explain_dose(ds, name, labels)
+    if name in _OF_A_REVIEW and "limit" in ds.dims:
+        return _explain_review(ds, name, labels)
     row = _select(ds, name, time, labels)
     steps: list[Working] = []
     given: dict[str, float] = {}
     value = _evaluate(row, name, steps, given, labels)
     return Explanation(name, value, float(row[name].values), steps, given)
+
+
+def _labelled(ds: xr.Dataset, name: str, dim: str, labels: dict[str, Any]) -> tuple[xr.Dataset, str]:
+    """Select one measure or limit and one scenario."""
+    if dim not in labels:
+        raise GasphysError(f"{name} has the dimension {dim}; give {dim}=")
+    row = _select(ds, name, None, labels)
+    return row, str(labels[dim])
+
+
+# -- doses: the ramp equation of every piece that counts, added up -------------------------------
+
+
+def _explain_dose(ds: xr.Dataset, name: str, labels: dict[str, Any]) -> Explanation:
+    row, measure = _labelled(ds, name, "measure", labels)
+    one = MEASURES[measure]
+    stored = float(row[name].values)
+    if one.whole is not None or ds.attrs["recovery"] != "none" or ds.attrs["carried_on"] == "yes":
+        why = {f"{name}, not a sum over the pieces of this exposure alone": stored}
+        return Explanation(name, stored, stored, [], why)
+    pieces = Exposure.from_dataset(row).pieces()
+    counts = row["counted"].values.astype(bool)
+    each, steps = _dose_of_pieces(measure, pieces, counts, len(counts))
+    total = float(each.sum())
+    value = total if name == "total" else float(np.asarray(one.dose(np.asarray(total))))
+    if np.isnan(stored):
+        return Explanation(name, stored, stored, [], {str(row["reason"].values): stored})
+    return Explanation(name, value, stored, steps, {"sum over the pieces": total})
+
+
+def _dose_of_pieces(
+    measure: str, pieces: Pieces, counts: NDArray[np.bool_], until: int, share: float = 1.0
+) -> tuple[NDArray[np.float64], list[Working]]:
+    """Return what each piece adds up to an instant, and the workings of those that add something."""
+    one = MEASURES[measure]
+    f = equations()[one.equation]
+    each, steps = np.zeros(len(counts)), []
+    for k in range(until):
+        part = share if k == until - 1 else 1.0
+        minutes = float(pieces.duration[k]) * part
+        start = float(pieces.start_po2[k])
+        end = start + (float(pieces.end_po2[k]) - start) * part
+        if not counts[k] or minutes == 0.0:
+            continue
+        each[k] = float(np.asarray(one.kernel(np.asarray(start), np.asarray(end), np.asarray(minutes))))
+        if each[k] == 0.0 or np.isnan(each[k]):
+            continue
+        ends = {"start_po2": start, "end_po2": end}
+        if "po2" in {a.name for a in f.arguments}:
+            ends = {"po2": max(start, end)}
+        with validity("ignore"):
+            steps.append(f.working(duration=minutes, **ends, **one.options))
+    return each, steps
+
+
+# -- reviews: the reviewed quantity evaluated again at the instant named --------------------------
+
+_OF_A_REVIEW = ("worst", "limit_value", "margin", "time_of_worst", "first_crossing", "time_beyond")
+
+
+def _explain_review(ds: xr.Dataset, name: str, labels: dict[str, Any]) -> Explanation:
+    row, identifier = _labelled(ds, name, "limit", labels)
+    stored = float(row[name].values)
+    limit, what = float(row["limit_value"].values), str(row["quantity"].values)
+    given = {f"limit {identifier}, {row['published'].values} ({row['authority'].values})": limit}
+    if name == "limit_value" or np.isnan(stored):
+        reason = str(row["reason"].values)
+        return Explanation(name, stored, stored, [], given if not reason else {reason: stored})
+    exposure = Exposure.from_dataset(row)
+    sign = 1.0 if str(row["comparison"].values) == "<=" else -1.0
+    if name == "first_crossing":
+        at = [stored]
+        value, steps = _reviewed(exposure, what, stored, sign, after=True)
+        given[f"{what} at {stored:.7g} min"] = value
+        return Explanation(name, at[0], stored, steps, given)
+    if name == "time_beyond":
+        first = float(row["first_crossing"].values)
+        given["first crossing"] = first
+        return Explanation(name, stored, stored, [], given)
+    when = float(row["time_of_worst"].values)
+    worst, steps = _reviewed(exposure, what, when, sign, after=False)
+    if name == "time_of_worst":
+        given[f"{what} there"] = worst
+        return Explanation(name, when, stored, steps, given)
+    value = worst if name == "worst" else sign * (limit - worst)
+    return Explanation(name, value, stored, steps, given)
+
+
+def _reviewed(
+    exposure: Exposure, what: str, when: float, sign: float, after: bool
+) -> tuple[float, list[Working]]:
+    """Evaluate a reviewed quantity at an instant: of the pieces that meet there, the farther one."""
+    pieces = exposure.pieces()
+    measure = next((m for m, q in _DOSE_QUANTITIES.items() if q == what), "")
+    times = pieces.times
+    if measure:
+        last = int(np.clip(np.searchsorted(times, when, side="left"), 1, len(pieces.duration)))
+        length = float(pieces.duration[last - 1])
+        share = min(1.0, (when - float(times[last - 1])) / length) if length else 1.0
+        every = np.ones(len(pieces.duration), dtype=bool)
+        each, steps = _dose_of_pieces(measure, pieces, every, last, share)
+        return float(np.asarray(MEASURES[measure].dose(np.asarray(each.sum())))), steps
+    found: list[tuple[float, list[Working]]] = []
+    for k in range(len(pieces.duration)):
+        if pieces.duration[k] > 0.0 and times[k] - 1e-9 <= when <= times[k + 1] + 1e-9:
+            share = float(np.clip((when - times[k]) / pieces.duration[k], 0.0, 1.0))
+            if after and share > 1.0 - 1e-12 and k + 1 < len(pieces.duration):
+                continue
+            found.append(_at_piece(exposure, what, k, share))
+    return max(found, key=lambda pair: sign * pair[0])
+
+
+_DOSE_QUANTITIES = {
+    "noaa_cns": "noaa_cns_single_fraction",
+    "noaa_cns_day": "noaa_cns_day_fraction",
+    "uptd": "uptd",
+    "arieli_pulmonary_index": "arieli_pulmonary_index",
+}
+
+
+def _at_piece(exposure: Exposure, what: str, k: int, share: float) -> tuple[float, list[Working]]:
+    registry = equations()
+    c = exposure.columns
+    start, end = float(c["start_pressure"][k]), float(c["end_pressure"][k])
+    if what == "compression_rate":
+        return max(end - start, 0.0) / float(c["segment_duration"][k]), []
+    steps = [
+        registry["breathing_gas.linear_in_piece"].working(
+            start_pressure=start, end_pressure=end, share_of_piece=share
+        )
+    ]
+    pressure = float(steps[0].result)
+    if what == "depth_on_helium":
+        return max(pressure - float(exposure.surface_pressure), 0.0) / float(MSW), steps
+    fractions = {g: float(v[k]) for g, v in exposure.fractions.items()}
+    if what == "breathing_gas_co2_surface_equivalent":
+        f = registry["doses.surface_equivalent"]
+        steps.append(f.working(fraction=fractions.get("CO2", 0.0), ambient_pressure=pressure))
+        return float(steps[-1].result), steps
+    setpoint = float(c["setpoint"][k])
+    if np.isnan(setpoint):
+        f = registry["breathing_gas.open_circuit_po2"]
+        steps.append(f.working(o2_fraction=fractions["O2"], ambient_pressure=pressure))
+    else:
+        f = registry["breathing_gas.loop_po2"]
+        steps.append(f.working(setpoint=setpoint, ambient_pressure=pressure))
+    po2 = float(steps[-1].result)
+    if what == "breathing_gas_po2":
+        return po2, steps
+    rest = 1.0 - fractions["O2"]
+    share_of_rest = (1.0 - po2 / pressure) / rest if rest > 0.0 else 0.0
+    loop = not np.isnan(setpoint)
+    mix = {
+        FORMULAS[g]: (po2 / pressure if g == "O2" else x * share_of_rest) if loop else x
+        for g, x in {**dict.fromkeys(FORMULAS, 0.0), **fractions}.items()
+    }
+    with validity("ignore"):
+        steps.append(ideal_density.working(ambient_pressure=pressure, temperature=0.0, **mix))
+    return float(steps[-1].result), steps
 
 
 def _select(ds: xr.Dataset, name: str, time: float | None, labels: dict[str, Any]) -> xr.Dataset:

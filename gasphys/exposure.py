@@ -651,6 +651,42 @@ class Exposure:
         from gasphys import __version__
 
         pieces = self.pieces()
+        ds = self.segment_view()
+        self._time_view(ds, pieces, at)
+        ds.attrs = {
+            "Conventions": "CF-1.11",
+            "title": self.attrs.get("title", "exposure: pressure and breathing gas against time"),
+            "source": f"gasphys {__version__}, exposure",
+            "history": "\n".join(self.history) or "as given",
+            "references": self.attrs.get("references", ""),
+            "comment": CAUTION,
+            **ds.attrs,
+            **{k: v for k, v in self.attrs.items() if k not in ("title", "references")},
+        }
+        return ds
+
+    def segment_view(self) -> xr.Dataset:
+        """Return the lossless view alone: what a result carries so that it can be explained.
+
+        Returns
+        -------
+        Dataset
+            On dimension ``segment``; :meth:`from_dataset` reads it back.
+
+        Raises
+        ------
+        ExposureError
+            If there is no piece.
+
+        Examples
+        --------
+        >>> view = Exposure.start("air").stay(10).segment_view()
+        >>> Exposure.from_dataset(view).duration
+        10.0
+        """
+        if not self.part:
+            raise ExposureError("the exposure has no piece yet")
+        pieces = self.pieces()
         ds = xr.Dataset()
         coords = {d: np.asarray(v) for d, v in self.coords.items()}
         n = len(self.part)
@@ -680,18 +716,7 @@ class Exposure:
                 above.reshape(-1, n).any(axis=0).astype(np.int8),
                 {"long_name": "1 where the diluent's own PO2 exceeds the set-point"},
             )
-        self._time_view(ds, pieces, at)
-        ds.attrs = {
-            "Conventions": "CF-1.11",
-            "title": self.attrs.get("title", "exposure: pressure and breathing gas against time"),
-            "source": f"gasphys {__version__}, exposure",
-            "history": "\n".join(self.history) or "as given",
-            "references": self.attrs.get("references", ""),
-            "comment": CAUTION,
-            "depth_unit": self.depth_unit,
-            "water": self.water,
-            **{k: v for k, v in self.attrs.items() if k not in ("title", "references")},
-        }
+        ds.attrs = {"depth_unit": self.depth_unit, "water": self.water}
         if np.size(self.surface_pressure) == 1:
             ds.attrs["surface_pressure"] = float(np.ravel(self.surface_pressure)[0])
         else:

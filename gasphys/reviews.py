@@ -420,7 +420,10 @@ def _dataset(
     shape = tuple(len(exposure.coords[d]) for d in exposure.dims)
     minutes = np.broadcast_to(np.asarray(exposure.duration), shape)
     ds["duration"] = (exposure.dims, minutes.copy(), attributes("duration"))
+    view = exposure.segment_view()
+    ds = ds.merge(view, combine_attrs="override")
     ds.attrs = {
+        **view.attrs,
         "Conventions": "CF-1.11",
         "title": f"review of {exposure.attrs.get('title', 'an exposure')}",
         "source": f"gasphys {__version__}, review",

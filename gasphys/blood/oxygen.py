@@ -716,6 +716,9 @@ _PO2_AT_CONTENT: dict[str, EquationFunction] = {
     for name, content in _CONTENTS.items()
 }
 
+#: The one that mixing of bloods is calculated with.
+po2_at_content_severinghaus = _PO2_AT_CONTENT["severinghaus_1979"]
+
 
 @choice(option="model", registry=_PO2_AT_CONTENT)
 def po2_at_content(

@@ -281,9 +281,9 @@ def oxygen(
     pieces = exposure.pieces()
     mask = counted(exposure, count)
     rows = {name: _row(name, exposure, pieces, mask, role, initial, recovery) for name in names}
-    return _dataset(
-        exposure, rows, _beside(exposure, pieces, mask), {"count": count, "role": role, "recovery": recovery}
-    )
+    options = {"count": count, "role": role, "recovery": recovery}
+    options["carried_on"] = "no" if initial is None else "yes"
+    return _dataset(exposure, rows, _beside(exposure, pieces, mask), mask, options)
 
 
 @dataclass(frozen=True)
@@ -321,7 +321,7 @@ def _beside(exposure: Exposure, pieces: Pieces, mask: Mask) -> _Beside:
 
 
 def _dataset(
-    exposure: Exposure, rows: dict[str, _Row], beside: _Beside, options: dict[str, str]
+    exposure: Exposure, rows: dict[str, _Row], beside: _Beside, mask: Mask, options: dict[str, str]
 ) -> xr.Dataset:
     from gasphys import __version__
 
@@ -408,11 +408,21 @@ def _dataset(
     keys = [k for one in ones.values() for k in EQUATIONS[one.equation].sources]
     if any(one.is_symptom_risk for one in ones.values()):
         keys += ["heyboer_2014", "costa_2019", "yildiz_2004", "hadanny_2016"]
+    view = exposure.segment_view()
+    view["counted"] = (
+        "segment",
+        np.broadcast_to(mask, (*mask.shape[:-1], len(exposure.part)))
+        .reshape(-1, len(exposure.part))[0]
+        .astype(np.int8),
+        {"long_name": "1 where the piece counts"},
+    )
+    ds = ds.merge(view, combine_attrs="override")
     ds.attrs = {
+        **view.attrs,
         "Conventions": "CF-1.11",
         "title": "oxygen dose of an exposure",
         "source": f"gasphys {__version__}, oxygen dose, count {options['count']}",
-        "history": "; ".join(exposure.history) or "as given",
+        "history": "\n".join(exposure.history) or "as given",
         "references": "; ".join(dict.fromkeys(keys)),
         "comment": CAUTION,
         **options,

@@ -629,7 +629,8 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
                 np.multiply(-first[k], share, out=total[k])
             total[k] += followed
     elapsed = np.cumsum(t, axis=0)
-    lost, added = (np.moveaxis(v, -1, 0) for v in (np.expm1(rate * elapsed[-1]), total[-1]))
+    ends = (np.expm1(rate * elapsed[-1]), total[-1])
+    lost, added = (np.ascontiguousarray(np.moveaxis(v, -1, 0)) for v in ends)
     carry = np.empty((count, *shape[:-1]))
     carry[0] = state
     for j in range(1, count):

@@ -477,7 +477,7 @@ def test_scenarios_equal_single_exposures() -> None:
 
 def test_a_hundred_thousand_scenarios_in_one_call() -> None:
     ds = oxygen(_scenarios(100_000), ["uptd", "esot", "noaa_cns", "cns_risk_active"])
-    assert ds.sizes == {"measure": 4, "draw": 100_000}
+    assert ds.dose.sizes == {"measure": 4, "draw": 100_000}
     assert np.isfinite(ds.dose.sel(measure="uptd")).all()
     undefined = np.isnan(ds.dose.values)
     assert (ds.status.values[undefined] == "not applicable").all()

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from gasphys import Exposure, Person, explain, gas_exchange
+from gasphys import Exposure, Person, doses, explain, gas_exchange, review
 from gasphys.errors import GasphysError, InputFileError, RangeError, UnknownNameError, ValidityWarning
 from gasphys.schedules import treatment
 
@@ -144,3 +144,55 @@ def test_explain_refuses_what_is_open() -> None:
     text = str(explain(ds, "arterial_dissolved_o2", time=3.0))
     assert "lungs.alveolar_po2" in text
     assert "provenance" in text
+
+
+RESULTS = [
+    treatment("usn_6"),
+    Exposure.start("trimix 17/48")
+    .travel(depth=56, rate=20)
+    .stay(19)
+    .travel(depth=20, rate=9)
+    .switch("nitrox 48")
+    .stay(9),
+    Exposure.start("air")
+    .loop(130.0, "trimix 17/48")
+    .travel(depth=40, minutes=3)
+    .stay(50)
+    .travel(depth=0, minutes=9),
+]
+
+
+@pytest.mark.parametrize("exposure", RESULTS)
+def test_every_number_of_a_review_can_be_explained(exposure: Exposure) -> None:
+    found = review(exposure, role="diver")
+    chains = 0
+    for limit in found.limit.values:
+        for name in ("worst", "limit_value", "margin", "time_of_worst", "first_crossing", "time_beyond"):
+            told = explain(found, name, limit=str(limit))
+            assert told.value == pytest.approx(told.stored, rel=1e-9, abs=1e-9, nan_ok=True)
+            chains += bool(told.steps)
+        crossing = explain(found, "first_crossing", limit=str(limit))
+        row = found.sel(limit=limit)
+        if not np.isnan(crossing.stored) and crossing.stored > 0.0:
+            quantity = next(v for k, v in crossing.given.items() if " at " in k)
+            beyond = quantity >= float(row.limit_value) * (1 - 1e-6)
+            assert (
+                beyond
+                if str(row.comparison.values) == "<="
+                else quantity <= float(row.limit_value) * (1 + 1e-6)
+            )
+    assert chains > 20
+
+
+@pytest.mark.parametrize("exposure", RESULTS)
+def test_every_dose_can_be_explained(exposure: Exposure) -> None:
+    found = doses.oxygen(exposure, "all")
+    chains = 0
+    for measure in found.measure.values:
+        for name in ("dose", "total"):
+            told = explain(found, name, measure=str(measure))
+            assert told.value == pytest.approx(told.stored, rel=1e-9, nan_ok=True)
+            chains += bool(told.steps)
+    assert chains > 5
+    with pytest.raises(GasphysError, match="give measure="):
+        explain(found, "dose")

@@ -1,7 +1,8 @@
 """Speed of the tissue kernels as ratios within one run; never part of pass or fail.
 
-Run ``python tests/benchmarks/bench_tissues.py``; numba is needed for the compiled loop only. Other work on the
-machine disturbs small vector operations more than a compiled loop: take the smallest ratio of several runs.
+Run ``python tests/benchmarks/tissues.py``; numba is needed for the compiled loop only, which makes its own
+result as ours does. Other work on the machine disturbs small vector operations more than a compiled loop:
+take the smallest ratio of several runs.
 """
 
 from __future__ import annotations
@@ -48,12 +49,13 @@ def log_of(n: int, regular: bool) -> Pieces:
     )
 
 
-def compiled_loop() -> Callable[..., None]:
+def compiled_loop() -> Callable[..., Any]:
     """Return the obvious loop, compiled."""
     import numba
 
     @numba.njit
-    def loop(state: Any, duration: Any, first: Any, last: Any, half_time: Any, out: Any) -> None:
+    def loop(state: Any, duration: Any, first: Any, last: Any, half_time: Any) -> Any:
+        out = np.empty((*half_time.shape, duration.shape[0] + 1))
         for c in range(half_time.shape[0]):
             for g in range(half_time.shape[1]):
                 p, k = state[c, g], math.log(2.0) / half_time[c, g]
@@ -65,39 +67,43 @@ def compiled_loop() -> Callable[..., None]:
                         rate = (last[i, g] - first[i, g]) / t
                         p = p + (first[i, g] - p) * share + rate * (t - share / k)
                     out[c, g, i + 1] = p
+        return out
 
     return loop
 
 
-def long_log() -> None:
+def long_log(loop: Callable[..., Any], regular: bool) -> None:
     """Print the time of a 10 000-point log, 16 compartments, 2 gases."""
     model = tissues.load("buhlmann_1995_c")
-    loop = compiled_loop()
-    for regular in (True, False):
-        row, _ = stretches(model, log_of(10_000, regular))
-        state, half_time = equilibrium(model, 101.325), np.array(model.half_time)
-        out = np.empty((*half_time.shape, 10_001))
-        loop(state, row.duration, row.start_inert, row.end_inert, half_time, out)
-        np.testing.assert_allclose(along(model, state, row), out, rtol=1e-9)
-        compiled, ours = best(
-            lambda: loop(state, row.duration, row.start_inert, row.end_inert, half_time, out),
-            lambda: along(model, state, row),
-        )
-        kind = "regular" if regular else "irregular"
-        print(f"10 000 {kind} points: compiled {compiled:.2f} ms, ours {ours:.2f} ms, ratio {ours / compiled:.2f}")
+    row, _ = stretches(model, log_of(10_000, regular))
+    state, half_time = equilibrium(model, 101.325), np.array(model.half_time)
+
+    def compiled() -> Any:
+        return loop(state, row.duration, row.start_inert, row.end_inert, half_time)
+
+    def ours() -> Any:
+        return along(model, state, row)
+
+    np.testing.assert_allclose(ours(), compiled(), rtol=1e-9)
+    one, other = best(compiled, ours)
+    kind = "regular" if regular else "irregular"
+    print(f"10 000 {kind} points: compiled {one:.2f} ms, ours {other:.2f} ms, ratio {other / one:.2f}")
 
 
-def scenarios() -> None:
-    """Print the time for one dive and for many at once, and the cost of a scenario."""
-    for model in ("buhlmann_1995_c", "thalmann_vval18"):
-        for n in (1, 100, 10_000):
-            depth = xr.DataArray(np.linspace(10.0, 40.0, n), dims="n", attrs={"units": "msw"})
-            dive = Exposure.start("air").travel(depth=depth, minutes=2).stay(20).travel(depth=0, minutes=4).stay(60)
-            with gp.validity("ignore"):
-                (ms,) = best(lambda d=dive, m=model: tissues.tensions(d, m), repeats=5)  # type: ignore[misc]
-            print(f"{model}: {n} scenarios {ms:.1f} ms, {1e3 * ms / n:.1f} us each")
+def scenarios(model: str, n: int) -> None:
+    """Print the time for many dives at once, and the cost of one of them."""
+    depth = xr.DataArray(np.linspace(10.0, 40.0, n), dims="n", attrs={"units": "msw"})
+    dive = Exposure.start("air").travel(depth=depth, minutes=2).stay(20)
+    dive = dive.travel(depth=0, minutes=4).stay(60)
+    with gp.validity("ignore"):
+        (ms,) = best(lambda: tissues.tensions(dive, model), repeats=5)
+    print(f"{model}: {n} scenarios {ms:.1f} ms, {1e3 * ms / n:.1f} us each")
 
 
 if __name__ == "__main__":
-    long_log()
-    scenarios()
+    LOOP = compiled_loop()
+    for evenly in (True, False):
+        long_log(LOOP, evenly)
+    for name in ("buhlmann_1995_c", "thalmann_vval18"):
+        for many in (1, 100, 10_000):
+            scenarios(name, many)
