@@ -29,9 +29,9 @@ ACCEPTED = ROOT / ".ci" / "mutation_survivors.toml"
 #: Tests that speak of a file, by the beginning of its path, quickest first: the first match counts.
 #: "rows PREFIX ..." are the published rows of the equations that begin with a prefix.
 TESTS = {
-    "gasphys/limits": ["tests/data", "tests/floors/test_review.py", "tests/doses"],
-    "gasphys/schedules": ["tests/data", "tests/floors/test_doses_along.py"],
-    "gasphys/person_defaults": ["tests/data", "tests/floors/test_person.py"],
+    "gasphys/limits": ["tests/data/test_transcriptions.py", "tests/floors/test_review.py", "tests/doses"],
+    "gasphys/schedules": ["tests/data/test_transcriptions.py", "tests/floors/test_doses_along.py"],
+    "gasphys/person_defaults": ["tests/data/test_transcriptions.py", "tests/floors/test_person.py"],
     "gasphys/dry_air": ["tests/data", "tests/floors/test_exposure.py"],
     "gasphys/constants": [
         "rows laws. lungs. blood. surroundings.",

@@ -31,6 +31,7 @@ _NAMES = {
 }
 
 _MODULES = (
+    "ascent",
     "blood",
     "breathing_gas",
     "constants",

@@ -13,6 +13,7 @@ Every equation is a plain function with attributes: ``raw`` (numpy body), ``symb
 
 from __future__ import annotations
 
+import dis
 import functools
 import inspect
 import re
@@ -220,6 +221,12 @@ def _rebind(
 _MISSING = object()
 
 
+def _is_light(body: Any) -> bool:
+    """Whether a body is a few arithmetic operations and calls nothing."""
+    names = [i.opname for i in dis.get_instructions(body)]
+    return "CALL" not in names and names.count("BINARY_OP") <= 4
+
+
 def _constants_of(body: Any) -> tuple[dict[str, Constant], list[str]]:
     """Return the constants of a body, and the provenance of formulas whose constants are theirs alone."""
     found: dict[str, Constant] = {}
@@ -330,6 +337,7 @@ def formula(
             provenance=known,
             references=_references(keys),
             check_result=check_result,
+            light=_is_light(body),
             labels=dict(labels or {}),
             judged=judged,
         )

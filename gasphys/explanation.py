@@ -315,11 +315,15 @@ def _evaluate(
 
 
 def _equation(row: xr.Dataset, text: str) -> EquationFunction:
-    """Return the equation; where open circuit and loop differ, the one that holds here."""
+    """Return the equation; where models, or open circuit and loop, differ, the one that holds here."""
     names = [part.strip() for part in text.split("|")]
     registry = equations()
     if len(names) == 1:
         return registry[names[0]]
+    if "model" in row.coords:
+        of_model = [n for n in names if n.endswith(f"_from_{row['model'].values}")]
+        if of_model:
+            return registry[of_model[0]]
     loop = not np.isnan(float(row["setpoint"].values))
     return registry[next(n for n in names if (".loop_" in n) == loop)]
 

@@ -445,8 +445,9 @@ def find_root(
     Examples
     --------
     >>> import numpy as np
-    >>> float(find_root(lambda x: x * x - 2.0, np.array([0.0]), np.array([2.0]))[0])
-    1.4142135623730951
+    >>> root = find_root(lambda x: x * x - 2.0, np.array([0.0]), np.array([2.0]))
+    >>> round(float(root[0]), 12)
+    1.414213562373
     """
     b, a = np.broadcast_arrays(np.asarray(low, dtype=float), np.asarray(high, dtype=float))
     a, b = np.array(a), np.array(b)

@@ -6,12 +6,12 @@ import functools
 import os
 import re
 import tomllib
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 from importlib import resources
 from pathlib import Path
 from typing import Any
 
-from gasphys import lungs
+from gasphys import blood, lungs
 from gasphys.errors import GasphysError, InputFileError, RangeError, unknown_name
 from gasphys.policy import outside_validity
 from gasphys.quantities import quantity
@@ -40,6 +40,8 @@ class Person:
         "diver", "patient" or "attendant"; "" where it is not said.
     arterial_pco2 : float or str, optional
         Arterial PCO2 [kPa].
+    arterial_ph : float, optional
+        Arterial pH at 37 degC [1].
     respiratory_exchange_ratio : float, optional
         CO2 output over O2 uptake [1].
     hemoglobin : float, optional
@@ -49,7 +51,8 @@ class Person:
     shunt_fraction : float, optional
         Shunt as a share of cardiac output [1].
     arteriovenous_difference : float, optional
-        Arterial minus mixed venous O2 content [mL/dL].
+        Arterial minus mixed venous O2 content [mL/dL]; where cardiac output and O2 uptake are both given
+        it follows from them.
     cardiac_output : float, optional
         Cardiac output [L/min].
     o2_uptake_stpd, co2_output_stpd : float, optional
@@ -82,6 +85,7 @@ class Person:
     code: str = ""
     role: str = ""
     arterial_pco2: Any = None
+    arterial_ph: Any = None
     respiratory_exchange_ratio: Any = None
     hemoglobin: Any = None
     arterial_alveolar_ratio: Any = None
@@ -139,6 +143,8 @@ class Person:
         if name not in measurable():
             raise unknown_name("field of a person", name, measurable())
         given = getattr(self, name)
+        if given is None and name == "arteriovenous_difference" and self._has_flow():
+            return float(blood.arteriovenous_o2_difference(self.o2_uptake_stpd, self.cardiac_output))
         return float(_defaults()[name]["value"]) if given is None else float(given)
 
     def is_measured(self, name: str) -> bool:
@@ -159,7 +165,13 @@ class Person:
         >>> Person(hemoglobin=15, assumed=("hemoglobin",)).is_measured("hemoglobin")
         False
         """
+        if name == "arteriovenous_difference" and getattr(self, name) is None:
+            return self._has_flow() and not {"cardiac_output", "o2_uptake_stpd"} & set(self.assumed)
         return getattr(self, name) is not None and name not in self.assumed
+
+    def _has_flow(self) -> bool:
+        """Whether the arteriovenous difference follows from what is given."""
+        return self.cardiac_output is not None and self.o2_uptake_stpd is not None
 
     @classmethod
     def from_sample(
@@ -187,7 +199,8 @@ class Person:
         Returns
         -------
         Person
-            With ``arterial_pco2`` and ``arterial_alveolar_ratio`` measured.
+            With ``arterial_pco2``, ``arterial_alveolar_ratio`` and ``shunt_fraction`` measured, the last
+            for the arteriovenous difference and hemoglobin of the person, given or assumed.
 
         Raises
         ------
@@ -220,10 +233,20 @@ class Person:
             )
         if fraction < 0.25:
             outside_validity(
-                f"the sample was taken on FiO2 {fraction:g}: in disease a ratio found on air is mostly "
-                "uneven ventilation and does not carry over to oxygen; use a sample on oxygen"
+                f"the sample was taken on FiO2 {fraction:g}: in disease a ratio or a shunt found on air is "
+                "mostly uneven ventilation and does not carry over to oxygen; use a sample on oxygen"
             )
-        return cls(arterial_pco2=pco2, arterial_alveolar_ratio=ratio, **given)
+        person = cls(arterial_pco2=pco2, arterial_alveolar_ratio=ratio, **given)
+        if person.shunt_fraction is not None:
+            return person
+        shunt = blood.shunt_at_arterial_po2(
+            po2,
+            alveolar,
+            blood.functional_hemoglobin(person.value("hemoglobin"), person.value("cohb_fraction")),
+            person.value("arteriovenous_difference"),
+            person.value("arterial_ph"),
+        )
+        return replace(person, shunt_fraction=shunt)
 
     @classmethod
     def from_toml(cls, path: str | os.PathLike[str]) -> Person:

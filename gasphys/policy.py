@@ -69,7 +69,7 @@ def validity(mode: Literal["raise", "warn", "ignore"]) -> Iterator[None]:
     >>> import gasphys as gp
     >>> with gp.validity("ignore"):
     ...     round(gp.lungs.water_vapor_pressure(150.0), 1)
-    476.1
+    476.2
     """
     if mode not in ("raise", "warn", "ignore"):
         raise unknown_name("validity mode", mode, ("raise", "warn", "ignore"))

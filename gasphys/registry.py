@@ -22,6 +22,7 @@ MODULES = (
     "gas_exchange.equations",
     "doses.equations",
     "tissues.equations",
+    "ascent.equations",
 )
 
 
@@ -41,7 +42,8 @@ def equations() -> dict[str, EquationFunction]:
     """
     for module in MODULES:
         importlib.import_module(f"gasphys.{module}")
-    return dict(EQUATIONS)
+    order = {name: place for place, name in enumerate(["vapor", *(m.split(".")[0] for m in MODULES)])}
+    return dict(sorted(EQUATIONS.items(), key=lambda item: order.get(item[0].split(".")[0], -1)))
 
 
 def as_records() -> list[dict[str, Any]]:
@@ -55,8 +57,8 @@ def as_records() -> list[dict[str, Any]]:
 
     Examples
     --------
-    >>> as_records()[0]["name"]
-    'laws.convert_gas_volume'
+    >>> next(r["unit"] for r in as_records() if r["name"] == "lungs.alveolar_po2")
+    'kPa'
     """
     records = []
     for name, f in equations().items():

@@ -151,7 +151,7 @@ def summary_text(exposure: Exposure, person: Person | None, units: Units) -> str
     """
     from gasphys.doses import oxygen
 
-    ds = oxygenation(exposure, person)
+    ds = oxygenation(exposure, person, model="both")
     start, end = exposure.columns["start_pressure"], exposure.columns["end_pressure"]
     top = float(max(start.max(), end.max()))
     lines = [str(exposure.attrs.get("title", "exposure: pressure and breathing gas against time"))]
@@ -180,25 +180,23 @@ def summary_text(exposure: Exposure, person: Person | None, units: Units) -> str
     best = int(np.argmax(ds["alveolar_po2"].values))
     row = ds.isel(time=best)
 
-    def value(name: str) -> float:
-        return float(row[name].values)
-
     lines.append(
-        f"  at {value('time'):.1f} min, {_round(convert(value('ambient_pressure'), 'kPa', units.pressure))} "
-        f"{units.pressure}, FIO2 {value('fio2'):.3g}: alveolar PO2 "
-        f"{_round(convert(value('alveolar_po2'), 'kPa', units.pressure))} {units.pressure}, arterial PO2 "
-        f"{_round(convert(value('arterial_po2'), 'kPa', units.pressure))} {units.pressure},"
+        f"  at {float(row['time']):.1f} min, "
+        f"{_round(convert(float(row['ambient_pressure']), 'kPa', units.pressure))} {units.pressure}, "
+        f"FIO2 {float(row['fio2']):.3g}: alveolar PO2 "
+        f"{_round(convert(float(row['alveolar_po2']), 'kPa', units.pressure))} {units.pressure}, "
+        f"arterial PO2 {_range(row['arterial_po2'], units.pressure)},"
     )
     lines.append(
-        f"    dissolved O2 {value('arterial_dissolved_o2'):.2f} mL/dL, arterial O2 content "
-        f"{value('arterial_o2_content'):.2f} mL/dL"
+        f"    dissolved O2 {_range(row['arterial_dissolved_o2'])}, "
+        f"arterial O2 content {_range(row['arterial_o2_content'])}"
     )
-    if ds.attrs["measured"]:
-        lines.append(f"    measured: {_shorter(ds.attrs['measured'])}")
-    if ds.attrs["assumed"]:
-        lines.append(f"    assumed: {_shorter(ds.attrs['assumed'])}")
+    lines.append(f"    arterial PO2 {_by_model(row['arterial_po2'], units.pressure)}")
+    for word in ("measured", "assumed"):
+        if ds.attrs[word]:
+            lines += _wrapped(f"{word}: {_shorter(ds.attrs[word])}", "    ", hang=2)
     if "flags" in ds.attrs:
-        lines.append(f"    flag: {ds.attrs['flags']}")
+        lines += _wrapped(f"flag: {ds.attrs['flags']}", "    ", hang=2)
     if exposure.history:
         lines.append("  about the record:")
         lines.extend(f"    {h}" for h in exposure.history[:12])
@@ -207,10 +205,32 @@ def summary_text(exposure: Exposure, person: Person | None, units: Units) -> str
     return "\n".join(lines)
 
 
+def _range(values: xr.DataArray, shown: str = "") -> str:
+    """Return the lowest and the highest of the models, in words."""
+    unit_name = shown or str(values.attrs["units"])
+    low, high = (float(convert(v, values.attrs["units"], unit_name)) for v in (values.min(), values.max()))
+    text = [_digits(v, shown) for v in (low, high)]
+    return f"{text[0]} {unit_name}" if text[0] == text[1] else f"{text[0]} to {text[1]} {unit_name}"
+
+
+def _digits(value: float, pressure: str) -> str:
+    return _round(value) if pressure or not np.isfinite(value) else f"{value:.2f}"
+
+
+def _by_model(arterial: xr.DataArray, shown: str) -> str:
+    parts = []
+    for model in arterial["model"].values:
+        value = float(convert(arterial.sel(model=model), "kPa", shown))
+        parts.append(f"{_round(value)} {shown} by constant {model}")
+    return ", ".join(parts)
+
+
 def _shorter(text: str) -> str:
     parts = []
     for one in text.split(", "):
         name, _, number = one.partition(" = ")
+        if name == "cardiac_output":  # enters nothing that is printed here
+            continue
         unit_name = quantity(name).unit
         parts.append(f"{name} {float(number):.3g}{'' if unit_name == '1' else ' ' + unit_name}")
     return ", ".join(parts)

@@ -678,7 +678,7 @@ def rests_on_memory(found: xr.Dataset) -> list[str]:
     Examples
     --------
     >>> dive = Exposure.start("air").stay(1)
-    >>> any("density" in line for line in rests_on_memory(review(dive)))
+    >>> any("Mitchell" in line for line in rests_on_memory(review(dive)))
     True
     """
     lines = []

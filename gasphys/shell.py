@@ -7,6 +7,7 @@ replaced from the registry.
 
 from __future__ import annotations
 
+import math
 import numbers
 import uuid
 from collections.abc import Callable, Iterator, Sequence
@@ -81,6 +82,8 @@ class Spec:
     references: str = ""
     check_result: bool = False
     labels: dict[str, str] = field(default_factory=dict)
+    #: Whether the body is no more than a few operations; else large arrays are evaluated by parts.
+    light: bool = False
     #: For an inverse: the argument of which equation the result is; its validity counts.
     target: Argument | None = None
     forward: str = ""
@@ -305,7 +308,46 @@ def _screen(spec: Spec, arrays: list[Any], report: bool) -> tuple[list[Any], NDA
     return arrays, outside
 
 
+#: Elements evaluated at once: inputs and intermediate results stay in the processor's cache.
+_AT_ONCE = 1 << 15
+
+
+def _by_parts(spec: Spec, arrays: list[Any]) -> NDArray[np.float64] | None:
+    """Evaluate large arrays of one shape part by part; None if there is anything to report."""
+    shapes = {a.shape for a in arrays if np.ndim(a)}
+    if spec.light or len(shapes) != 1:
+        return None
+    (shape,) = shapes
+    size = math.prod(shape)
+    if size < 2 * _AT_ONCE or not all(a.flags.c_contiguous for a in arrays if np.ndim(a)):
+        return None
+    ranges = [(a.low, a.high) for a in spec.arguments]
+    limits = _result_range(spec)
+    flat = [a.reshape(-1) if np.ndim(a) else float(a) for a in arrays]
+    result = np.empty(size)
+    for start in range(0, size, _AT_ONCE):
+        parts = [a if isinstance(a, float) else a[start : start + _AT_ONCE] for a in flat]
+        for part, (low, high) in zip(parts, ranges, strict=True):
+            if not (low <= part <= high if isinstance(part, float) else _all_within(part, low, high)):
+                return None
+        with np.errstate(all="ignore"):
+            result[start : start + _AT_ONCE] = spec.array(*parts)
+        if limits is not None and not _all_within(result[start : start + _AT_ONCE], *limits):
+            return None
+    return result.reshape(shape)
+
+
+def _result_range(spec: Spec) -> tuple[float, float] | None:
+    """Return the range inside which nothing is to be said of a result; None if any is taken."""
+    if spec.target is not None:
+        return spec.target.low, spec.target.high
+    return spec.result.possible if spec.check_result else None
+
+
 def _arrays(spec: Spec, arrays: list[Any], report: bool = True) -> NDArray[np.float64]:
+    result = _by_parts(spec, arrays)
+    if result is not None:
+        return result
     arrays, _ = _screen(spec, list(arrays), report)
     with np.errstate(all="ignore"):
         result = np.asarray(spec.array(*arrays), dtype=np.float64)
@@ -323,14 +365,10 @@ def _doubtful(
     spec: Spec, result: NDArray[np.float64], arrays: list[Any]
 ) -> list[tuple[NDArray[np.bool_], Callable[[float], str]]]:
     """Return where results are not found, outside validity or not possible, and what to say of it."""
-    low, high = spec.result.possible
-    target = spec.target
-    if target is not None:
-        low, high = target.low, target.high
-    elif not spec.check_result:
+    limits, target = _result_range(spec), spec.target
+    if limits is None or not result.size or _all_within(result, *limits):
         return []
-    if not result.size or _all_within(result, low, high):
-        return []
+    low, high = limits
     beyond = (result < low) | (result > high)
     lost = np.isnan(result)
     for value in arrays:

@@ -42,6 +42,7 @@ TITLES = {
     "gas_exchange": "From alveolus to arterial blood",
     "doses": "Oxygen dose, narcosis, carbon dioxide",
     "tissues": "Dissolved gas in tissues",
+    "ascent": "Ascents",
 }
 
 

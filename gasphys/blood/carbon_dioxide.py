@@ -287,7 +287,7 @@ Examples
 pco2_at_base_excess = _buffered(name="pco2_at_base_excess", kernel=_linear_within)
 
 #: The same without bounds: a search may look where there is no PCO2 and turn back.
-_pco2_at_base_excess = _buffered(name="unbounded_pco2_at_base_excess", kernel=_linear, register=False)
+unbounded_pco2_at_base_excess = _buffered(name="unbounded_pco2_at_base_excess", kernel=_linear, register=False)
 
 
 @formula(
@@ -301,7 +301,7 @@ def content_of_buffered_blood(
     ph: Value, base_excess: Value = 0.0, hemoglobin: Value = 15.0, o2_saturation: Value = 0.97
 ) -> Value:
     """CO2 content of blood of a base excess at a pH, which fixes its PCO2."""
-    pco2 = _pco2_at_base_excess(base_excess, ph, hemoglobin, o2_saturation)
+    pco2 = unbounded_pco2_at_base_excess(base_excess, ph, hemoglobin, o2_saturation)
     return douglas_1988(pco2, ph, hemoglobin, o2_saturation, 37.0)
 
 

@@ -11,6 +11,7 @@ __all__ = [
     "arterial_po2_from_shunt",
     "co2_load",
     "functional_hemoglobin",
+    "mixed_venous_co2_content",
     "mixed_venous_o2_content",
     "mixed_venous_ph",
     "shunt_at_arterial_po2",
@@ -165,6 +166,22 @@ def co2_load(respiratory_exchange_ratio: Value, arteriovenous_difference: Value 
     4.0
     """
     return respiratory_exchange_ratio * arteriovenous_difference
+
+
+@formula(result="mixed_venous_co2_content", source="fick_1870", provenance="secondary")
+def mixed_venous_co2_content(arterial_co2_content: Value, venous_arterial_co2_difference: Value) -> Value:
+    """CO2 content of mixed venous blood.
+
+    Notes
+    -----
+    Arterial content and what the tissues add.
+
+    Examples
+    --------
+    >>> mixed_venous_co2_content(47.0, 4.0)
+    51.0
+    """
+    return arterial_co2_content + venous_arterial_co2_difference
 
 
 @formula(

@@ -1,4 +1,4 @@
-"""Oxygen from the breathing gas to arterial blood along an exposure."""
+"""Oxygen and carbon dioxide from the breathing gas to mixed venous blood along an exposure."""
 
 from __future__ import annotations
 
@@ -16,9 +16,44 @@ from gasphys.exposure import Exposure
 from gasphys.gas_exchange.equations import arterial_po2_from_ratio
 from gasphys.person import Person
 from gasphys.policy import validity, weakest
-from gasphys.quantities import CAUTION, attributes
+from gasphys.quantities import CAUTION, attributes, quantity
 
-__all__ = ["calibrate", "oxygenation"]
+__all__ = ["ARTERIOVENOUS_BAND", "FLAGS", "MODELS", "calibrate", "oxygenation"]
+
+#: How arterial PO2 may follow from alveolar.
+MODELS = ("ratio", "shunt")
+
+#: Factors on the arteriovenous difference that make the band of mixed venous values: 4.5 to 6 mL/dL
+#: about the 5 of a person at rest.
+ARTERIOVENOUS_BAND = (0.9, 1.2)
+
+#: What the variable ``gas_exchange_flag`` tells.
+FLAGS = (
+    "none",
+    "negative_alveolar_po2",
+    "shunt_exceeds_content",
+    "difference_exceeds_content",
+    "venous_ph_outside_7.0_to_7.7",
+)
+
+_FLAG_TEXT = {
+    1: "a negative alveolar PO2: this gas cannot sustain life there",
+    2: "no arterial PO2: shunt times arteriovenous difference exceeds the end-capillary content",
+    3: "no mixed venous PO2: the arteriovenous difference exceeds the arterial content",
+    4: "no mixed venous values: venous pH outside 7.0 to 7.7, where CO2 content is known",
+}
+
+#: The default of :func:`calibrate`, told from a measured 15 g/dL by being this very object.
+_HEMOGLOBIN = float("15")
+
+_COMMON = ("arterial_pco2", "respiratory_exchange_ratio")
+_OF_MODEL = {"ratio": ("arterial_alveolar_ratio",), "shunt": ("shunt_fraction",)}
+_OF_BLOOD = ("hemoglobin", "arteriovenous_difference", "cardiac_output", "arterial_ph", "cohb_fraction")
+
+_CURVE = {"model": "severinghaus_1979"}
+
+#: Quantity of a variable where it is not that of its name.
+_QUANTITY = {"mixed_venous_o2_saturation": "venous_o2_saturation", "mixed_venous_pco2": "venous_pco2"}
 
 
 def calibrate(
@@ -26,7 +61,7 @@ def calibrate(
     arterial_po2: Any,
     fio2: Any,
     arterial_pco2: Any,
-    hemoglobin: float = 15.0,
+    hemoglobin: float = _HEMOGLOBIN,
     barometric_pressure: Any = 101.325,
 ) -> Person:
     """Describe a person's lungs from one bedside blood gas.
@@ -40,14 +75,15 @@ def calibrate(
     arterial_pco2 : float or str
         Measured arterial PCO2 [kPa].
     hemoglobin : float
-        Hemoglobin [g/dL].
+        Hemoglobin [g/dL]; assumed where it is not given.
     barometric_pressure : float or str
         Barometric pressure at the bedside [kPa absolute].
 
     Returns
     -------
     Person
-        With the measured values and ``arterial_alveolar_ratio``.
+        With the measured values, ``arterial_alveolar_ratio`` and ``shunt_fraction`` (R 0.8,
+        arteriovenous difference 5 mL/dL).
 
     Raises
     ------
@@ -63,22 +99,24 @@ def calibrate(
     Examples
     --------
     >>> person = calibrate(arterial_po2=25.3, fio2=0.40, arterial_pco2=5.2, barometric_pressure=101.0)
-    >>> round(person.arterial_alveolar_ratio, 2)
-    0.79
+    >>> round(person.arterial_alveolar_ratio, 2), round(person.shunt_fraction, 3)
+    (0.79, 0.036)
+    >>> person.is_measured("hemoglobin")
+    False
     """
     return Person.from_sample(
         arterial_po2=arterial_po2,
         fio2=fio2,
         arterial_pco2=arterial_pco2,
-        hemoglobin=hemoglobin,
         barometric_pressure=barometric_pressure,
+        **({} if hemoglobin is _HEMOGLOBIN else {"hemoglobin": hemoglobin}),
     )
 
 
 def oxygenation(
     exposure: Exposure, person: Person | None = None, model: str = "ratio", *, at: Any = None
 ) -> xr.Dataset:
-    """Alveolar and arterial oxygen of a person along an exposure.
+    """Oxygen and CO2 of a person along an exposure, from the breathing gas to mixed venous blood.
 
     Parameters
     ----------
@@ -86,16 +124,20 @@ def oxygenation(
         Pressure and breathing gas against time.
     person : Person, optional
         What is measured; what is not is assumed and named in the Dataset.
-    model : {"ratio"}
-        How arterial follows alveolar PO2.
+    model : {"ratio", "shunt", "both"}
+        How arterial follows alveolar PO2: a constant ratio (healthy lungs), a constant shunt (diseased
+        lungs), or both, on a dimension ``model``.
     at : array_like, optional
         Times to add to the exposure's own [min].
 
     Returns
     -------
     Dataset
-        On the exposure's ``time``: ``inspired_po2``, ``alveolar_po2``, ``arterial_po2``,
-        ``arterial_o2_saturation``, ``arterial_dissolved_o2``, ``arterial_o2_content``.
+        On the exposure's ``time``: ``inspired_po2``, ``alveolar_po2``, ``end_capillary_po2``,
+        ``arterial_po2`` and ``mixed_venous_po2`` with ``_low`` and ``_high``; saturations and contents;
+        ``arterial_dissolved_o2`` and ``dissolved_o2_share``; ``o2_delivery_stpd`` and ``o2_extraction``;
+        ``mixed_venous_pco2`` and ``venous_arterial_pco2_difference``; ``gas_exchange_flag``, which tells
+        of each NaN why.
 
     Raises
     ------
@@ -104,98 +146,325 @@ def oxygenation(
 
     Notes
     -----
-    Steady state at each instant: not during the wash-in or wash-out of inert gas. Arterial PCO2 is an
-    input and stays as given.
+    Steady state at each instant: not during the wash-in or wash-out of inert gas. Arterial PCO2 and pH
+    are inputs and stay as given; pH 7.40 where it was not measured, as in the compensated. Mixed venous
+    O2 and CO2 are solved together: venous pH shifts the O2 curve (Bohr), venous saturation changes CO2
+    content (Haldane). ``_low`` and ``_high`` are for 0.9 and 1.2 times the arteriovenous difference
+    (4.5 to 6 mL/dL about 5), arterial blood unchanged. Carbon monoxide takes hemoglobin away here; its
+    shift of the curve is not counted.
 
     Examples
     --------
     >>> session = Exposure.start("oxygen").travel(pressure="2.4 atm", minutes=10)
-    >>> float(oxygenation(session).alveolar_po2[-1].round(1))
+    >>> ds = oxygenation(session, model="both")
+    >>> float(ds.alveolar_po2[-1].round(1))
     231.6
+    >>> ds.arterial_po2.isel(time=-1).values.round()
+    array([190., 220.])
     """
-    if model not in ("ratio",):
-        raise unknown_name("gas exchange model", model, ("ratio",))
+    if model not in (*MODELS, "both"):
+        raise unknown_name("gas exchange model", model, (*MODELS, "both"))
     person = Person() if person is None else person
-    ds = exposure.to_dataset(at=at)
-    values = {name: person.value(name) for name in _USED}
-    po2, pressure = ds["breathing_gas_po2"], ds["ambient_pressure"]
-    # The fraction of what is breathed, on a loop too: dry PO2 over ambient pressure.
-    fraction = fraction_breathed(po2, pressure)
-    out = ds.copy()
-    out["fio2"] = fraction
+    chosen = MODELS if model == "both" else (model,)
+    used = (*_COMMON, *(n for m in chosen for n in _OF_MODEL[m]), *_OF_BLOOD)
+    values = {name: person.value(name) for name in used}
+    out = exposure.to_dataset(at=at)
+    chain = _Chain(out)
     with validity("ignore"):
-        out["inspired_po2"] = lungs.inspired_po2(pressure, fraction)
-        out["alveolar_po2"] = lungs.alveolar_po2(
-            pressure,
-            fraction,
-            values["arterial_pco2"],
-            values["respiratory_exchange_ratio"],
-        )
-        out["arterial_po2"] = arterial_po2_from_ratio(
-            out["alveolar_po2"], values["arterial_alveolar_ratio"]
-        )
-        arterial = out["arterial_po2"].where(out["arterial_po2"] >= 0.0).assign_attrs(units="kPa")
-        out["arterial_o2_saturation"] = blood.o2_saturation(arterial)
-        out["arterial_dissolved_o2"] = blood.dissolved_o2(arterial)
-        out["arterial_o2_content"] = blood.o2_content(arterial, values["hemoglobin"])
-    inputs: dict[str, dict[str, Any]] = {
-        "fio2": {"breathing_gas_po2": "@breathing_gas_po2", "ambient_pressure": "@ambient_pressure"},
-        "inspired_po2": {
-            "ambient_pressure": "@ambient_pressure",
-            "fio2": "@fio2",
-            "water_vapor_pressure": float(BODY_VAPOR_PRESSURE),
-        },
-        "alveolar_po2": {
-            "ambient_pressure": "@ambient_pressure",
-            "fio2": "@fio2",
-            "alveolar_pco2": values["arterial_pco2"],
-            "respiratory_exchange_ratio": values["respiratory_exchange_ratio"],
-            "fico2": 0.0,
-            "water_vapor_pressure": float(BODY_VAPOR_PRESSURE),
-        },
-        "arterial_po2": {
-            "alveolar_po2": "@alveolar_po2",
-            "ratio": values["arterial_alveolar_ratio"],
-        },
-        "arterial_o2_saturation": {"po2": "@arterial_po2", "model": "severinghaus_1979"},
-        "arterial_dissolved_o2": {"po2": "@arterial_po2"},
-        "arterial_o2_content": {
-            "po2": "@arterial_po2",
-            "hemoglobin": values["hemoglobin"],
-            "model": "severinghaus_1979",
-        },
-    }
-    equations = {
-        "fio2": "breathing_gas.fraction_breathed",
-        "inspired_po2": "lungs.inspired_po2",
-        "alveolar_po2": "lungs.alveolar_po2",
-        "arterial_po2": "gas_exchange.arterial_po2_from_ratio",
-        "arterial_o2_saturation": "blood.o2_saturation",
-        "arterial_dissolved_o2": "blood.dissolved_o2",
-        "arterial_o2_content": "blood.o2_content",
-    }
-    for name, equation in equations.items():
-        kept = {k: v for k, v in out[name].attrs.items() if k in ("references", "provenance")}
-        out[name].attrs = {
-            **attributes(name),
-            **kept,
-            "equation": equation,
-            "inputs": json.dumps(inputs[name]),
-        }
-    low = int(np.count_nonzero(out["alveolar_po2"].values < 0.0))
+        _to_alveolus(chain, values)
+        _to_artery(chain, values, chosen, both=model == "both")
+        _to_vein(chain, values)
+        _flag(out)
+    texts = _texts(out, values, chosen, both=model == "both")
     out.attrs = {
-        **ds.attrs,
-        "title": "oxygen from breathing gas to arterial blood",
-        "source": ds.attrs["source"].replace(", exposure", f", gas exchange model {model}"),
-        "references": "fenn_rahn_otis_1946; gilbert_keighley_1974; severinghaus_1979; o2_capacity_texts",
-        "assumed": ", ".join(f"{n} = {values[n]:g}" for n in _USED if not person.is_measured(n)),
-        "measured": ", ".join(f"{n} = {values[n]:g}" for n in _USED if person.is_measured(n)),
-        "provenance": weakest([out[n].attrs["provenance"] for n in equations]),
+        **out.attrs,
+        "title": "oxygen from breathing gas to mixed venous blood",
+        "source": out.attrs["source"].replace(", exposure", f", gas exchange model {model}"),
+        "references": "; ".join(dict.fromkeys(chain.references)),
+        "assumed": ", ".join(f"{n} = {values[n]:g}" for n in used if not person.is_measured(n)),
+        "measured": ", ".join(f"{n} = {values[n]:g}" for n in used if person.is_measured(n)),
+        "arteriovenous_band": [f * values["arteriovenous_difference"] for f in ARTERIOVENOUS_BAND],
+        "provenance": weakest(chain.provenance),
         "comment": CAUTION,
     }
-    if low:
-        out.attrs["flags"] = f"{low} instants with a negative alveolar PO2: this gas cannot sustain life there"
+    if texts:
+        out.attrs["flags"] = "; ".join(texts)
     return out
 
 
-_USED = ("arterial_pco2", "respiratory_exchange_ratio", "arterial_alveolar_ratio", "hemoglobin")
+class _Chain:
+    """Evaluate equations on a dataset and write down, for each variable, equation and inputs."""
+
+    def __init__(self, ds: xr.Dataset) -> None:
+        self.ds = ds
+        self.references: list[str] = []
+        self.provenance: list[str] = []
+
+    def put(self, name: str, equation: str, f: Any, **inputs: Any) -> None:
+        """Add a variable; an input ``"@x"`` is the variable x of the dataset."""
+        given = {k: self.ds[v[1:]] if _is_name(v) else v for k, v in inputs.items()}
+        result = f(**given)
+        if not isinstance(result, xr.DataArray):
+            # From numbers alone: one value for the whole exposure.
+            result = xr.DataArray(result)
+            result.attrs = {"references": "; ".join(f.sources), "provenance": f.provenance}
+        self.keep(name, result, equation, inputs)
+
+    def keep(self, name: str, result: xr.DataArray, equation: str, inputs: dict[str, Any]) -> None:
+        """Store a result under its own attributes."""
+        known = {k: v for k, v in result.attrs.items() if k in ("references", "provenance")}
+        self.references += known["references"].split("; ")
+        self.provenance.append(known["provenance"])
+        base, _, end = name.rpartition("_")
+        base = base if end in ("low", "high") else name
+        attrs = attributes(_QUANTITY.get(base, base))
+        if base != name:
+            attrs["long_name"] += f", {end} end of the band"
+        self.ds[name] = result
+        self.ds[name].attrs = {**attrs, **known, "equation": equation, "inputs": json.dumps(inputs)}
+
+
+def _is_name(value: Any) -> bool:
+    return isinstance(value, str) and value.startswith("@")
+
+
+def _to_alveolus(chain: _Chain, values: dict[str, float]) -> None:
+    vapor = float(BODY_VAPOR_PRESSURE)
+    pressure = {"ambient_pressure": "@ambient_pressure"}
+    # The fraction of what is breathed, on a loop too: dry PO2 over ambient pressure.
+    chain.put(
+        "fio2",
+        "breathing_gas.fraction_breathed",
+        fraction_breathed,
+        breathing_gas_po2="@breathing_gas_po2",
+        **pressure,
+    )
+    chain.put(
+        "inspired_po2",
+        "lungs.inspired_po2",
+        lungs.inspired_po2,
+        **pressure,
+        fio2="@fio2",
+        water_vapor_pressure=vapor,
+    )
+    alveolar = {
+        **pressure,
+        "fio2": "@fio2",
+        "alveolar_pco2": values["arterial_pco2"],
+        "respiratory_exchange_ratio": values["respiratory_exchange_ratio"],
+        "fico2": 0.0,
+        "water_vapor_pressure": vapor,
+    }
+    for name in ("alveolar_po2", "end_capillary_po2"):  # the ideal alveolus: in equilibrium
+        chain.put(name, "lungs.alveolar_po2", lungs.alveolar_po2, **alveolar)
+
+
+def _to_artery(chain: _Chain, values: dict[str, float], chosen: tuple[str, ...], both: bool) -> None:
+    chain.put(
+        "functional_hemoglobin",
+        "blood.functional_hemoglobin",
+        blood.functional_hemoglobin,
+        hemoglobin=values["hemoglobin"],
+        cohb_fraction=values["cohb_fraction"],
+    )
+    ph = values["arterial_ph"]
+    hemoglobin = float(chain.ds["functional_hemoglobin"])
+    chain.put(
+        "end_capillary_o2_content",
+        "blood.o2_content",
+        blood.o2_content,
+        po2="@end_capillary_po2",
+        hemoglobin="@functional_hemoglobin",
+        **_CURVE,
+        ph=ph,
+    )
+    inputs: dict[str, dict[str, Any]] = {
+        "ratio": {"ratio": values.get("arterial_alveolar_ratio")},
+        "shunt": {
+            "shunt_fraction": values.get("shunt_fraction"),
+            "hemoglobin": hemoglobin,
+            "arteriovenous_difference": values["arteriovenous_difference"],
+            "ph": ph,
+        },
+    }
+    equations = {
+        "ratio": ("gas_exchange.arterial_po2_from_ratio", arterial_po2_from_ratio),
+        "shunt": ("blood.arterial_po2_from_shunt", blood.arterial_po2_from_shunt),
+    }
+    found = [equations[m][1](alveolar_po2=chain.ds["alveolar_po2"], **inputs[m]) for m in chosen]
+    arterial = found[0]
+    if both:
+        arterial = xr.concat(found, dim=xr.DataArray(list(chosen), dims="model", name="model"))
+        arterial.attrs = {
+            "references": "; ".join(dict.fromkeys(f.attrs["references"] for f in found)),
+            "provenance": weakest([f.attrs["provenance"] for f in found]),
+        }
+    chain.keep(
+        "arterial_po2",
+        arterial,
+        " | ".join(equations[m][0] for m in chosen),
+        {"alveolar_po2": "@alveolar_po2", **{k: v for m in chosen for k, v in inputs[m].items()}},
+    )
+    state = {"po2": "@arterial_po2", **_CURVE, "ph": ph}
+    chain.put("arterial_o2_saturation", "blood.o2_saturation", blood.o2_saturation, **state)
+    chain.put("arterial_dissolved_o2", "blood.dissolved_o2", blood.dissolved_o2, po2="@arterial_po2")
+    chain.put(
+        "arterial_o2_content",
+        "blood.o2_content",
+        blood.o2_content,
+        hemoglobin="@functional_hemoglobin",
+        **state,
+    )
+    content = {"arterial_o2_content": "@arterial_o2_content"}
+    chain.put(
+        "dissolved_o2_share",
+        "blood.dissolved_o2_share",
+        blood.dissolved_o2_share,
+        po2="@arterial_po2",
+        o2_content="@arterial_o2_content",
+    )
+    chain.put(
+        "o2_delivery_stpd",
+        "blood.o2_delivery",
+        blood.o2_delivery,
+        cardiac_output=values["cardiac_output"],
+        **content,
+    )
+    chain.put(
+        "o2_extraction",
+        "blood.o2_extraction",
+        blood.o2_extraction,
+        arteriovenous_difference=values["arteriovenous_difference"],
+        **content,
+    )
+
+
+def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
+    hemoglobin = values["hemoglobin"]
+    arterial = {
+        "pco2": values["arterial_pco2"],
+        "ph": values["arterial_ph"],
+        "hemoglobin": hemoglobin,
+        "o2_saturation": "@arterial_o2_saturation",
+    }
+    chain.put("base_excess", "blood.base_excess", blood.base_excess, **arterial)
+    chain.put(
+        "arterial_co2_content",
+        "blood.co2_content",
+        blood.co2_content,
+        **arterial,
+        model="douglas_1988",
+    )
+    difference = values["arteriovenous_difference"]
+    for end, factor in (
+        ("", 1.0),
+        ("_high", ARTERIOVENOUS_BAND[0]),
+        ("_low", ARTERIOVENOUS_BAND[1]),
+    ):
+        taken = difference * factor
+        chain.put(
+            f"mixed_venous_o2_content{end}",
+            "blood.mixed_venous_o2_content",
+            blood.mixed_venous_o2_content,
+            arterial_o2_content="@arterial_o2_content",
+            arteriovenous_difference=taken,
+        )
+        load = blood.co2_load(values["respiratory_exchange_ratio"], taken)
+        # The flow that gives less O2 off takes less CO2 up: high O2 goes with low CO2.
+        other = {"": "", "_high": "_low", "_low": "_high"}[end]
+        chain.put(
+            f"mixed_venous_co2_content{other}",
+            "blood.mixed_venous_co2_content",
+            blood.mixed_venous_co2_content,
+            arterial_co2_content="@arterial_co2_content",
+            venous_arterial_co2_difference=load,
+        )
+        chain.put(
+            f"mixed_venous_ph{end}",
+            "blood.mixed_venous_ph",
+            blood.mixed_venous_ph,
+            mixed_venous_co2_content=f"@mixed_venous_co2_content{other}",
+            base_excess="@base_excess",
+            hemoglobin=hemoglobin,
+            mixed_venous_o2_content=f"@mixed_venous_o2_content{end}",
+            functional_hemoglobin="@functional_hemoglobin",
+        )
+        chain.put(
+            f"mixed_venous_po2{end}",
+            "blood.po2_at_content",
+            blood.po2_at_content,
+            content=f"@mixed_venous_o2_content{end}",
+            hemoglobin="@functional_hemoglobin",
+            **_CURVE,
+            ph=f"@mixed_venous_ph{end}",
+        )
+    chain.put(
+        "mixed_venous_o2_saturation",
+        "blood.o2_saturation",
+        blood.o2_saturation,
+        po2="@mixed_venous_po2",
+        **_CURVE,
+        ph="@mixed_venous_ph",
+    )
+    chain.put(
+        "mixed_venous_pco2",
+        "blood.pco2_at_base_excess",
+        blood.pco2_at_base_excess,
+        base_excess="@base_excess",
+        ph="@mixed_venous_ph",
+        hemoglobin=hemoglobin,
+        o2_saturation="@mixed_venous_o2_saturation",
+    )
+    chain.put(
+        "venous_arterial_pco2_difference",
+        "blood.venous_arterial_pco2_difference",
+        blood.venous_arterial_pco2_difference,
+        venous_pco2="@mixed_venous_pco2",
+        arterial_pco2=values["arterial_pco2"],
+    )
+
+
+def _flag(ds: xr.Dataset) -> None:
+    """Say of each NaN why: the first of the reasons along the chain."""
+    venous = ds["mixed_venous_o2_content_low"]
+    reasons = [
+        ds["alveolar_po2"] < 0.0,
+        ds["arterial_po2"].isnull(),
+        ~(venous >= 0.0),
+        ds["mixed_venous_ph"].isnull() | ds["mixed_venous_ph_low"].isnull(),
+    ]
+    flag = xr.zeros_like(ds["arterial_po2"], dtype=np.int8)
+    for code, reason in reversed(list(enumerate(reasons, start=1))):
+        flag = xr.where(reason, np.int8(code), flag).astype(np.int8)
+    ds["gas_exchange_flag"] = flag.transpose(*ds["arterial_po2"].dims)
+    ds["gas_exchange_flag"].attrs = {
+        "long_name": "why values are missing",
+        "flag_values": list(range(len(FLAGS))),
+        "flag_meanings": " ".join(FLAGS),
+    }
+
+
+def _texts(ds: xr.Dataset, values: dict[str, float], chosen: tuple[str, ...], both: bool) -> list[str]:
+    flag = ds["gas_exchange_flag"]
+    texts = []
+    for code, text in _FLAG_TEXT.items():
+        hit = flag == code
+        if bool(hit.any()):
+            where = ""
+            if both:
+                names = [m for m in chosen if bool(hit.sel(model=m).any())]
+                hit = hit.any("model")
+                where = "" if len(names) == 2 else f" (model {names[0]})"
+            texts.append(f"{int(hit.sum())} instants with {text}{where}")
+    ratio = values.get("arterial_alveolar_ratio")
+    if ratio is not None and ratio < 0.75:
+        text = f"arterial/alveolar ratio {ratio:.2f} is below 0.75, where it did not carry over to pressure"
+        text += "; the models part" if both else "; see the shunt model"
+        texts.append(text)
+    shunt = values.get("shunt_fraction")
+    if values["cohb_fraction"] > 0.0:
+        texts.append("carbon monoxide: the shift of the O2 curve is not counted, venous PO2 is lower")
+    low, high = quantity("shunt_fraction").usual
+    if shunt is not None and not low <= shunt <= high:
+        texts.append(f"shunt {shunt:.2f} is beyond the {high:g} that the model is used for")
+    return texts

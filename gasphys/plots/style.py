@@ -52,7 +52,7 @@ def new_figure(width: float = 8.0, height: float = 5.0) -> Any:
 
     Examples
     --------
-    >>> new_figure().get_size_inches()[0]
+    >>> float(new_figure().get_size_inches()[0])
     8.0
     """
     from matplotlib.figure import Figure

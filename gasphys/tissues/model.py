@@ -225,13 +225,31 @@ def check_gases(model: TissueSet, pieces: Pieces, shape: tuple[int, ...]) -> NDA
         if bad.all():
             raise ValidityError(message)
         outside_validity(f"{message}; {int(bad.sum())} of {bad.size} scenarios are nan")
-    words = [model.provenance_of[g] for g in _present(model, pieces)]
+    words = [model.provenance_of[g] for g in present(model, pieces)]
     require_provenance(weakest(words), f"tissue model {model.name}")
     return bad
 
 
-def _present(model: TissueSet, pieces: Pieces) -> list[str]:
-    """Return the tracked gases an exposure contains; the first always."""
+def present(model: TissueSet, pieces: Pieces) -> list[str]:
+    """Return the tracked gases an exposure contains; the first always.
+
+    Parameters
+    ----------
+    model : TissueSet
+        The set.
+    pieces : Pieces
+        The exposure's pieces.
+
+    Returns
+    -------
+    list of str
+        Names of :attr:`TissueSet.inert_gases`.
+
+    Examples
+    --------
+    >>> present(load("buhlmann_1995_c"), Exposure.start("air").stay(1).pieces())
+    ['N2']
+    """
     inert = breath_of(model, pieces).inert
     return [g for k, g in enumerate(model.inert_gases) if k == 0 or (inert[..., k] > 0.0).any()]
 
@@ -342,7 +360,7 @@ def _dataset(run: _Run) -> xr.Dataset:
 
     model, exposure, view, dim, judged = run.model, run.exposure, run.view, run.dim, run.judged
     lead = exposure.dims
-    provenance = weakest([model.provenance_of[g] for g in _present(model, exposure.pieces())])
+    provenance = weakest([model.provenance_of[g] for g in present(model, exposure.pieces())])
     more = {"provenance": provenance, "references": model.source}
     ds = xr.Dataset(
         coords={

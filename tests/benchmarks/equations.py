@@ -26,8 +26,7 @@ SIZE = 1_000_000
 def _best(call: Callable[[], Any], repeat: int = 15) -> float:
     """Return the shortest time of one call [s]."""
     timer = timeit.Timer(call)
-    number, _ = timer.autorange()
-    number = max(1, number // 10)
+    number = max(1, int(2e-3 / max(timer.timeit(1), 1e-7)))
     return min(timer.repeat(repeat, number)) / number
 
 
@@ -130,7 +129,9 @@ def array_ratios() -> dict[str, tuple[float, float]]:
 def main() -> None:
     """Print every ratio beside its aim."""
     alone, used = import_ratio()
-    print(f"import gasphys / import xarray: {alone:.3f}; with the equations and Exposure: {used:.2f} (aim 1.1)")
+    print(
+        f"import gasphys / import xarray: {alone:.3f}; with the equations and Exposure: {used:.2f} (aim 1.1)"
+    )
     print(f"\none million elements against bare numpy\n{'equation':<32}{'ratio':>7}{'aim':>6}")
     for name, (ratio, aim) in array_ratios().items():
         print(f"{name:<32}{ratio:7.2f}{aim:6.1f}")
@@ -144,7 +145,9 @@ def main() -> None:
         print(f"  beyond the aim: {name:<60}{ratio:6.1f}")
     times = solve_times()
     slow = {k: v for k, v in times.items() if v > 0.05}
-    print(f"\nsolve_for after a first call: median {1e3 * statistics.median(times.values()):.2f} ms (aim 50 ms)")
+    print(
+        f"\nsolve_for after a first call: median {1e3 * statistics.median(times.values()):.2f} ms (aim 50 ms)"
+    )
     for name, seconds in sorted(slow.items(), key=lambda item: -item[1]):
         print(f"  beyond the aim: {name:<60}{1e3 * seconds:6.0f} ms")
 

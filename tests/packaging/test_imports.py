@@ -38,11 +38,10 @@ FLOORS = """
     lungs blood
     person limits
     records exposure schedules
-    explanation
     gas_exchange breathing tissues doses
     bubbles risk
     ascent supply
-    reviews comparison report
+    reviews comparison explanation report
     scenarios strategies chamber
     plots widgets __main__
 """

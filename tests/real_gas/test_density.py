@@ -202,25 +202,3 @@ def test_a_mean_of_the_pure_values_would_be_wrong() -> None:
         pure = sum(x * real_gas.second_virial(*spread(**{gas: 1.0}), 25.0) for gas, x in fractions.items())
         assert pure == pytest.approx(linear, abs=5e-4)
         assert abs(real_gas.second_virial(*spread(**fractions), 25.0) - linear) > 0.1
-
-
-def test_double_sum_written_out() -> None:
-    """The excess form equals the double sum over all pairs, unlisted ones with the mean."""
-    from gasphys.real_gas.data import data
-
-    rng = np.random.default_rng(5)
-    file = data("virial")
-    listed = {frozenset(row["gases"]): row["B"] for row in file["cross"]}
-    for temperature in (-10.0, 20.0, 45.0):
-        xi = 298.15 / (temperature + 273.15) - 1.0
-        pure = {g: np.polynomial.polynomial.polyval(xi, row["B"]) for g, row in file["pure"].items()}
-        x = dict(zip(FORMULAS, rng.dirichlet(np.ones(7)), strict=True))
-        total = 0.0
-        for a in FORMULAS:
-            for b in FORMULAS:
-                mean = 0.5 * (pure[a] + pure[b])
-                series = listed.get(frozenset((a, b)))
-                cross = mean if series is None else np.polynomial.polynomial.polyval(xi, series)
-                total += x[a] * x[b] * cross
-        with gp.validity("ignore"):
-            assert real_gas.second_virial(*spread(**x), temperature) == pytest.approx(total, rel=1e-12)
