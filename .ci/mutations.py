@@ -32,12 +32,12 @@ TESTS = {
     "gasphys/limits": ["tests/data/test_transcriptions.py", "tests/floors/test_review.py", "tests/doses"],
     "gasphys/schedules": ["tests/data/test_transcriptions.py", "tests/floors/test_doses_along.py"],
     "gasphys/person_defaults": ["tests/data/test_transcriptions.py", "tests/floors/test_person.py"],
-    "gasphys/dry_air": ["tests/data", "tests/floors/test_exposure.py"],
+    "gasphys/dry_air": ["tests/data/test_words.py", "tests/floors/test_exposure.py"],
     "gasphys/constants": [
         "rows laws. lungs. blood. surroundings.",
-        "tests/data",
-        "tests/twins",
         "rows real_gas. doses.",
+        "tests/data/test_words.py",
+        "tests/twins/test_surroundings.py",
     ],
     "gasphys/real_gas": ["rows real_gas.", "tests/real_gas"],
     "gasphys/doses": ["rows doses.", "tests/doses", "tests/properties/test_doses.py"],
@@ -46,9 +46,22 @@ TESTS = {
     "gasphys/lungs": ["rows lungs.", "tests/lungs_and_blood", "tests/properties/test_lungs_and_blood.py"],
     "gasphys/vapor": ["rows lungs. vapor.", "tests/lungs_and_blood", "tests/twins"],
     "gasphys/breathing_gas": ["rows breathing_gas.", "tests/properties/test_floor_equations.py"],
-    "gasphys/gas_exchange": ["rows gas_exchange.", "tests/gas_exchange", "tests/properties"],
-    "gasphys/laws": ["rows laws.", "tests/properties"],
-    "gasphys/surroundings": ["rows surroundings.", "tests/properties", "tests/twins"],
+    "gasphys/gas_exchange": [
+        "rows gas_exchange.",
+        "tests/gas_exchange",
+        "tests/properties/test_gas_exchange.py",
+    ],
+    "gasphys/laws": [
+        "rows laws.",
+        "tests/properties/test_laws_and_surroundings.py",
+        "tests/properties/test_floor_equations.py",
+    ],
+    "gasphys/surroundings": [
+        "rows surroundings.",
+        "tests/properties/test_laws_and_surroundings.py",
+        "tests/properties/test_floor_equations.py",
+        "tests/twins/test_surroundings.py",
+    ],
 }
 
 #: Files whose equations and numbers are broken.

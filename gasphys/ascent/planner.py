@@ -32,6 +32,8 @@ Mask = NDArray[np.bool_]
 
 #: Minutes looked at together; after each row that fails the next is longer.
 _FIRST_ROW, _LONGEST_ROW = 16, 256
+#: Most states held at once, scenarios times minutes: bounds the memory.
+_STATES = 2**15
 #: Longest stop looked for, in half-times of the slowest compartment: by then nothing moves any more.
 _PATIENCE = 40.0
 
@@ -135,19 +137,20 @@ def plan(
 
     Notes
     -----
-    Stops stand on the grid last stop + n spacing. One goes up one step when the model's limit for that step is
-    met: before leaving, or on arrival (exchange of the travel counted), as the set says. The gas at a depth is
-    the listed one with the shallowest deepest depth that is not shallower than it; it is switched to on
-    passing that depth, also without a stop. With two gradients the first stop is found with the low one and
-    kept; a dive that needs no stop by the high one gets none. In a batch an ascent that cannot be planned is
-    NaN with a warning. Not a table, not tested in the water; nothing here knows bubbles, work or cold.
+    Stops stand on the grid last stop + n spacing. One goes up one step when the model's limit for that step
+    is met: before leaving, or on arrival (exchange of the travel counted), as the set says. The gas at a
+    depth is the listed one with the shallowest deepest depth that is not shallower than it; it is switched to
+    on passing that depth, also without a stop. A dive within the no-stop time (by the high gradient) gets no
+    stop. With two gradients the first stop is found with the low one and kept. In a batch an ascent that
+    cannot be planned is NaN with a warning. Not a table, not tested in the water; nothing here knows bubbles,
+    work or cold.
 
     Examples
     --------
     >>> bottom = Exposure.start("air").travel(depth=40, rate=20).stay(20)
     >>> found = plan(bottom)
     >>> found.stops.depth.values.tolist(), found.stops.duration.values.tolist()
-    ([9.0, 6.0, 3.0], [1.0, 4.0, 11.0])
+    ([6.0, 3.0], [2.0, 8.0])
     """
     chosen = load(model)
     if not exposure.part:
@@ -186,7 +189,7 @@ def _straightened(legs: list[_Leg]) -> list[_Leg]:
 
 @dataclass
 class _Planner:
-    """Plans scenarios ("lanes") in lockstep: all take the steps of one grid, each waits as long as it must."""
+    """Plans scenarios ("lanes") in lockstep on one grid; each waits as long as it must."""
 
     exposure: Exposure
     sources: tuple[Source, ...]
@@ -342,10 +345,8 @@ class _Planner:
             self._travel(moving, target)
 
     def _no_stop(self) -> Mask:
-        """Return which lanes need no stop by the high gradient; only asked where the two differ."""
+        """Return which lanes need no stop, by the high gradient: the same question as the no-stop time."""
         lanes = np.arange(len(self.depth))
-        if self.rules.gradient_low == self.rules.gradient_high:
-            return np.zeros(len(lanes), dtype=bool)
         high = np.full(len(lanes), self.rules.gradient_high)
         good = np.ones(len(lanes), dtype=bool)
         if "before_leaving" in self.model.tested:
@@ -423,6 +424,8 @@ class _Planner:
 
     def _travel(self, moving: Mask, target: float) -> None:
         lanes = np.flatnonzero(moving)
+        if not lanes.size:
+            return
         for minutes, start, end, rows in self._path(lanes, self.depth[lanes], np.full(len(lanes), target)):
             self.state[lanes] = advance(
                 self.model, self.state[lanes], minutes, start, end, self._breath(rows, lanes)
@@ -445,6 +448,10 @@ class _Planner:
         lanes = np.flatnonzero(moving & ~self.direct)
         if not lanes.size:
             return
+        if self.model.surfacing_only:
+            why = f"{self.model.name} gives no stops: only surfacing values were published"
+            self._fail(self._mask(lanes), why)
+            return
         there = self._pressure(np.full(len(self.depth), target))
         low = np.full(len(self.depth), self.rules.gradient_low)
         over, _ = self._step_excess(lanes, self.state[lanes], target, there, low)
@@ -456,14 +463,9 @@ class _Planner:
         gradient = gradient_at_depth.raw(
             target, np.nan_to_num(self.first, nan=0.0), self.rules.gradient_low, self.rules.gradient_high
         )
-        over, worst = self._step_excess(stopped, self.state[stopped], target, there, gradient)
+        over, _ = self._step_excess(stopped, self.state[stopped], target, there, gradient)
         waiting = stopped[over > 0.0]
         if not waiting.size:
-            return
-        if self.model.surfacing_only:
-            self._fail(
-                self._mask(waiting), f"{self.model.name} gives no stops: only surfacing values were published"
-            )
             return
         minutes = self._search(waiting, target, there, gradient)
         lost = np.isnan(minutes)
@@ -495,7 +497,7 @@ class _Planner:
     def _step_excess(
         self, lanes: NDArray[np.int64], state: Array, target: float, there: Array, gradient: Array
     ) -> tuple[Array, NDArray[np.int64]]:
-        """Return by how much the step up is not allowed [kPa], as the set tests it; states ``(lane, ...)``."""
+        """Return by how much the step up is not allowed [kPa], as the set tests it, and what holds it."""
         extra = state.ndim - 3
         pressure = there[lanes].reshape(-1, *(1,) * extra)
         share = gradient[lanes].reshape(-1, *(1,) * extra)
@@ -537,6 +539,7 @@ class _Planner:
         state = self.state[lanes]
         while todo.size and done < patience:
             some = lanes[todo]
+            size = max(4, min(size, _STATES // todo.size))
             minutes = done + step * np.arange(1.0, size + 1.0)
             p = self.pressure[some][:, None]
             breath = self._breath(self.gas[some], some)
@@ -619,28 +622,26 @@ class _Planner:
         return found
 
     def _explain(self, lanes: NDArray[np.int64], target: float, there: Array, gradient: Array) -> None:
-        """Say why a stop never ends."""
-        model, unit = self.model, self.exposure.depth_unit
-        for lane in lanes:
-            one = np.array([lane])
-            breath = self._breath(self.gas[one], one)
-            if model.kinetics == "serial":
-                steady = np.broadcast_to(self.pressure[one][:, None, None], (1, *model.half_time.shape))
-            else:
-                inert = inert_pressure(model, self.pressure[one], breath)
-                steady = np.broadcast_to(inert[:, None, :], (1, *model.half_time.shape))
-            over, worst = self._step_excess(one, steady, target, there, gradient)
-            self._fail(
-                self._mask(one),
-                f"{model.name}: from {self.depth[lane]:g} {unit} on {self._gas_name(int(lane))} the step to {target:g} {unit} "
-                f"is never allowed: compartment {model.compartments[int(worst[0])]} would end {float(over[0]):.1f} kPa "
-                "over its limit. A gas with less inert gas, or a shallower last stop, would be needed",
-            )
+        """Give up stops that never end, and say of the first of them what holds it."""
+        model, unit, one = self.model, self.exposure.depth_unit, lanes[:1]
+        if model.kinetics == "serial":
+            inert = self.pressure[one][:, None]
+        else:
+            inert = inert_pressure(model, self.pressure[one], self._breath(self.gas[one], one))
+        steady = np.broadcast_to(inert[:, None, :], (1, *model.half_time.shape))
+        over, worst = self._step_excess(one, steady, target, there, gradient)
+        name = model.compartments[int(worst[0])]
+        self._fail(
+            self._mask(lanes),
+            f"{model.name}: from {self.depth[one[0]]:g} {unit} on {self._gas_name(int(one[0]), int(self.gas[one[0]]))} the step to "
+            f"{target:g} {unit} is never allowed: compartment {name} would end {float(over[0]):.1f} kPa over "
+            "its limit. A gas with less inert gas, or a shallower last stop, would be needed",
+        )
 
     # -- The result ----------------------------------------------------------------------------
 
-    def _gas_name(self, lane: int) -> str:
-        row = int(self.gas[lane])
+    def _gas_name(self, lane: int, row: int) -> str:
+        """Return the name of what a lane breathes in a row of the gases."""
         if row:
             return self.sources[row - 1].name
         mix = {FORMULAS[g]: float(v[lane]) for g, v in self.mixes[0].items() if g != "N2"}
@@ -648,13 +649,20 @@ class _Planner:
         name = str(Gas(**mix))
         return name if np.isnan(setpoint) else f"loop at {setpoint:.4g} kPa, diluent {name}"
 
+    def _names(self) -> NDArray[np.object_]:
+        """Return the names of all gases, ``(row, lane)``; equal mixes of the bottom are named once."""
+        bottom = np.stack([*self.mixes[0].values(), np.nan_to_num(self.setpoints[0], nan=-1.0)], axis=-1)
+        _, first, back = np.unique(bottom, axis=0, return_index=True, return_inverse=True)
+        own = np.array([self._gas_name(int(k), 0) for k in first], dtype=object)[back.ravel()]
+        listed = [np.full(len(own), source.name, dtype=object) for source in self.sources]
+        return np.stack([own, *listed])
+
     def _note(self, moving: Mask, minutes: Array, control: Any, margin: Array) -> None:
-        names = np.array([self._gas_name(k) for k in range(len(self.depth))], dtype=object)
         self.rows.append(
             {
                 "depth": np.where(moving, self.depth, np.nan),
                 "duration": np.where(moving, minutes, 0.0),
-                "gas": names,
+                "gas": self.gas.copy(),
                 "control": np.asarray(control),
                 "margin": margin,
                 "leave": self.clock.copy(),
@@ -767,18 +775,21 @@ class _Planner:
         control = stack("control", int) if rows else np.empty((*self.shape, 0), dtype=int)
         unit = {"m": "depth", "msw": "depth_msw", "fsw": "depth_fsw"}[exposure.depth_unit]
         known = weakest([model.provenance_of[g] for g in present(model, whole.pieces())])
-        ds = xr.Dataset(
-            {
-                "depth": (dims, stack("depth"), attributes(unit) | {"long_name": "depth of the stop"}),
-                "duration": (dims, stack("duration"), attributes("duration") | {"long_name": "time at the stop, travel not counted"}),
-                "gas": (dims, stack("gas", object).astype(str), {"long_name": "gas breathed on leaving"}),
-                "leave_time": (dims, stack("leave") + bottom_time.reshape(self.shape)[..., None], attributes("time") | {"long_name": "time of leaving since the start"}),
-                "controlling_compartment": (dims, names[control], {"long_name": "compartment that held the stop; empty: a switch did"}),
-                "controlling_half_time": (dims, halves[control], attributes("half_time") | {"long_name": f"half-time in control, for {model.inert_gases[0]}"}),
-                "margin": (dims, stack("margin"), {"units": "kPa", "long_name": "what the worst compartment had left to its limit of the next depth on leaving"}),
-            },
-            coords={"stop": np.arange(len(rows)), **exposure.coords},
-        )  # fmt: skip
+        row = stack("gas", int).reshape(-1, len(rows)) if rows else np.empty((len(self.depth), 0), dtype=int)
+        gas = self._names()[row, np.arange(len(self.depth))[:, None]].astype(str)
+        leave = stack("leave") + bottom_time.reshape(self.shape)[..., None]
+        margin = "what the worst compartment had left to its limit of the next depth on leaving"
+        ds = xr.Dataset(coords={"stop": np.arange(len(rows)), **exposure.coords})
+        for name, values, attrs, meaning in (
+            ("depth", stack("depth"), attributes(unit), "depth of the stop"),
+            ("duration", stack("duration"), attributes("duration"), "time at the stop, travel not counted"),
+            ("gas", gas.reshape(control.shape), {}, "gas breathed on leaving"),
+            ("leave_time", leave, attributes("time"), "time of leaving since the start"),
+            ("controlling_compartment", names[control], {}, "what held the stop; empty: a switch did"),
+            ("controlling_half_time", halves[control], attributes("half_time"), "half-time in control"),
+            ("margin", stack("margin"), {"units": "kPa"}, margin),
+        ):
+            ds[name] = (dims, values, attrs | {"long_name": meaning})
         ds.attrs = {
             "Conventions": "CF-1.11",
             "title": f"stops of an ascent by the model {model.name}",

@@ -1,4 +1,4 @@
-"""A slow planner in steps of one second: everything written out again, nothing shared with the library but numbers."""
+"""A slow planner in steps of one second: everything written out again, only numbers shared."""
 
 from __future__ import annotations
 
@@ -69,7 +69,7 @@ class Oracle:
         """Return the stops as (depth, minutes), deepest first."""
         stops: list[tuple[float, float]] = []
         first: float | None = None
-        if self.low < self.high and self._surface_at_once(depth, bottom, gases):
+        if self._surface_at_once(depth, bottom, gases):
             self._travel(depth, 0.0, bottom, gases)
             return stops
         while depth > 0.0:

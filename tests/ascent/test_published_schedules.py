@@ -65,7 +65,7 @@ REFUSED = {("120", "25"), ("130", "20"), ("140", "15"), ("140", "25")}
 def test_single_stop_rows_of_the_later_tables(row: dict[str, str]) -> None:
     """To the minute, the limit tested before leaving.
 
-    A regression of a reconstruction: its one free constant was chosen on these rows, so they do not confirm it.
+    A regression of a reconstruction: one constant was chosen on these rows, so they do not confirm it.
     """
     depth, bottom = float(row["depth_fsw"]), float(row["bottom_min"])
     rules = {"ascent_rate": 30.0, "last_stop": 20.0}
