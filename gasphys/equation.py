@@ -723,7 +723,8 @@ def _numeric(f: Any, expression: Any) -> Callable[..., Any]:
 
     def evaluate(*args: Any) -> Any:
         with np.errstate(all="ignore"):
-            return function(*args)
+            # Conditions of one shape: sympy joins them in a list.
+            return function(*(np.broadcast_arrays(*args) if any(map(np.ndim, args)) else args))
 
     return evaluate
 
@@ -891,7 +892,8 @@ def _scan(f: Any, name: str, wanted: float, values: dict[str, float]) -> list[fl
     finite = np.isfinite(level)
     signs = np.where(finite, np.sign(np.where(finite, level, 0.0)), 0.0)
     for i in np.flatnonzero(signs[:-1] * signs[1:] < 0.0):
-        root = brentq(lambda x: float(difference(x)), grid[i], grid[i + 1], xtol=1e-300, rtol=1e-15)
+        close = 1e-16 * abs(grid[i + 1]) + 1e-300
+        root = brentq(lambda x: float(difference(x)), grid[i], grid[i + 1], xtol=close, rtol=1e-15)
         # A pole changes sign without a root.
         if abs(float(difference(root))) <= 1e-6 * max(abs(level[i]), abs(level[i + 1]), 1e-12):
             roots.append(float(root))

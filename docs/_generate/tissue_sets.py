@@ -56,6 +56,7 @@ def _facts(one: TissueSet) -> str:
         "Limit tested": f"{tested}; on the way: {one.on_the_way}",
         "Refuses": one.refuses,
         "Does not claim": one.does_not_claim,
+        "Evidence": one.evidence,
     }
     rows = [(k, escape(v)) for k, v in lines.items() if v]
     return table(("", "what the file says"), [*rows, ("Provenance", known)])

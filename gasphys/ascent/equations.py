@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from gasphys.equation import Value, formula
-from gasphys.maths import minimum, where
+from gasphys.maths import maximum, minimum
 
 __all__ = ["gradient_at_depth"]
 
@@ -21,15 +21,14 @@ def gradient_at_depth(
 
     Notes
     -----
-    From the low value at the first stop, and deeper, in a straight line to the high value at the surface; the
-    high value where there is no stop. The first stop is the one found with the low value, rounded to the grid
-    and then kept. No trial supports the line, or any pair of values.
+    From the low value at the first stop, and deeper, in a straight line to the high value at the surface. The
+    first stop is the one found with the low value, rounded to the grid and then kept; without a stop, 0, the
+    surface still has the high value. No trial supports the line, or any pair of values.
 
     Examples
     --------
     >>> round(gradient_at_depth(9.0, 18.0, 0.4, 0.8), 2)
     0.6
     """
-    share = depth / where(first_stop_depth <= 0.0, 1.0, first_stop_depth)
-    fall = (gradient_high - gradient_low) * minimum(share, 1.0)
-    return where(first_stop_depth <= 0.0, gradient_high, gradient_high - fall)
+    share = minimum(depth / maximum(first_stop_depth, 1e-9), 1.0)
+    return gradient_high - (gradient_high - gradient_low) * share

@@ -630,11 +630,11 @@ class _Planner:
             inert = inert_pressure(model, self.pressure[one], self._breath(self.gas[one], one))
         steady = np.broadcast_to(inert[:, None, :], (1, *model.half_time.shape))
         over, worst = self._step_excess(one, steady, target, there, gradient)
-        name = model.compartments[int(worst[0])]
+        name, gas = model.compartments[int(worst[0])], self._gas_name(int(one[0]), int(self.gas[one[0]]))
         self._fail(
             self._mask(lanes),
-            f"{model.name}: from {self.depth[one[0]]:g} {unit} on {self._gas_name(int(one[0]), int(self.gas[one[0]]))} the step to "
-            f"{target:g} {unit} is never allowed: compartment {name} would end {float(over[0]):.1f} kPa over "
+            f"{model.name}: from {self.depth[one[0]]:g} {unit} on {gas} the step to {target:g} {unit} is "
+            f"never allowed: compartment {name} would end {float(over[0]):.1f} kPa over "
             "its limit. A gas with less inert gas, or a shallower last stop, would be needed",
         )
 

@@ -22,7 +22,6 @@ __all__ = [
     "arterial_po2_from_ratio",
     "arterial_po2_from_shunt",
     "breath_hold",
-
     "calibrate",
     "carboxyhemoglobin",
     "fio2_for",

@@ -41,6 +41,9 @@ _TOLERANCE = 1e-10
 #: pH where CO2 content is known, and the nodes of its curve against PCO2.
 _PH, _NODES = (7.0, 7.7), 1401
 
+#: Alveolar PO2 below which the hold is not followed: no one is conscious long before.
+_LOWEST_PO2 = 1.0
+
 # Positions in the state, all L STPD: in the lungs, in the blood, inert gas given to the blood so far.
 _O2, _CO2, _INERT, _BLOOD_O2, _BLOOD_CO2, _INERT_GIVEN = range(6)
 
@@ -228,7 +231,8 @@ class _Body:
         return np.array([*in_lung, *(self.blood_volume / 100.0 * np.array([o2, co2])), 0.0])
 
     def o2_content(self, po2: Any) -> Any:
-        return severinghaus_content.raw(po2, self.hemoglobin, self.ph, 37.0)
+        # A trial step of the solver may overdraw the lungs; an accepted one is stopped before.
+        return severinghaus_content.raw(np.maximum(po2, 0.0), self.hemoglobin, self.ph, 37.0)
 
     def pressures(self, state: Any, pressure: Any) -> Any:
         total = state[_O2] + state[_CO2] + state[_INERT]
@@ -315,13 +319,22 @@ def _integrate(
                     continue
 
                 def passed(
-                    t: float, y: Array, name: str = row["quantity"], edge: float = edge, measured: Any = measured
+                    t: float,
+                    y: Array,
+                    name: str = row["quantity"],
+                    edge: float = edge,
+                    measured: Any = measured,
                 ) -> float:
                     return float(measured(t, y, name) - edge)
 
                 passed.direction = 1.0 if rising else -1.0  # type: ignore[attr-defined]
                 watched.append(passed)
                 places.append((i, j))
+
+        def used_up(t: float, y: Array, measured: Any = measured) -> float:
+            return float(measured(t, y, "alveolar_po2") - _LOWEST_PO2)
+
+        used_up.terminal = True  # type: ignore[attr-defined]
         end = begin + length
         if length:
             solved = solve_ivp(
@@ -332,14 +345,19 @@ def _integrate(
                 rtol=_TOLERANCE,
                 atol=1e-13,
                 dense_output=True,
-                events=watched or None,
+                events=[*watched, used_up],
             )
-            if not solved.success:
-                raise RangeError(f"the breath-hold could not be followed beyond {solved.t[-1]:.3g} min")
-            for (i, j), when in zip(places, solved.t_events or [], strict=True):
+            if solved.t[-1] < end:
+                raise RangeError(
+                    f"the O2 of the lungs is used up after {solved.t[-1]:.3g} min of {exposure.duration:.3g}: "
+                    "no such breath-hold is possible"
+                )
+            for (i, j), when in zip(places, solved.t_events[:-1], strict=True):
                 if len(when):
                     found[i, j] = float(when[0])
-            pco2 = np.array([body.pressures(y, pressure(t))[1] for t, y in zip(solved.t, solved.y.T, strict=True)])
+            pco2 = np.array(
+                [body.pressures(y, pressure(t))[1] for t, y in zip(solved.t, solved.y.T, strict=True)]
+            )
             if not (pco2.min() >= body.pco2[0] and pco2.max() <= body.pco2[1]):
                 raise RangeError(
                     f"alveolar_pco2 reaches {pco2.min():.3g} to {pco2.max():.3g} kPa, outside {body.pco2[0]:.3g} to "
@@ -372,7 +390,9 @@ def _describe(chain: _Chain, body: _Body, exposure: Exposure, states: Array) -> 
     put("inert_given", states[_INERT_GIVEN], "gas_transfer_stpd", "inert gas given to the blood so far, STPD")
     ds["inert_given"].attrs["units"] = "L"
     put("mixed_venous_o2_content", states[_BLOOD_O2] / store, "mixed_venous_o2_content", "mixed venous O2")
-    put("mixed_venous_co2_content", states[_BLOOD_CO2] / store, "mixed_venous_co2_content", "mixed venous CO2")
+    put(
+        "mixed_venous_co2_content", states[_BLOOD_CO2] / store, "mixed_venous_co2_content", "mixed venous CO2"
+    )
     pressure = {"ambient_pressure": "@ambient_pressure"}
     chain.put(
         "lung_volume_btps",

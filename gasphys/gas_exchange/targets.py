@@ -212,11 +212,11 @@ def _root(
         (root,) = find_root(short, np.array([span[0]]), np.array([span[1]]))
         low, high = arterial(*breathed(np.array(span)))
     if np.isnan(root):
-        unit = quantity(name).unit
+        unit = "" if quantity(name).unit == "1" else f" {quantity(name).unit}"
         raise NotReachableError(
-            f"no {name} from {span[0]:g} to {span[1]:g} {unit} gives arterial_po2 = {wanted:.4g} kPa "
+            f"no {name} from {span[0]:g} to {span[1]:g}{unit} gives arterial_po2 = {wanted:.4g} kPa "
             f"(dissolved {blood.dissolved_o2.raw(wanted):.3g} mL/dL) {where} by the {model} model; reachable: "
-            f"{max(low, 0.0):.4g} to {high:.4g} kPa ({blood.dissolved_o2.raw(high):.3g} mL/dL)".replace(" 1 ", " ")
+            f"{max(low, 0.0):.4g} to {high:.4g} kPa ({blood.dissolved_o2.raw(high):.3g} mL/dL)"
         )
     return float(root)
 

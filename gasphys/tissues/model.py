@@ -411,9 +411,9 @@ def _dataset(run: _Run) -> xr.Dataset:
         ds[name] = ((*lead, *cells), _covered(values, run.refused), kept)
     if not lead:
         _record(ds, run)
-    refs = [model.source, "schreiner_kelley_1971" if model.kinetics == "exponential" else "thalmann_1984"]
-    if model.kinetics == "serial":
-        refs = [model.source]
+    refs = model.references
+    if model.kinetics == "exponential":
+        refs = (*refs, "schreiner_kelley_1971")
     ds.attrs = {
         **{
             k: v
@@ -431,6 +431,7 @@ def _dataset(run: _Run) -> xr.Dataset:
         "edition": model.edition,
         "refuses": model.refuses,
         "does_not_claim": model.does_not_claim,
+        **({"evidence": model.evidence} if model.evidence else {}),
         "limit_tested": " and ".join(t.replace("_", " ") for t in model.tested),
         "comment": CAUTION,
     }

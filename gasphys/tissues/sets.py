@@ -50,6 +50,8 @@ TESTED = ("before_leaving", "on_arrival")
 _TEXTS = ("title", "edition", "source", "depth", "refuses", "does_not_claim")
 _TOP: dict[str, type | tuple[type, ...]] = {
     **dict.fromkeys(_TEXTS, str),
+    "evidence": str,
+    "references": list,
     "based_on": str,
     "kinetics": str,
     "inert_gases": list,
@@ -114,6 +116,10 @@ class TissueSet:
     ----------
     name, title, edition, source, depth, refuses, does_not_claim : str
         Name and texts of the file; ``source`` is a key of ``sources.toml`` or free text.
+    evidence : str
+        What trials say for or against the set; "" where nothing is known here.
+    references : tuple of str
+        The source, and those of the evidence.
     kinetics : {"exponential", "exponential_linear", "serial"}
         How tissues take up and give off.
     inert_gases : tuple of str
@@ -160,6 +166,8 @@ class TissueSet:
     depth: str
     refuses: str
     does_not_claim: str
+    evidence: str
+    references: tuple[str, ...]
     kinetics: str
     inert_gases: tuple[str, ...]
     counted_as: Mapping[str, str]
@@ -242,6 +250,7 @@ class TissueSet:
             "on the way": self.on_the_way,
             "refuses": self.refuses,
             "does not claim": self.does_not_claim,
+            **({"evidence": self.evidence} if self.evidence else {}),
             "provenance": "; ".join(f"{k}: {v}" for k, v in self.provenance_of.items()),
             "source": reference,
             "file": self.digest,
@@ -420,7 +429,8 @@ class _Reader:
         surfacing_only = form == "surfacing"
         return TissueSet(
             name=self.name,
-            **{k: str(data.get(k, "")) for k in _TEXTS},
+            **{k: str(data.get(k, "")) for k in (*_TEXTS, "evidence")},
+            references=(str(data["source"]), *(str(r) for r in data.get("references", ()))),
             kinetics=data["kinetics"],
             inert_gases=gases,
             counted_as=dict(data.get("counted_as", {})),
@@ -492,8 +502,9 @@ class _Reader:
             raise self.refuse("kinetics", "serial compartments are driven by the ambient pressure")
         if not self.shipped:
             return
-        if data["source"] not in sources():
-            raise self.refuse("source", f"unknown source {data['source']!r}", "add it to sources.toml")
+        for key in (data["source"], *data.get("references", ())):
+            if key not in sources():
+                raise self.refuse("source", f"unknown source {key!r}", "add it to sources.toml")
         if "integrity" not in data:
             raise self.refuse("integrity", "is missing", "give the count and the sums")
 

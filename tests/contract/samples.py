@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import functools
+from collections.abc import Callable, Iterable
 from typing import Any
 
 import numpy as np
+import pytest
 
 import gasphys as gp
 from gasphys.errors import GasphysError
@@ -122,3 +124,40 @@ def wrong_units(name: str) -> list[str]:
     if name == "degC":
         found.append("delta_degC")
     return found
+
+
+each = pytest.mark.parametrize("name", LEAVES)
+
+
+def each_argument(test: Callable[[str, str], None]) -> Callable[[str], None]:
+    """Run a test for every argument of every equation; one item an equation keeps the run short."""
+
+    def over_all(name: str) -> None:
+        for argument in LEAVES[name].arguments:
+            try:
+                test(name, argument.name)
+            except BaseException as error:
+                error.add_note(f"{name}, argument {argument.name}")
+                raise
+
+    over_all.__name__, over_all.__doc__ = test.__name__, test.__doc__
+    return each(over_all)
+
+
+def for_all(names: Iterable[str]) -> Callable[[Callable[[str], None]], Callable[[], None]]:
+    """Run a quick test for every name as one item, and report every name that fails."""
+
+    def decorate(test: Callable[[str], None]) -> Callable[[], None]:
+        def over_all() -> None:
+            failed = {}
+            for name in names:
+                try:
+                    test(name)
+                except Exception as error:
+                    failed[name] = f"{type(error).__name__}: {error}"
+            assert not failed, "\n".join(f"{name}: {text}" for name, text in failed.items())
+
+        over_all.__name__, over_all.__doc__ = test.__name__, test.__doc__
+        return over_all
+
+    return decorate

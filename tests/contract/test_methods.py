@@ -20,19 +20,25 @@ from gasphys.maths import lambdify_names
 from gasphys.quantities import QUANTITIES, attributes
 from gasphys.sources import sources
 
-from .samples import CHOICES, FORMULAS_ONLY, LEAVES, REGISTRY, SPREAD, quiet_range, samples
+from .samples import (
+    CHOICES,
+    FORMULAS_ONLY,
+    LEAVES,
+    REGISTRY,
+    SPREAD,
+    each,
+    each_argument,
+    for_all,
+    quiet_range,
+    samples,
+)
 
 TIGHT = 1e-12
 
-each = pytest.mark.parametrize("name", LEAVES)
 each_formula = pytest.mark.parametrize("name", FORMULAS_ONLY)
-each_argument = pytest.mark.parametrize(
-    ("name", "argument"), [(n, a.name) for n, f in LEAVES.items() for a in f.arguments]
-)
 each_option = pytest.mark.parametrize(
     ("name", "key"), [(n, key) for n, f in CHOICES.items() for key in f.registry], ids=str
 )
-untraceable = pytest.mark.parametrize("name", [n for n in LEAVES if n not in FORMULAS_ONLY])
 
 
 def _argument(f: Any, name: str) -> Any:
@@ -71,7 +77,7 @@ def test_number_array_labelled_lazy_and_traced_agree(name: str) -> None:
         np.testing.assert_allclose(float(traced(*row.values())), number, rtol=TIGHT)
 
 
-@each_formula
+@for_all(FORMULAS_ONLY)
 def test_symbols_of_constants_stand_for_themselves(name: str) -> None:
     f = FORMULAS_ONLY[name]
     expression = f.symbolic()
@@ -99,7 +105,7 @@ def test_latex_names_the_result_and_every_argument(name: str) -> None:
         assert text.count(r"\begin") == text.count(r"\end")
 
 
-@untraceable
+@for_all([n for n in LEAVES if n not in FORMULAS_ONLY])
 def test_what_cannot_be_traced_says_why(name: str) -> None:
     f = LEAVES[name]
     for method in (f.symbolic, f.latex):
@@ -233,7 +239,7 @@ def test_derivative_knows_its_argument_and_unit(name: str) -> None:
     assert "standard_name" not in result.attrs
 
 
-@each_formula
+@for_all(FORMULAS_ONLY)
 def test_derivative_as_an_expression(name: str) -> None:
     f = FORMULAS_ONLY[name]
     for a in f.arguments:
@@ -342,7 +348,7 @@ def test_choice_passes_on(name: str, key: Any) -> None:
         assert f(**given, **options, **others) == expected
 
 
-@pytest.mark.parametrize("name", CHOICES)
+@for_all(CHOICES)
 def test_choice_lists_what_there_is(name: str) -> None:
     f = CHOICES[name]
     row = samples(next(n for n, leaf in LEAVES.items() if leaf is next(iter(f.registry.values()))))[0]
@@ -363,7 +369,7 @@ def test_choice_lists_what_there_is(name: str) -> None:
 # -- Registry and docstrings ---------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("name", REGISTRY)
+@for_all(REGISTRY)
 def test_registry_entry(name: str) -> None:
     f = REGISTRY[name]
     assert f.kind in ("formula", "choice", "inverse", "table")
@@ -386,7 +392,7 @@ def _sections(text: str) -> dict[str, str]:
     return {"": parts[0]} | dict(zip(parts[1::2], parts[2::2], strict=True))
 
 
-@pytest.mark.parametrize("name", REGISTRY)
+@for_all(REGISTRY)
 def test_docstring_is_complete_and_fits_the_signature(name: str) -> None:
     f = REGISTRY[name]
     found = _sections(inspect.getdoc(f) or "")
@@ -415,7 +421,7 @@ def test_docstring_is_complete_and_fits_the_signature(name: str) -> None:
         assert sources()[key] in found["References"]
 
 
-@pytest.mark.parametrize("name", REGISTRY)
+@for_all(REGISTRY)
 def test_signature_has_plain_defaults_and_pickles_by_reference(name: str) -> None:
     f = REGISTRY[name]
     for parameter in inspect.signature(f).parameters.values():

@@ -19,6 +19,6 @@ def test_the_gradient_goes_straight_from_low_to_high(d: float, first: float, low
     assert f(0.0, first, low, high) == high
     assert abs(f(first, first, low, high) - low) < 1e-12
     assert abs(f(first + d, first, low, high) - low) < 1e-12
-    # Without a stop it is the high value, and with equal values the first stop has no influence.
-    assert f(d, 0.0, low, high) == high
+    # Without a stop the surface has the high value; with equal values the first stop has no influence.
+    assert f(0.0, 0.0, low, high) == high
     assert abs(f(d, first, low, low) - low) < 1e-12
