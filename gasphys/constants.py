@@ -555,3 +555,13 @@ EXERCISE_WASHOUT_RISE = _constant(
     "conkin_2004",
     "memory_medium",
 )
+LN2 = _constant(
+    "LN2",
+    0.6931471805599453,
+    "1",
+    r"\ln 2",
+    "natural logarithm of two, between half-times and rates",
+    "common_practice",
+    "computed",
+    exact=True,
+)

@@ -287,7 +287,9 @@ Examples
 pco2_at_base_excess = _buffered(name="pco2_at_base_excess", kernel=_linear_within)
 
 #: The same without bounds: a search may look where there is no PCO2 and turn back.
-unbounded_pco2_at_base_excess = _buffered(name="unbounded_pco2_at_base_excess", kernel=_linear, register=False)
+unbounded_pco2_at_base_excess = _buffered(
+    name="unbounded_pco2_at_base_excess", kernel=_linear, register=False
+)
 
 
 @formula(

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from gasphys.blood.circulation import arterial_po2_from_shunt, shunt_at_arterial_po2
-
 from gasphys.gas_exchange.breath_hold import breath_hold
 from gasphys.gas_exchange.carbon_monoxide import carboxyhemoglobin
 from gasphys.gas_exchange.equations import (

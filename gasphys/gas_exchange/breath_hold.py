@@ -41,6 +41,17 @@ _TOLERANCE = 1e-10
 #: pH where CO2 content is known, and the nodes of its curve against PCO2.
 _PH, _NODES = (7.0, 7.7), 1401
 
+#: What is asked of the person.
+_USED = (
+    "arterial_pco2",
+    "arterial_ph",
+    "respiratory_exchange_ratio",
+    "hemoglobin",
+    "arteriovenous_difference",
+    "o2_uptake_stpd",
+    "cohb_fraction",
+)
+
 #: Alveolar PO2 below which the hold is not followed: no one is conscious long before.
 _LOWEST_PO2 = 1.0
 
@@ -122,15 +133,13 @@ def breath_hold(
         chain = _Chain(out)
         _describe(chain, body, exposure, states)
     _events(out, crossings, exposure, lung, residual)
-    used = ("arterial_pco2", "respiratory_exchange_ratio", "hemoglobin", "arteriovenous_difference")
-    used = (*used, "o2_uptake_stpd", "arterial_ph", "cohb_fraction")
     out.attrs = {
         **out.attrs,
         "title": "gas of lungs and blood through one breath-hold",
         "source": out.attrs["source"].replace(", exposure", ", breath-hold mass balance"),
         "references": "; ".join(dict.fromkeys([*chain.references, "lanphier_rahn_1963"])),
-        "assumed": ", ".join(f"{n} = {person.value(n):g}" for n in used if not person.is_measured(n)),
-        "measured": ", ".join(f"{n} = {person.value(n):g}" for n in used if person.is_measured(n)),
+        "assumed": ", ".join(f"{n} = {person.value(n):g}" for n in _USED if not person.is_measured(n)),
+        "measured": ", ".join(f"{n} = {person.value(n):g}" for n in _USED if person.is_measured(n)),
         "lung_volume_at_start": lung,
         "residual_volume": residual,
         "blood_volume": body.blood_volume,
@@ -349,19 +358,19 @@ def _integrate(
             )
             if solved.t[-1] < end:
                 raise RangeError(
-                    f"the O2 of the lungs is used up after {solved.t[-1]:.3g} min of {exposure.duration:.3g}: "
+                    f"the O2 of the lungs is used up after {solved.t[-1]:.3g} of {end:.3g} min: "
                     "no such breath-hold is possible"
                 )
             for (i, j), when in zip(places, solved.t_events[:-1], strict=True):
                 if len(when):
                     found[i, j] = float(when[0])
-            pco2 = np.array(
-                [body.pressures(y, pressure(t))[1] for t, y in zip(solved.t, solved.y.T, strict=True)]
-            )
-            if not (pco2.min() >= body.pco2[0] and pco2.max() <= body.pco2[1]):
+            steps = zip(solved.t, solved.y.T, strict=True)
+            pco2 = np.array([body.pressures(y, pressure(t))[1] for t, y in steps])
+            least, most = body.pco2
+            if not (pco2.min() >= least and pco2.max() <= most):
                 raise RangeError(
-                    f"alveolar_pco2 reaches {pco2.min():.3g} to {pco2.max():.3g} kPa, outside {body.pco2[0]:.3g} to "
-                    f"{body.pco2[1]:.3g} kPa (pH 7.0 to 7.7) where CO2 content is known; it is not extrapolated"
+                    f"alveolar_pco2 reaches {pco2.min():.3g} to {pco2.max():.3g} kPa, outside {least:.3g} to "
+                    f"{most:.3g} kPa (pH 7.0 to 7.7) where CO2 content is known; it is not extrapolated"
                 )
             here = (times > begin) & (times < end)
             if here.any():

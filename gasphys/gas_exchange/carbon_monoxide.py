@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Callable
 from typing import Any
 
@@ -130,8 +131,8 @@ def carboxyhemoglobin(
         _breathed(chain)
     if not bool((out["capillary_po2"] > 0.0).all()):
         raise RangeError(
-            "the inspired PO2 falls to 49 mmHg or less: the equation has no capillary PO2 there, and this gas "
-            "cannot sustain life"
+            "the inspired PO2 falls to 49 mmHg or less: the equation has no capillary PO2 there, and this "
+            "gas cannot sustain life"
         )
 
     def rate(cohb: Array, driving: tuple[Any, Any]) -> Array:
@@ -265,7 +266,7 @@ def _integrate(
         n = max(1, int(np.ceil(np.max(length, initial=0.0) / _STEP)))
         nodes = np.unique(np.concatenate([np.linspace(0.0, 1.0, n + 1), shares[here]]))
         _record(out, cohb, here, shares, 0.0)
-        for share, to in zip(nodes[:-1], nodes[1:], strict=True):
+        for share, to in itertools.pairwise(nodes):
             by = to - share
             new = step(cohb, share, by)
             if target is not None:

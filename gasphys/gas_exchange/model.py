@@ -435,7 +435,7 @@ def _flag(ds: xr.Dataset) -> None:
     ]
     flag = xr.zeros_like(ds["arterial_po2"], dtype=np.int8)
     for code, reason in reversed(list(enumerate(reasons, start=1))):
-        flag = xr.where(reason, np.int8(code), flag).astype(np.int8)
+        flag = flag.where(~reason, np.int8(code)).astype(np.int8)
     ds["gas_exchange_flag"] = flag.transpose(*ds["arterial_po2"].dims)
     ds["gas_exchange_flag"].attrs = {
         "long_name": "why values are missing",

@@ -215,8 +215,8 @@ def _root(
         unit = "" if quantity(name).unit == "1" else f" {quantity(name).unit}"
         raise NotReachableError(
             f"no {name} from {span[0]:g} to {span[1]:g}{unit} gives arterial_po2 = {wanted:.4g} kPa "
-            f"(dissolved {blood.dissolved_o2.raw(wanted):.3g} mL/dL) {where} by the {model} model; reachable: "
-            f"{max(low, 0.0):.4g} to {high:.4g} kPa ({blood.dissolved_o2.raw(high):.3g} mL/dL)"
+            f"(dissolved {blood.dissolved_o2.raw(wanted):.3g} mL/dL) {where} by the {model} model; "
+            f"reachable: {max(low, 0.0):.4g} to {high:.4g} kPa ({blood.dissolved_o2.raw(high):.3g} mL/dL)"
         )
     return float(root)
 

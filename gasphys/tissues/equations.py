@@ -14,6 +14,7 @@ from gasphys.constants import (
     EVA_HALF_TIME,
     EXERCISE_WASHOUT_RISE,
     EXERCISE_WASHOUT_SCALE,
+    LN2,
     MMHG,
 )
 from gasphys.equation import Value, formula, inverse
@@ -144,7 +145,7 @@ def uptake_share(duration: Value, half_time: Value) -> Value:
     >>> uptake_share(20.0, 10.0)
     0.75
     """
-    return -expm1(-log(2.0) * duration / half_time)
+    return -expm1(-LN2 * duration / half_time)
 
 
 @formula(result="tissue_pressure", **_SCHREINER)
@@ -171,7 +172,7 @@ def tissue_pressure(
     >>> round(tissue_pressure(26.07, 105.07, 105.07, 10.0, 10.0), 2)
     65.57
     """
-    x = log(2.0) * duration / half_time
+    x = LN2 * duration / half_time
     step = (start_inert_pressure - initial_tissue_pressure) * uptake_share(duration, half_time)
     return initial_tissue_pressure + step + (end_inert_pressure - start_inert_pressure) * ramp_gain(x)
 
@@ -203,7 +204,7 @@ def time_to_tissue_pressure(
     57.6
     """
     ratio = (inert_pressure - initial_tissue_pressure) / (inert_pressure - tissue_pressure)
-    return half_time * log(ratio) / log(2.0)
+    return half_time * log(ratio) / LN2
 
 
 @formula(result="washout_threshold", **_THALMANN)
@@ -256,7 +257,7 @@ def linear_tissue_pressure(
     """
     start = start_inert_pressure - start_threshold
     end = end_inert_pressure - end_threshold
-    return initial_tissue_pressure + log(2.0) * duration / half_time * 0.5 * (start + end)
+    return initial_tissue_pressure + LN2 * duration / half_time * 0.5 * (start + end)
 
 
 @formula(result="duration", register=False, **_THALMANN)
@@ -281,7 +282,7 @@ def linear_washout_time(
     >>> round(linear_washout_time(50.0, 32.47, 32.47, 38.7, 38.7, 1.0, 40.0), 3)
     104.671
     """
-    x = log(2.0) * segment_duration / half_time
+    x = LN2 * segment_duration / half_time
     change = end_threshold - start_threshold
     fall = x * (start_threshold - start_inert_pressure) + change
     end_fall = x * (end_threshold - end_inert_pressure) + change
@@ -484,7 +485,7 @@ def exercise_half_time(o2_uptake_per_mass: Value) -> Value:
     >>> round(exercise_half_time(20.0), 1)
     79.8
     """
-    return log(2.0) * EXERCISE_WASHOUT_SCALE / (1.0 - exp(-EXERCISE_WASHOUT_RISE * o2_uptake_per_mass))
+    return LN2 * EXERCISE_WASHOUT_SCALE / (1.0 - exp(-EXERCISE_WASHOUT_RISE * o2_uptake_per_mass))
 
 
 @formula(result="supersaturation_ratio", source="waligora_1984", provenance="memory_high")

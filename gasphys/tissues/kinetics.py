@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from gasphys.constants import LN2
 from gasphys.exposure import Pieces
 from gasphys.maths import find_root, ramp_gain_from
 from gasphys.tissues.equations import (
@@ -349,7 +350,7 @@ def _exponential_linear(
     t, first, last = duration[..., None, None], first[..., None, :], last[..., None, :]
     low = washout_threshold.raw(start, *own)[..., None, None]
     high = washout_threshold.raw(end, *own)[..., None, None]
-    x = np.log(2.0) * t / model.half_time
+    x = float(LN2) * t / model.half_time
     begins, ends = x * (first - low) - (high - low), x * (last - high) - (high - low)
     plain = np.asarray(tissue_pressure.raw(state, first, last, t, model.half_time))
     simple = (state <= low) & (plain <= high) & ~((begins > 0.0) & (ends < 0.0))
@@ -613,7 +614,7 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
     t = blocks(row.duration)[..., None, None, :]
     first = blocks(np.swapaxes(row.start_inert, -1, -2))[..., None, :, :]
     change = blocks(np.swapaxes(row.end_inert - row.start_inert, -1, -2))[..., None, :, :]
-    rate = (-np.log(2.0) / model.half_time)[..., None]
+    rate = (-float(LN2) / model.half_time)[..., None]
     shape = (*lead, *model.half_time.shape, count)
     total = np.empty((block, *shape))
     with np.errstate(divide="ignore", invalid="ignore"):

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 import xarray as xr
 
-from gasphys.constants import BODY_VAPOR_PRESSURE, MMHG
+from gasphys.constants import BODY_VAPOR_PRESSURE, LN2, MMHG
 from gasphys.errors import ExposureError, RangeError, ValidityError
 from gasphys.exposure import Exposure
 from gasphys.policy import weakest
@@ -94,7 +94,7 @@ def counterdiffusion(
     after, previous = row.start_inert[ends], row.end_inert[ends - 1]
     state = np.moveaxis(states[..., ends], -1, 0)
     gap = state - after[:, None, :]  # (switch, compartment, gas)
-    rate = np.log(2.0) / chosen.half_time
+    rate = float(LN2) / chosen.half_time
     one, other = gap[..., 0] * rate[:, 0], gap[..., 1] * rate[:, 1]
     total_rate = -(one + other)
     # The sum is stationary where the two rates cancel; they are exponentials, so at most once.
