@@ -559,7 +559,7 @@ LN2 = _constant(
     "LN2",
     0.6931471805599453,
     "1",
-    r"\ln 2",
+    r"(\ln 2)",
     "natural logarithm of two, between half-times and rates",
     "common_practice",
     "computed",

@@ -196,6 +196,8 @@ def _rebind(
     symbols: bool = False,
 ) -> Any:
     """Run the same code with other globals: functions, constants, bodies and inverses it calls."""
+    if body.__closure__:
+        raise NotTraceable(f"{body.__name__}: a body uses names of its module, not local ones")
     code = body.__code__
     space: dict[str, Any] = {"__builtins__": {}}
     for name in code.co_names:

@@ -532,7 +532,7 @@ class App:
         >>> file = pathlib.Path(tempfile.mkdtemp()) / "oxygen.csv"
         >>> gp.widgets.OxygenAtPressure().export(file)
         >>> file.read_text().splitlines()[0]
-        '# oxygen from breathing gas to arterial blood'
+        '# oxygen from breathing gas to mixed venous blood'
         """
         path = Path(path)
         try:
