@@ -391,6 +391,7 @@ class _Block:
 
     def __init__(self, spec: Spec) -> None:
         self.spec = spec
+        self.__name__ = spec.name  # names the layer of the task graph
 
     def __call__(self, *arrays: Any) -> tuple[NDArray[np.float64], NDArray[np.uint8]]:
         result = _arrays(self.spec, list(arrays), report=False)

@@ -72,35 +72,38 @@ def _viscosity(gas: str) -> tuple[Constant, Constant]:
     )  # fmt: skip
 
 
-def _conductivity(gas: str) -> tuple[Constant, Constant]:
-    """Return thermal conductivity at 25 degC and its slope."""
+def _conductivity(gas: str) -> Constant:
     row = data("transport")["gas"][gas]
-    return (
-        constant(
-            f"CONDUCTIVITY_{gas.upper()}", row["k0"], "mW/m/K", f"k_{{{TEX[gas]}}}^{{25}}",
-            f"thermal conductivity of {gas} at 25 degC, low density", _TRANSPORT, row["word"],
-        ),
-        constant(
-            f"CONDUCTIVITY_SLOPE_{gas.upper()}", row["k1"], "mW/m/K^2", f"k'_{{{TEX[gas]}}}",
-            f"slope of the thermal conductivity of {gas}", _TRANSPORT, row["word"],
-        ),
+    return constant(
+        f"CONDUCTIVITY_{gas.upper()}", row["k0"], "mW/m/K", f"k_{{{TEX[gas]}}}^{{25}}",
+        f"thermal conductivity of {gas} at 25 degC, low density", _TRANSPORT, row["word"],
     )  # fmt: skip
 
 
-def _heat_capacity(gas: str) -> tuple[Constant, Constant]:
-    """Return molar heat capacity at 25 degC and its slope, a straight line through 25 and 37 degC."""
+def _conductivity_slope(gas: str) -> Constant:
     row = data("transport")["gas"][gas]
-    return (
-        constant(
-            f"CP_{gas.upper()}", row["cp0_298"], "J/mol/K", f"c_{{{TEX[gas]}}}^{{25}}",
-            f"molar heat capacity of {gas} at 25 degC, constant pressure, low density",
-            _TRANSPORT, row["word"],
-        ),
-        constant(
-            f"CP_SLOPE_{gas.upper()}", (row["cp0_310"] - row["cp0_298"]) / 12.0, "J/mol/K^2",
-            f"c'_{{{TEX[gas]}}}",
-            f"slope of the molar heat capacity of {gas}, 25 to 37 degC", _TRANSPORT, row["word"],
-        ),
+    return constant(
+        f"CONDUCTIVITY_SLOPE_{gas.upper()}", row["k1"], "mW/m/K^2", f"k'_{{{TEX[gas]}}}",
+        f"slope of the thermal conductivity of {gas}", _TRANSPORT, row["word"],
+    )  # fmt: skip
+
+
+def _heat_capacity(gas: str) -> Constant:
+    row = data("transport")["gas"][gas]
+    return constant(
+        f"CP_{gas.upper()}", row["cp0_298"], "J/mol/K", f"c_{{{TEX[gas]}}}^{{25}}",
+        f"molar heat capacity of {gas} at 25 degC, constant pressure, low density",
+        _TRANSPORT, row["word"],
+    )  # fmt: skip
+
+
+def _heat_capacity_slope(gas: str) -> Constant:
+    """Slope of a straight line through 25 and 37 degC."""
+    row = data("transport")["gas"][gas]
+    return constant(
+        f"CP_SLOPE_{gas.upper()}", (row["cp0_310"] - row["cp0_298"]) / 12.0, "J/mol/K^2",
+        f"c'_{{{TEX[gas]}}}",
+        f"slope of the molar heat capacity of {gas}, 25 to 37 degC", _TRANSPORT, row["word"],
     )  # fmt: skip
 
 
@@ -120,21 +123,32 @@ MU_H2, SUTHERLAND_H2 = _viscosity("H2")
 MU_NE, SUTHERLAND_NE = _viscosity("Ne")
 MU_CO2, SUTHERLAND_CO2 = _viscosity("CO2")
 
-CONDUCTIVITY_O2, CONDUCTIVITY_SLOPE_O2 = _conductivity("O2")
-CONDUCTIVITY_N2, CONDUCTIVITY_SLOPE_N2 = _conductivity("N2")
-CONDUCTIVITY_HE, CONDUCTIVITY_SLOPE_HE = _conductivity("He")
-CONDUCTIVITY_AR, CONDUCTIVITY_SLOPE_AR = _conductivity("Ar")
-CONDUCTIVITY_H2, CONDUCTIVITY_SLOPE_H2 = _conductivity("H2")
-CONDUCTIVITY_NE, CONDUCTIVITY_SLOPE_NE = _conductivity("Ne")
-CONDUCTIVITY_CO2, CONDUCTIVITY_SLOPE_CO2 = _conductivity("CO2")
+CONDUCTIVITY_O2 = _conductivity("O2")
+CONDUCTIVITY_N2 = _conductivity("N2")
+CONDUCTIVITY_HE = _conductivity("He")
+CONDUCTIVITY_AR = _conductivity("Ar")
+CONDUCTIVITY_H2 = _conductivity("H2")
+CONDUCTIVITY_NE = _conductivity("Ne")
+CONDUCTIVITY_CO2 = _conductivity("CO2")
+CONDUCTIVITY_SLOPE_O2 = _conductivity_slope("O2")
+CONDUCTIVITY_SLOPE_N2 = _conductivity_slope("N2")
+CONDUCTIVITY_SLOPE_HE = _conductivity_slope("He")
+CONDUCTIVITY_SLOPE_AR = _conductivity_slope("Ar")
+CONDUCTIVITY_SLOPE_H2 = _conductivity_slope("H2")
+CONDUCTIVITY_SLOPE_CO2 = _conductivity_slope("CO2")
 
-CP_O2, CP_SLOPE_O2 = _heat_capacity("O2")
-CP_N2, CP_SLOPE_N2 = _heat_capacity("N2")
-CP_HE, CP_SLOPE_HE = _heat_capacity("He")
-CP_AR, CP_SLOPE_AR = _heat_capacity("Ar")
-CP_H2, CP_SLOPE_H2 = _heat_capacity("H2")
-CP_NE, CP_SLOPE_NE = _heat_capacity("Ne")
-CP_CO2, CP_SLOPE_CO2 = _heat_capacity("CO2")
+CP_O2 = _heat_capacity("O2")
+CP_N2 = _heat_capacity("N2")
+CP_HE = _heat_capacity("He")
+CP_AR = _heat_capacity("Ar")
+CP_H2 = _heat_capacity("H2")
+CP_NE = _heat_capacity("Ne")
+CP_CO2 = _heat_capacity("CO2")
+# Monatomic gases have none.
+CP_SLOPE_O2 = _heat_capacity_slope("O2")
+CP_SLOPE_N2 = _heat_capacity_slope("N2")
+CP_SLOPE_H2 = _heat_capacity_slope("H2")
+CP_SLOPE_CO2 = _heat_capacity_slope("CO2")
 
 MU_SLOPE_O2 = _density_term("O2")
 MU_SLOPE_N2 = _density_term("N2")
@@ -467,7 +481,7 @@ def _wassiljewa_conductivity(
         CONDUCTIVITY_HE + CONDUCTIVITY_SLOPE_HE * warmth,
         CONDUCTIVITY_AR + CONDUCTIVITY_SLOPE_AR * warmth,
         CONDUCTIVITY_H2 + CONDUCTIVITY_SLOPE_H2 * warmth,
-        CONDUCTIVITY_NE + CONDUCTIVITY_SLOPE_NE * warmth,
+        CONDUCTIVITY_NE,
         CONDUCTIVITY_CO2 + CONDUCTIVITY_SLOPE_CO2 * warmth,
         o2,
         n2,
@@ -531,10 +545,10 @@ def _ideal_heat_capacity(
     return (
         oxygen * (CP_O2 + CP_SLOPE_O2 * warmth)
         + nitrogen * (CP_N2 + CP_SLOPE_N2 * warmth)
-        + helium * (CP_HE + CP_SLOPE_HE * warmth)
-        + argon * (CP_AR + CP_SLOPE_AR * warmth)
+        + helium * CP_HE
+        + argon * CP_AR
         + hydrogen * (CP_H2 + CP_SLOPE_H2 * warmth)
-        + neon * (CP_NE + CP_SLOPE_NE * warmth)
+        + neon * CP_NE
         + carbon_dioxide * (CP_CO2 + CP_SLOPE_CO2 * warmth)
     )
 

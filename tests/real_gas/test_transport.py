@@ -139,7 +139,7 @@ def test_mixing_rule_as_printed() -> None:
             g: r["mu0"] * (kelvin / 298.15) ** 1.5 * (298.15 + r["S"]) / (kelvin + r["S"])
             for g, r in rows.items()
         }
-        conductivities = {g: r["k0"] + r["k1"] * (t - 25.0) for g, r in rows.items()}
+        conductivities = {g: r["k0"] + r.get("k1", 0.0) * (t - 25.0) for g, r in rows.items()}
         gas = gp.Gas(
             oxygen=x["O2"],
             helium=x["He"],
@@ -241,6 +241,19 @@ def test_diffusivity_against_chapman_enskog() -> None:
                 0.01 * 0.6 * inputs["A12"] * mu12 * (m1 + m2) / (m1 * m2) * 8.31446 * (t + 273.15) / 101.325
             )
             assert real_gas.diffusivity(101.325, f"He-{other}", t) == pytest.approx(truth, rel=0.06)
+
+
+def test_diffusivity_as_printed() -> None:
+    """D = 0.00143 T^1.75/(p M12^(1/2) (v1^(1/3) + v2^(1/3))^2), p in bar, M12 = 2/(1/M1 + 1/M2), cm2/s."""
+    for pair, (m1, v1), (m2, v2) in (
+        ("CO2-N2", (44.0095, 26.9), (28.0134, 18.5)),
+        ("He-O2", (4.002602, 2.67), (31.9988, 16.3)),
+        ("H2O-Ar", (18.01528, 13.1), (39.948, 16.2)),
+        ("H2-Ne", (2.01588, 6.12), (20.1797, 5.98)),
+    ):
+        mean = 2.0 / (1.0 / m1 + 1.0 / m2)
+        expected = 0.00143 * 300.0**1.75 / (3.0 * mean**0.5 * (v1 ** (1.0 / 3.0) + v2 ** (1.0 / 3.0)) ** 2)
+        assert real_gas.diffusivity("3 bar", pair, "300 K") == pytest.approx(expected, rel=1e-12)
 
 
 def test_diffusivity_takes_pairs_in_any_order_and_names_the_valid_ones() -> None:

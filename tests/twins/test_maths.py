@@ -111,9 +111,9 @@ def test_mean_log(start: float, end: float) -> None:
     assert mean_log(end, start) == pytest.approx(float(exact), rel=1e-12)
 
 
-@pytest.mark.parametrize("x", [-38.0, -10.0, -5.0, -1.0, -1e-9, 0.0, 0.3, 2.0, 8.0, 40.0])
+@pytest.mark.parametrize("x", [-37.0, -10.0, -5.0, -1.0, -1e-9, 0.0, 0.3, 2.0, 8.0, 40.0])
 def test_normal_cdf(x: float) -> None:
-    assert float(normal_cdf(x)) == pytest.approx(float(mp.ncdf(mp.mpf(x))), rel=1e-12)
+    assert float(normal_cdf(x)) == pytest.approx(float(mp.ncdf(mp.mpf(x))), rel=1e-12, abs=0.0)
 
 
 @pytest.mark.parametrize(
