@@ -32,11 +32,11 @@ TESTS = {
     "gasphys/limits": ["tests/data/test_transcriptions.py", "tests/floors/test_review.py", "tests/doses"],
     "gasphys/schedules": ["tests/data/test_transcriptions.py", "tests/floors/test_doses_along.py"],
     "gasphys/person_defaults": ["tests/data/test_transcriptions.py", "tests/floors/test_person.py"],
-    "gasphys/dry_air": ["tests/data/test_words.py", "tests/floors/test_exposure.py"],
+    "gasphys/dry_air": ["tests/data/test_transcriptions.py", "tests/floors/test_exposure.py"],
     "gasphys/constants": [
         "rows laws. lungs. blood. surroundings.",
         "rows real_gas. doses.",
-        "tests/data/test_words.py",
+        "tests/data/test_transcriptions.py",
         "tests/twins/test_surroundings.py",
     ],
     "gasphys/real_gas": ["rows real_gas.", "tests/real_gas"],

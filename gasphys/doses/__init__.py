@@ -10,7 +10,7 @@ from gasphys.doses.course_file import read_course
 from gasphys.doses.equations import *  # noqa: F403
 from gasphys.doses.ladder import course_text, ladder_text, sessions_left
 from gasphys.doses.model import MEASURES, dose_text, oxygen
-from gasphys.doses.tables import published, tables
+from gasphys.doses.published_tables import published, tables
 
 __all__ = [
     "MEASURES",

@@ -27,7 +27,7 @@ from gasphys.constants import (
     CNS_MODERATE_SPREAD,
     Constant,
 )
-from gasphys.doses.tables import published
+from gasphys.doses.published_tables import published
 from gasphys.equation import EquationFunction, Value, choice, formula
 from gasphys.maths import exp, log, mean_power, normal_cdf
 

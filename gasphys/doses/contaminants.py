@@ -9,7 +9,7 @@ import xarray as xr
 
 from gasphys.constants import ATMOSPHERE
 from gasphys.doses.carbon_dioxide import surface_equivalent
-from gasphys.doses.tables import published
+from gasphys.doses.published_tables import published
 from gasphys.errors import unknown_name
 from gasphys.quantities import CAUTION
 

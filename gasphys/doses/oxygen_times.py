@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gasphys.constants import ATMOSPHERE
-from gasphys.doses.tables import ROUNDING, column, next_row, no_slope, published, step
+from gasphys.doses.published_tables import ROUNDING, column, next_row, no_slope, published, step
 from gasphys.equation import EquationFunction, Value, choice, formula, table
 from gasphys.errors import NotTraceable
 from gasphys.maths import exp, log, mean_log, where

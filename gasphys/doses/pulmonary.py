@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gasphys.constants import ARIELI_EXPONENT, ATMOSPHERE, BAR, UPTD_THRESHOLD
-from gasphys.doses.tables import ROUNDING, column, no_slope, published, step
+from gasphys.doses.published_tables import ROUNDING, column, no_slope, published, step
 from gasphys.equation import EquationFunction, Value, choice, formula, table
 from gasphys.maths import exp, maximum, mean_power, minimum
 from gasphys.policy import weakest

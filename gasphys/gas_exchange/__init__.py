@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from gasphys.blood.circulation import arterial_po2_from_shunt, shunt_at_arterial_po2
-from gasphys.gas_exchange.breath_hold import breath_hold
 from gasphys.gas_exchange.carbon_monoxide import carboxyhemoglobin
 from gasphys.gas_exchange.equations import (
     alveolar_gas_pressure,
@@ -13,6 +12,7 @@ from gasphys.gas_exchange.equations import (
     lung_volume_of_gas,
     squeeze_pressure,
 )
+from gasphys.gas_exchange.held_breath import breath_hold
 from gasphys.gas_exchange.model import calibrate, oxygenation
 from gasphys.gas_exchange.targets import fio2_for, pressure_for
 

@@ -8,6 +8,8 @@ from pathlib import Path
 
 import pytest
 
+from gasphys.constants import CONSTANTS
+from gasphys.gas import FORMULAS, Gas, dry_air_standards
 from gasphys.limits import load
 from gasphys.person import Person, measurable
 from gasphys.quantities import quantity
@@ -131,6 +133,7 @@ ASSUMED = {
     "o2_uptake_stpd": 0.25,
     "co2_output_stpd": 0.2,
     "cohb_fraction": 0.0,
+    "arterial_ph": 7.4,
 }
 
 
@@ -139,3 +142,45 @@ def test_what_is_assumed_of_a_person() -> None:
     assert set(ASSUMED) <= set(measurable())
     for name, value in ASSUMED.items():
         assert person.value(name) == pytest.approx(value, rel=1e-9)
+
+
+#: Constants as the reference tables print them, those that no published row of an equation pins.
+CONSTANTS_AS_PRINTED = {
+    "MOLAR_MASS_NE": 20.1797,  # virial constants, neon
+    "CO2_PLASMA_SOLUBILITY": 0.03,  # mmol/L/mmHg with pK 6.1
+    "CNS_MODERATE_SPREAD": 1.35,  # Z = (ln K^0.5 - 11.19)/1.35, Arieli 2003, 0.9 L/min
+    "EVA_HALF_TIME": 360.0,  # the 360-min altitude tissue
+    "EXERCISE_WASHOUT_RISE": 0.03,  # prebreathe with exercise
+    "EXERCISE_WASHOUT_SCALE": 51.937,
+    "CO_CAPACITY": 1.38,  # 1.38 Hb/100 in the non-linear form
+    "DEAD_SPACE_PER_MASS": 0.0022,  # 2.2 mL/kg
+    "SURFACE_METERS": 10.0,  # equivalent narcotic depth: surface 10 msw or m
+    "LN2": 0.6931471805599453,
+}
+
+
+@pytest.mark.parametrize("name", list(CONSTANTS_AS_PRINTED))
+def test_constants_as_printed(name: str) -> None:
+    assert float(CONSTANTS[name]) == CONSTANTS_AS_PRINTED[name]
+
+
+def test_molar_volume_of_water() -> None:
+    """18.015 g/mol over 993.3 g/L, the density of water at 37 degC: 18.14 mL/mol."""
+    assert float(CONSTANTS["WATER_MOLAR_VOLUME"]) == pytest.approx(0.018137, rel=5e-4)
+
+
+#: Dry air: CIPM-2007 at 400 ppm CO2; CRC Handbook 83rd ed. p 14-19; a later list with CO2 412 ppm.
+DRY_AIR = {
+    "cipm_2007": {"O2": 0.20939, "Ar": 0.009332, "CO2": 0.0004},
+    "crc_83": {"O2": 0.209476, "Ar": 0.00934, "CO2": 0.000314, "Ne": 18.18e-6, "He": 5.24e-6},
+    "co2_412_ppm": {"O2": 0.20946, "Ar": 0.00934, "CO2": 0.000412},
+}
+
+
+def test_dry_air_as_printed() -> None:
+    assert set(DRY_AIR) == set(dry_air_standards())
+    for standard, parts in DRY_AIR.items():
+        air = Gas.dry_air(standard)
+        for gas in FORMULAS:
+            if gas != "N2":
+                assert air.fraction(gas) == pytest.approx(parts.get(gas, 0.0), rel=1e-12)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import inspect
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -21,11 +22,15 @@ def test_public_names_are_those_written_down() -> None:
 
 
 def test_no_function_has_the_name_of_a_module() -> None:
-    modules = {n for n in gp.__all__ if inspect.ismodule(getattr(gp, n))}
-    functions = set(gp.__all__) - modules
-    assert not modules & functions
-    for name in functions - {"__version__"}:
-        assert not inspect.ismodule(getattr(gp, name))
+    """Whichever is imported last would hide the other."""
+    package = Path(gp.__file__).parent
+    for name in gp.__all__:
+        value: Any = getattr(gp, name)
+        for part in getattr(value, "__all__", ()) if inspect.ismodule(value) else ():
+            if not inspect.ismodule(getattr(value, part)):
+                assert not (package / name / f"{part}.py").exists(), f"{name}.{part}"
+        if not inspect.ismodule(value):
+            assert not (package / f"{name}.py").exists(), name
 
 
 @pytest.mark.parametrize("name", gp.__all__)
