@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from gasphys import breathing_gas, gas_exchange, laws, surroundings
+from gasphys import breathing_gas, gas_exchange, laws, lungs, surroundings
 
 from .coverage import covers
 
@@ -107,3 +107,13 @@ def test_sea_water_within_0_02_percent_of_gsw() -> None:
             np.testing.assert_allclose(got, expected, rtol=2e-4)
             back = surroundings.depth_at_pressure(expected + 101.325, water=water, latitude=latitude)
             np.testing.assert_allclose(back, depth, rtol=2e-4)
+
+
+@covers("laws.convert_gas_volume[atps,stpd]")
+@given(st.one_of(st.floats(36.5, 36.999), st.floats(37.001, 37.5)))
+def test_room_gas_follows_the_saturation_formula_away_from_37_degrees(temperature: float) -> None:
+    vapor = lungs.water_vapor_pressure(temperature)
+    expected = (101.325 - vapor) / 101.325 * 273.15 / (temperature + 273.15)
+    assert laws.convert_gas_volume(1.0, "atps", "stpd", temperature=temperature) == pytest.approx(
+        expected, rel=1e-12
+    )
