@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import abc
 import io
 import math
 import os
@@ -257,7 +258,7 @@ class Name:
         return value
 
 
-class App:
+class App(abc.ABC):
     """One question as a sentence with blanks, a computed answer and a picture.
 
     A concrete app sets :attr:`sentence`, :attr:`blanks` and :attr:`name`, and writes
@@ -370,6 +371,7 @@ class App:
 
     # -- what a concrete app writes ----------------------------------------------------------
 
+    @abc.abstractmethod
     def compute(self) -> xr.Dataset:
         """Return the dataset of :attr:`params`.
 
@@ -383,8 +385,8 @@ class App:
         GasphysError
             If the values cannot stand together.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def draw(self, figure: Any, ds: xr.Dataset) -> None:
         """Draw the dataset; on a figure drawn before, move its artists.
 
@@ -395,8 +397,8 @@ class App:
         ds : Dataset
             As :meth:`compute` returns it.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def figure(self) -> Any:
         """Return the picture of :attr:`params` on a figure of its own, with the caution.
 
@@ -405,8 +407,8 @@ class App:
         matplotlib.figure.Figure
             The figure.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def answer(self, ds: xr.Dataset) -> str:
         """Return the answer in one sentence.
 
@@ -420,8 +422,8 @@ class App:
         str
             With units.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def notes(self, ds: xr.Dataset) -> list[str]:
         """Return what speaks against the answer, and what it assumes.
 
@@ -435,8 +437,8 @@ class App:
         list of str
             One sentence each.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def explain(self, ds: xr.Dataset, name: str) -> str:
         """Return the working of one number of the answer.
 
@@ -452,8 +454,8 @@ class App:
         str
             Equations, inputs, constants, sources.
         """
-        raise NotImplementedError
 
+    @abc.abstractmethod
     def lines(self) -> str:
         """Return the Python lines that reproduce ``ds`` and ``figure``.
 
@@ -462,7 +464,6 @@ class App:
         str
             To paste into a cell or a script.
         """
-        raise NotImplementedError
 
     # -- what every app can do ---------------------------------------------------------------
 
