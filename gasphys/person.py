@@ -4,17 +4,17 @@ from __future__ import annotations
 
 import functools
 import os
-import re
 import tomllib
+from collections.abc import Iterable
 from dataclasses import dataclass, fields, replace
 from importlib import resources
-from pathlib import Path
 from typing import Any
 
 from gasphys import blood, lungs
 from gasphys.errors import GasphysError, InputFileError, RangeError, unknown_name
 from gasphys.policy import outside_validity
 from gasphys.quantities import quantity
+from gasphys.toml_files import TomlFile, read_toml
 
 __all__ = ["Person"]
 
@@ -277,54 +277,33 @@ class Person:
         >>> Person.from_toml(file).hemoglobin
         13.1
         """
-        text = _read(path)
-        try:
-            data = tomllib.loads(text)
-        except tomllib.TOMLDecodeError as error:
-            match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
-            line, column = (int(match[1]), int(match[2])) if match else (None, None)
-            raise InputFileError(
-                str(error).split(" (at")[0],
-                path=path,
-                line=line,
-                column=column,
-                remedy='write TOML, such as hemoglobin = 12.9 or arterial_pco2 = "39 mmHg"',
-            ) from None
+        file = read_toml(path, 'write TOML, such as hemoglobin = 12.9 or arterial_pco2 = "39 mmHg"')
+        data = dict(file.data)
         sample = data.pop("sample", None)
         known = {f.name for f in fields(cls)}
         for key in data:
             if key not in known:
-                raise _bad_key(path, text, key, "field of a person", known | {"sample"})
+                raise _unknown(file, key, "field of a person", {*known, "sample"}, "")
         if "assumed" in data:
             data["assumed"] = tuple(data["assumed"])
-        try:
-            if sample is None:
-                return cls(**data)
-            wanted = ("arterial_po2", "fio2", "arterial_pco2", "barometric_pressure")
+        wanted = ("arterial_po2", "fio2", "arterial_pco2", "barometric_pressure")
+        if sample is not None:
             if not isinstance(sample, dict):
-                raise TypeError("sample must be a table [sample]")
+                raise file.error("sample must be a table [sample]", "begin it with [sample]", key="sample")
             for key in sample:
                 if key not in wanted:
-                    raise _bad_key(path, text, key, "field of [sample]", wanted)
+                    raise _unknown(file, key, "field of [sample]", wanted, "sample")
+                if key in data:
+                    raise file.error(f"{key} is given twice", "keep one of the two", key=key, table="sample")
             for key in wanted[:3]:
                 if key not in sample:
-                    raise InputFileError(
-                        f"[sample] has no {key}",
-                        path=path,
-                        line=_line_of(text, "[sample]"),
-                        remedy=f"add {key} = ...",
-                    )
-            both = set(sample) & set(data)
-            if both:
-                raise _bad_key(path, text, both.pop(), "field given twice", wanted)
-            return cls.from_sample(**sample, **data)
-        except InputFileError:
-            raise
+                    raise file.error(f"[sample] has no {key}", f"add {key} = ...", table="sample")
+        try:
+            return cls(**data) if sample is None else cls.from_sample(**sample, **data)
         except (GasphysError, TypeError) as error:
-            named = next((k for k in [*(sample or {}), *data] if k in str(error)), "")
-            raise InputFileError(
-                str(error), path=path, line=_line_of(text, named), remedy="correct the value"
-            ) from None
+            table = {**dict.fromkeys(data, ""), **dict.fromkeys(sample or {}, "sample")}
+            named = next((key for key in table if key in str(error)), "")
+            raise file.error(str(error), "correct the value", key=named, table=table.get(named)) from None
 
 
 @functools.cache
@@ -355,30 +334,5 @@ def _number(name: str, value: Any) -> float:
     return float(value)
 
 
-def _read(path: str | os.PathLike[str]) -> str:
-    try:
-        return Path(path).read_text(encoding="utf-8-sig")
-    except UnicodeDecodeError as error:
-        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from error
-    except OSError as error:
-        raise InputFileError(
-            error.strerror or "cannot be read", path=path, remedy="check the file's name"
-        ) from None
-
-
-def _line_of(text: str, key: str) -> int | None:
-    if not key:
-        return None
-    for number, line in enumerate(text.splitlines(), start=1):
-        if line.strip().startswith(key):
-            return number
-    return None
-
-
-def _bad_key(path: Any, text: str, key: str, what: str, valid: Any) -> InputFileError:
-    return InputFileError(
-        str(unknown_name(what, key, valid)),
-        path=path,
-        line=_line_of(text, key),
-        remedy="correct or remove the line",
-    )
+def _unknown(file: TomlFile, key: str, what: str, valid: Iterable[str], table: str) -> InputFileError:
+    return file.error(str(unknown_name(what, key, valid)), "correct or remove the line", key=key, table=table)

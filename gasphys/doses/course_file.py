@@ -9,8 +9,7 @@ import io
 import itertools
 import os
 import re
-import tomllib
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -20,6 +19,7 @@ from gasphys.errors import GasphysError, InputFileError, unknown_name
 from gasphys.exposure import Exposure
 from gasphys.quantities import quantity
 from gasphys.schedules import treatment
+from gasphys.toml_files import TomlFile, parse_toml, read_text
 
 __all__ = ["read_course"]
 
@@ -84,14 +84,7 @@ def read_course(path: str | os.PathLike[str], person: str | None = None) -> Cour
     >>> course.person, course.sessions[0].label
     ('P-01', 'usn_9')
     """
-    try:
-        text = Path(path).read_text(encoding="utf-8-sig")
-    except UnicodeDecodeError:
-        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from None
-    except OSError as error:
-        raise InputFileError(
-            error.strerror or "cannot be read", path=path, remedy="check the file's name"
-        ) from None
+    text = read_text(path)
     toml = Path(path).suffix.lower() == ".toml"
     rows = _from_toml(text, str(path)) if toml else _from_csv(text, str(path))
     people = list(dict.fromkeys(str(row["person"]) for row, _ in rows))
@@ -118,7 +111,7 @@ def read_course(path: str | os.PathLike[str], person: str | None = None) -> Cour
     return Course(tuple(session for session, _ in found), chosen)
 
 
-def _from_csv(text: str, path: str) -> list[tuple[dict[str, Any], _Place]]:
+def _from_csv(text: str, path: str) -> list[tuple[dict[str, Any], _Place | _TomlPlace]]:
     lines = text.splitlines()
     numbers = [n for n, line in enumerate(lines, 1) if line.strip() and not line.lstrip().startswith("#")]
     if not numbers:
@@ -137,7 +130,7 @@ def _from_csv(text: str, path: str) -> list[tuple[dict[str, Any], _Place]]:
     for needed in ("date", "time"):
         if needed not in columns:
             raise place.error(f"there is no column {needed}", f"add {needed} to the header")
-    rows: list[tuple[dict[str, Any], _Place]] = []
+    rows: list[tuple[dict[str, Any], _Place | _TomlPlace]] = []
     for number in numbers[1:]:
         here = _Place(path, number, columns)
         cells = [c.strip() for c in next(csv.reader(io.StringIO(lines[number - 1])))]
@@ -149,61 +142,43 @@ def _from_csv(text: str, path: str) -> list[tuple[dict[str, Any], _Place]]:
     return rows
 
 
-def _from_toml(text: str, path: str) -> list[tuple[dict[str, Any], _Place]]:
-    try:
-        data = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
-        raise InputFileError(
-            str(error).split(" (at")[0],
-            path=path,
-            line=int(match[1]) if match else None,
-            column=int(match[2]) if match else None,
-            remedy="write TOML tables [[session]]",
-        ) from None
-    lines = text.splitlines()
-    given = data.pop("session", None)
+def _from_toml(text: str, path: str) -> list[tuple[dict[str, Any], _Place | _TomlPlace]]:
+    file = parse_toml(text, path, "write TOML tables [[session]]")
+    shared = {key: value for key, value in file.data.items() if key != "session"}
+    given = file.data.get("session")
     if not isinstance(given, list) or not given:
-        raise InputFileError(
-            "no [[session]] table", path=path, remedy="begin every session with a line [[session]]"
-        )
-    starts = [n for n, line in enumerate(lines, 1) if re.match(r"\s*\[\[\s*session\s*\]\]", line)]
-    bounds = [*starts[1:], len(lines) + 1]
-    for key in data:
+        raise file.error("no [[session]] table", "begin every session with a line [[session]]")
+    for key in shared:
         if key not in _COLUMNS:
-            place = _Place(path, _line_of(lines, key, 1, starts[0]), {})
-            raise place.error(str(unknown_name("field", key, _COLUMNS)), "correct the field")
-    rows: list[tuple[dict[str, Any], _Place]] = []
-    for row, first, last in zip(given, starts, bounds, strict=True):
+            raise file.error(
+                str(unknown_name("field", key, _COLUMNS)), "correct the field", key=key, table=""
+            )
+    rows: list[tuple[dict[str, Any], _Place | _TomlPlace]] = []
+    for number, row in enumerate(given):
+        here = _TomlPlace(file, number)
         for key in row:
             if key not in _COLUMNS:
-                place = _Place(path, _line_of(lines, key, first, last), {})
-                raise place.error(str(unknown_name("field", key, _COLUMNS)), "correct the field")
-        here = _TomlPlace(path, first, {}, tuple(lines), last)
-        rows.append(({**dict.fromkeys(_COLUMNS, ""), **data, **row}, here))
+                raise here.error(str(unknown_name("field", key, _COLUMNS)), "correct the field", key)
+        rows.append(({**dict.fromkeys(_COLUMNS, ""), **shared, **row}, here))
     return rows
 
 
 @dataclass(frozen=True)
-class _TomlPlace(_Place):
-    """As a place, but each field has a line of its own."""
+class _TomlPlace:
+    """As a place, for one ``[[session]]``."""
 
-    lines: tuple[str, ...] = ()
-    last: int = 0
+    file: TomlFile
+    number: int
+
+    @property
+    def path(self) -> str:
+        return self.file.path
 
     def error(self, message: str, remedy: str, column: str = "") -> InputFileError:
-        line = _line_of(self.lines, column, self.line or 1, self.last) if column else self.line
-        return InputFileError(message, path=self.path, line=line, remedy=remedy)
+        return self.file.error(message, remedy, key=column, table="session", number=self.number)
 
 
-def _line_of(lines: Sequence[str], key: str, first: int, last: int) -> int:
-    for number in range(max(first, 1), min(last, len(lines) + 1)):
-        if re.match(rf"\s*{re.escape(key)}\s*=", lines[number - 1]):
-            return number
-    return max(first, 1)
-
-
-def _session(row: dict[str, Any], place: _Place, read: Callable[..., Exposure]) -> Session:
+def _session(row: dict[str, Any], place: _Place | _TomlPlace, read: Callable[..., Exposure]) -> Session:
     start = datetime.datetime.combine(_date(row["date"], place), _time(row["time"], place))
     schedule, log = str(row["schedule"]), str(row["log"])
     if bool(schedule) == bool(log):
@@ -242,7 +217,7 @@ def _exposure(
     return treatment(name, counts[0], counts[1], attendant=attendant, descent=descent, **more)
 
 
-def _date(value: Any, place: _Place) -> datetime.date:
+def _date(value: Any, place: _Place | _TomlPlace) -> datetime.date:
     if isinstance(value, datetime.datetime) or not isinstance(value, datetime.date):
         try:
             return datetime.date.fromisoformat(str(value))
@@ -251,7 +226,7 @@ def _date(value: Any, place: _Place) -> datetime.date:
     return value
 
 
-def _time(value: Any, place: _Place) -> datetime.time:
+def _time(value: Any, place: _Place | _TomlPlace) -> datetime.time:
     if isinstance(value, datetime.time):
         return value
     if re.fullmatch(r"\d{2}:\d{2}(:\d{2})?", str(value)):
@@ -262,7 +237,7 @@ def _time(value: Any, place: _Place) -> datetime.time:
     raise place.error(f"time {value!r} is not a time of day", "write it as 08:00", "time")
 
 
-def _whole(value: Any, place: _Place, column: str) -> int:
+def _whole(value: Any, place: _Place | _TomlPlace, column: str) -> int:
     if value == "":
         return 0
     if isinstance(value, int) and not isinstance(value, bool):
@@ -272,7 +247,7 @@ def _whole(value: Any, place: _Place, column: str) -> int:
     raise place.error(f"{column} {value!r} is not a whole number", "write a whole number", column)
 
 
-def _yes(value: Any, place: _Place) -> bool:
+def _yes(value: Any, place: _Place | _TomlPlace) -> bool:
     words = {"": False, "no": False, "yes": True, "False": False, "True": True}
     if str(value) not in words:
         raise place.error(f"attendant {value!r}", "write yes or no", "attendant")

@@ -3,18 +3,16 @@
 from __future__ import annotations
 
 import os
-import re
-import tomllib
 from collections.abc import Iterable
 from dataclasses import dataclass
 from importlib import resources
-from pathlib import Path
 from typing import Any
 
 from gasphys.errors import GasphysError, InputFileError, UnknownNameError, unknown_name
 from gasphys.policy import PROVENANCE
 from gasphys.quantities import quantity
 from gasphys.sources import sources
+from gasphys.toml_files import TomlFile, parse_toml, read_toml
 
 __all__ = ["Limit", "load"]
 
@@ -142,63 +140,30 @@ def load(limits: str | os.PathLike[str] | Iterable[Any] = "default") -> tuple[Li
 
 def _shipped() -> list[Limit]:
     text = resources.files("gasphys.limits").joinpath("default.toml").read_text(encoding="utf-8")
-    return _parse(text, "gasphys/limits/default.toml", site=False)
+    return _limits(parse_toml(text, "gasphys/limits/default.toml"), site=False)
 
 
 def _file(path: str | os.PathLike[str]) -> list[Limit]:
-    try:
-        text = Path(path).read_text(encoding="utf-8-sig")
-    except UnicodeDecodeError:
-        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from None
-    except OSError as error:
-        raise InputFileError(
-            error.strerror or "cannot be read", path=path, remedy="check the file's name"
-        ) from None
-    return _parse(text, str(path), site=True)
+    return _limits(read_toml(path, "write TOML tables [[limit]]"), site=True)
 
 
-def _parse(text: str, path: str, site: bool) -> list[Limit]:
-    try:
-        data = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
-        raise InputFileError(
-            str(error).split(" (at")[0],
-            path=path,
-            line=int(match[1]) if match else None,
-            column=int(match[2]) if match else None,
-            remedy="write TOML tables [[limit]]",
-        ) from None
-    starts = [n for n, line in enumerate(text.splitlines(), 1) if line.strip() == "[[limit]]"]
-    rows = data.pop("limit", None)
-    if not isinstance(rows, list) or data:
-        extra = next(iter(data), "")
-        raise InputFileError(
-            f"only [[limit]] tables are read, found {extra!r}" if extra else "no [[limit]] table",
-            path=path,
-            remedy="begin every limit with a line [[limit]]",
-        )
-    return [
-        _limit(row, path, starts[k] if k < len(starts) else None, text, site) for k, row in enumerate(rows)
-    ]
+def _limits(file: TomlFile, site: bool) -> list[Limit]:
+    rows = file.data.get("limit")
+    if not isinstance(rows, list):
+        raise file.error("no [[limit]] table", "begin every limit with a line [[limit]]")
+    for extra in file.data:
+        if extra != "limit":
+            raise file.error(
+                f"only [[limit]] tables are read, found {extra!r}",
+                "begin every limit with a line [[limit]]",
+                key=extra,
+            )
+    return [_limit(row, file, number, site) for number, row in enumerate(rows)]
 
 
-def _limit(row: dict[str, Any], path: str, start: int | None, text: str, site: bool) -> Limit:
-    lines = text.splitlines()
-
-    def at(key: str) -> int | None:
-        if start is None:
-            return None
-        for number in range(start, len(lines) + 1):
-            stripped = lines[number - 1].strip()
-            if number > start and stripped == "[[limit]]":
-                break
-            if re.match(rf"{re.escape(key)}\s*=", stripped):
-                return number
-        return start
-
+def _limit(row: dict[str, Any], file: TomlFile, number: int, site: bool) -> Limit:
     def refuse(key: str, message: str, remedy: str) -> InputFileError:
-        return InputFileError(message, path=path, line=at(key), remedy=remedy)
+        return file.error(message, remedy, key=key, table="limit", number=number)
 
     for key in row:
         if key not in _FIELDS:

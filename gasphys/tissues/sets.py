@@ -10,8 +10,6 @@ from __future__ import annotations
 import functools
 import hashlib
 import os
-import re
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from importlib import resources
@@ -26,6 +24,7 @@ from gasphys.gas import FORMULAS
 from gasphys.policy import PROVENANCE, weakest
 from gasphys.sources import cite, sources
 from gasphys.tissues.equations import intercept_from_surfacing
+from gasphys.toml_files import parse_toml, read_text
 from gasphys.units import convert, parse_quantity, unit
 
 __all__ = ["TissueSet", "load", "models"]
@@ -335,13 +334,7 @@ def load(
         if path not in _shipped():
             raise unknown_name("tissue model", path, _shipped())
         return _load_shipped(path, chosen, variant)
-    try:
-        text = Path(path).read_text(encoding="utf-8-sig")
-    except UnicodeDecodeError:
-        raise InputFileError("not UTF-8 text", path=path, remedy="save the file as UTF-8") from None
-    except OSError as error:
-        raise InputFileError(error.strerror or "cannot be read", path=path, remedy="check the name") from None
-    return _Reader(Path(path).stem, text, path, shipped=False).read(chosen, variant)
+    return _Reader(Path(path).stem, read_text(path), path, shipped=False).read(chosen, variant)
 
 
 @functools.lru_cache(maxsize=64)
@@ -368,7 +361,8 @@ class _Reader:
     def __init__(self, name: str, text: str, path: str, shipped: bool) -> None:
         self.name, self.path, self.shipped = name, path, shipped
         self.texts = [text]
-        data: dict[str, Any] = self._parse(text)
+        self.file = parse_toml(text, path, "write TOML as in the shipped sets")
+        data: dict[str, Any] = dict(self.file.data)
         if "based_on" in data:
             base = data.pop("based_on")
             if base not in _shipped():
@@ -382,28 +376,8 @@ class _Reader:
         self.data: dict[str, Any] = data
 
     def refuse(self, key: str, message: str, remedy: str = "") -> InputFileError:
-        """Return the error for one key, with its line where it can be found."""
-        last = re.escape(key.rsplit(".", 1)[-1])
-        lines = self.texts[0].splitlines()
-        line = next(
-            (n for n, text in enumerate(lines, 1) if re.search(rf"(^|[\s.{{\[,]){last}\s*(=|\])", text)), None
-        )
-        return InputFileError(
-            f"{key}: {message}", path=self.path, line=line, remedy=remedy or f"correct {key}"
-        )
-
-    def _parse(self, text: str) -> dict[str, Any]:
-        try:
-            return tomllib.loads(text)
-        except tomllib.TOMLDecodeError as error:
-            match = re.search(r"\(at line (\d+), column (\d+)\)", str(error))
-            raise InputFileError(
-                str(error).split(" (at")[0],
-                path=self.path,
-                line=int(match[1]) if match else None,
-                column=int(match[2]) if match else None,
-                remedy="write TOML as in the shipped sets",
-            ) from None
+        """Return the error for one key, with its place where it can be found."""
+        return self.file.error(f"{key}: {message}", remedy or f"correct {key}", key=key.rsplit(".", 1)[-1])
 
     def read(self, wanted: tuple[str, ...] | None, variant: str) -> TissueSet:
         data = self.data

@@ -32,7 +32,7 @@ LATE = (
 
 #: Files and packages from the ground up: each imports only from what stands before it.
 FLOORS = """
-    errors units constants quantities sources
+    errors toml_files units constants quantities sources
     maths policy shell equation registry
     gas vapor breathing_gas laws surroundings real_gas
     lungs blood
