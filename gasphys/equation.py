@@ -1051,7 +1051,7 @@ def _choice(
     g.__doc__ = _docstring(body.__doc__ or "", g, body)
     EQUATIONS[name] = g
     for key, member in registry.items():
-        label = key if isinstance(key, str) else ",".join(map(str, key))
+        label = ",".join(map(str, key if isinstance(key, tuple) else (key,)))
         EQUATIONS.setdefault(f"{name}[{label}]", member)
     return g  # type: ignore[no-any-return]
 

@@ -26,7 +26,7 @@ from gasphys.constants import ATMOSPHERE
 from gasphys.errors import ExposureError, RangeError, UnitError, unknown_name
 from gasphys.gas import FORMULAS, Gas
 from gasphys.policy import outside_validity
-from gasphys.quantities import CAUTION, attributes, quantity
+from gasphys.quantities import attributes, dataset_attributes, quantity
 from gasphys.surroundings import WATERS
 from gasphys.units import parse_quantity, unit
 
@@ -118,6 +118,9 @@ class Exposure:
         What was assumed or repaired.
     attrs : dict
         Further global attributes of the Dataset.
+    chunks : dict
+        Sizes of the blocks along dimensions that came in chunked: models over many scenarios stay lazy there.
+        The exposure itself, a few numbers a scenario, is held in memory.
 
     Raises
     ------
@@ -147,6 +150,7 @@ class Exposure:
     part_now: str = ""
     history: tuple[str, ...] = ()
     attrs: dict[str, Any] = field(default_factory=dict)
+    chunks: dict[str, tuple[int, ...]] = field(default_factory=dict)
 
     # -- building ----------------------------------------------------------------------------
 
@@ -533,25 +537,24 @@ class Exposure:
         Raises
         ------
         ExposureError
-            If `at` is not within the exposure, or durations differ between scenarios.
+            If `at` is not within the exposure, or lies in other pieces in other scenarios.
 
         Examples
         --------
         >>> Exposure.start("air").stay(10).delay(5, at=3).duration
         15.0
         """
-        when = float(self._value(at, "time")[1])
-        time = float(self._value(minutes, "duration")[1])
-        if not 0.0 <= when <= self._one_duration():
-            raise ExposureError(
-                f"at = {when:g} min is not within the exposure of {self._one_duration():g} min"
-            )
-        cut = self._split([when])
-        times = cut.pieces().times
-        index = int(np.argmin(np.abs(times - when)))
-        index = min(index, len(cut.part) - 1)
-        at_end = abs(times[-1] - when) < abs(times[index] - when) or when == times[-1]
-        place = len(cut.part) if at_end else index
+        if isinstance(at, xr.DataArray) and at.ndim:
+            raise ExposureError("at: one time for all scenarios; pick one first")
+        when = float(np.ravel(self._value(at, "time")[1])[0])
+        new, time = self._value(minutes, "duration")
+        whole = float(np.min(self.duration))
+        if not 0.0 <= when <= whole:
+            raise ExposureError(f"at = {when:g} min is not within the exposure of {whole:g} min")
+        cut = new._split([when])
+        apart = np.abs(cut.pieces().times - when).reshape(-1, len(cut.part) + 1).max(axis=0)
+        place = int(np.argmin(apart))
+        at_end = place == len(cut.part)
         model = place - 1 if at_end else place
         pressure = cut.columns["end_pressure" if at_end else "start_pressure"][..., model]
 
@@ -559,7 +562,10 @@ class Exposure:
             return np.insert(column, place, value, axis=-1)
 
         columns = {k: insert(v, v[..., model]) for k, v in cut.columns.items()}
-        columns["segment_duration"][..., place] = time
+        length = columns["segment_duration"]
+        lead = np.broadcast_shapes(np.shape(time), length.shape[:-1])
+        columns["segment_duration"] = length = np.broadcast_to(length, (*lead, length.shape[-1])).copy()
+        length[..., place] = time
         columns["start_pressure"][..., place] = pressure
         columns["end_pressure"][..., place] = pressure
         return replace(
@@ -568,6 +574,87 @@ class Exposure:
             fractions={k: insert(v, v[..., model]) for k, v in cut.fractions.items()},
             part=(*cut.part[:place], "delay", *cut.part[place:]),
             session=(*cut.session[:place], cut.session[model], *cut.session[place:]),
+        )
+
+    def pick(self, **labels: Any) -> Exposure:
+        """Return one scenario along one or more of the exposure's dimensions.
+
+        Parameters
+        ----------
+        **labels
+            Dimension to one of its labels.
+
+        Returns
+        -------
+        Exposure
+            Without those dimensions.
+
+        Raises
+        ------
+        ExposureError
+            If there is no such dimension or label.
+
+        Examples
+        --------
+        >>> depths = xr.DataArray([18.0, 30.0], dims="draw", coords={"draw": ["a", "b"]}, attrs={"units": "msw"})
+        >>> Exposure.start("air").travel(depth=depths, minutes=2).pick(draw="b").pieces().end_pressure
+        array([401.325])
+        """
+        new = self
+        for dim, label in labels.items():
+            if dim not in new.dims:
+                raise ExposureError(
+                    f"there is no dimension {dim!r}; there are: {', '.join(new.dims) or 'none'}"
+                )
+            place = np.flatnonzero(np.asarray(new.coords[dim]) == label)
+            if place.size != 1:
+                known = ", ".join(str(x) for x in np.asarray(new.coords[dim])[:10])
+                raise ExposureError(f"dimension {dim!r} has no label {label!r}; it has {known}")
+            new = new._at(new.dims.index(dim), int(place[0]))
+        return new
+
+    def scenarios(self) -> list[Exposure]:
+        """Return every scenario as an exposure of its own, the last dimension fastest.
+
+        Returns
+        -------
+        list of Exposure
+            Itself, where it has no scenario dimension.
+
+        Examples
+        --------
+        >>> times = xr.DataArray([5.0, 10.0], dims="draw", attrs={"units": "min"})
+        >>> [x.duration for x in Exposure.start("air").stay(times).scenarios()]
+        [5.0, 10.0]
+        """
+        found = [self]
+        for dim in self.dims:
+            found = [one._at(one.dims.index(dim), k) for one in found for k in range(len(self.coords[dim]))]
+        return found
+
+    def _at(self, axis: int, place: int) -> Exposure:
+        """Take one place along a dimension."""
+        dim = self.dims[axis]
+
+        def one(values: Any) -> Any:
+            values = np.asarray(values, dtype=float)
+            if values.ndim <= axis:
+                return values if values.ndim else float(values)
+            taken = np.take(values, place if values.shape[axis] > 1 else 0, axis=axis)
+            return taken if taken.ndim else float(taken)
+
+        return replace(
+            self,
+            dims=tuple(d for d in self.dims if d != dim),
+            coords={k: v for k, v in self.coords.items() if k != dim},
+            columns={k: one(v) for k, v in self.columns.items()},
+            fractions={k: one(v) for k, v in self.fractions.items()},
+            gas={k: one(v) for k, v in self.gas.items()},
+            pressure=one(self.pressure),
+            surface_pressure=one(self.surface_pressure),
+            setpoint_now=one(self.setpoint_now),
+            workload=(one(self.workload[0]), one(self.workload[1])),
+            chunks={k: v for k, v in self.chunks.items() if k != dim},
         )
 
     # -- what it holds -----------------------------------------------------------------------
@@ -648,21 +735,15 @@ class Exposure:
         """
         if not self.part:
             raise ExposureError("the exposure has no piece yet")
-        from gasphys import __version__
-
         pieces = self.pieces()
         ds = self.segment_view()
         self._time_view(ds, pieces, at)
-        ds.attrs = {
-            "Conventions": "CF-1.11",
-            "title": self.attrs.get("title", "exposure: pressure and breathing gas against time"),
-            "source": f"gasphys {__version__}, exposure",
-            "history": "\n".join(self.history) or "as given",
-            "references": self.attrs.get("references", ""),
-            "comment": CAUTION,
-            **ds.attrs,
-            **{k: v for k, v in self.attrs.items() if k not in ("title", "references")},
-        }
+        common = dataset_attributes(
+            self.attrs.get("title", "exposure: pressure and breathing gas against time"),
+            "exposure",
+            history=self.history,
+        )
+        ds.attrs = {**common, "references": "", **ds.attrs, **self.attrs, "title": common["title"]}
         return ds
 
     def segment_view(self) -> xr.Dataset:
@@ -922,6 +1003,7 @@ class Exposure:
             part_now=part[-1],
             history=() if history in ("", "as given") else tuple(history.split("\n")),
             attrs={str(k): v for k, v in ds.attrs.items() if k not in known},
+            chunks={d: tuple(ds.chunks[d]) for d in dims if d in ds.chunks},
         )
         new._check()
         return new._split_clamps()
@@ -1051,10 +1133,12 @@ class Exposure:
         one = quantity(name)
         if isinstance(value, str):
             value = one.from_text(value)
+        new = self
         if isinstance(value, xr.DataArray):
+            new = new._chunked(value)
             given = value.attrs.get("units", one.unit)
             value = value.copy(data=one.from_unit(value.values.astype(float), str(given)))
-        new, plain = self._plain(value, name)
+        new, plain = new._plain(value, name)
         low, high = one.possible
         good = (plain >= low) & (plain <= high)
         if missing:
@@ -1065,7 +1149,7 @@ class Exposure:
 
     def _plain(self, value: Any, name: str) -> tuple[Exposure, Any]:
         if isinstance(value, xr.DataArray) and value.ndim:
-            new = self
+            new = self._chunked(value)
             for dim in value.dims:
                 new = new._adopt(
                     str(dim), value[dim].values if dim in value.coords else np.arange(value.sizes[dim])
@@ -1082,6 +1166,13 @@ class Exposure:
                 f"{name} must be a number, text with a unit, or a DataArray; got {type(value).__name__}"
             ) from None
         return self, np.full((1,) * len(self.dims), number) if self.dims else number
+
+    def _chunked(self, value: xr.DataArray) -> Exposure:
+        """Remember the blocks of a chunked input; the first one along a dimension decides."""
+        if value.chunks is None:
+            return self
+        found = {str(d): tuple(c) for d, c in zip(value.dims, value.chunks, strict=True) if d != "gas"}
+        return replace(self, chunks=found | self.chunks)
 
     def _adopt(self, dim: str, labels: Any) -> Exposure:
         if dim in self.dims:
@@ -1241,12 +1332,16 @@ class Exposure:
         """Cut pieces at times; nothing else changes."""
         new = self
         for when in at:
-            times = new.pieces().times.reshape(-1, len(new.part) + 1)[0]
-            index = int(np.clip(np.searchsorted(times, when, side="right") - 1, 0, len(new.part) - 1))
-            length = times[index + 1] - times[index]
-            share = (when - times[index]) / length if length else 0.0
-            if 0.0 < share < 1.0:
-                new = new._cut(index, np.asarray(share))
+            times = new.pieces().times
+            inside = (times[..., :-1] < when) & (when < times[..., 1:])
+            for index in np.flatnonzero(inside.reshape(-1, len(new.part)).any(axis=0))[::-1]:
+                start, end = times[..., index], times[..., index + 1]
+                if not np.all((start <= when) & (when <= end)):
+                    raise ExposureError(
+                        f"{when:g} min lies in another piece in another scenario; pick one first"
+                    )
+                length = np.where(end > start, end - start, 1.0)
+                new = new._cut(int(index), np.where(end > start, (when - start) / length, 0.0))
         return new
 
     def _cut(self, index: int, share: Any) -> Exposure:

@@ -308,10 +308,12 @@ def dry_air_standards() -> dict[str, dict[str, Any]]:
 
 def _summed(gas: Any) -> Any:
     """Refuse fractions that do not sum to 1: one mixture raises, elements of an array become nan."""
-    if gas.chunks is not None or gas.dtype.kind not in "fiu":
+    if gas.dtype.kind not in "fiu":
         return gas
     total = gas.sum("gas", skipna=False) * convert(1.0, gas.attrs.get("units", "1"), "1")
     wrong = abs(total - 1.0) > 1e-6
+    if gas.chunks is not None:  # not looked at before it is computed: nan there, without a warning
+        return gas.where(~wrong).assign_attrs(gas.attrs)
     if not wrong.any():
         return gas
     first = float(total.values[wrong.values].flat[0])

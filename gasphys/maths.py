@@ -24,6 +24,7 @@ __all__ = [
     "expm1",
     "find_root",
     "log",
+    "log1p",
     "log10",
     "maximum",
     "mean_log",
@@ -44,6 +45,7 @@ exp = np.exp
 expm1 = np.expm1
 log = np.log
 log10 = np.log10
+log1p = np.log1p
 sin = np.sin
 sqrt = np.sqrt
 tanh = np.tanh
@@ -178,7 +180,8 @@ def ramp_gain(x: Any) -> Any:
     >>> float(ramp_gain(0.0))
     0.0
     """
-    negative = -np.asarray(x, dtype=np.float64)
+    # A complex x carries a derivative in its imaginary part (gasphys.risk).
+    negative = -np.asarray(x, dtype=None if np.iscomplexobj(x) else np.float64)
     with np.errstate(invalid="ignore", divide="ignore"):
         result = ramp_gain_from(negative, np.expm1(negative))
     return result if result.ndim else float(result)
@@ -199,7 +202,7 @@ def ramp_gain_from(negative: NDArray[np.float64], change: NDArray[np.float64]) -
     series *= negative
     series -= 0.5
     series *= change
-    return np.where(negative > -_SHORT, series, 1.0 - change / negative)
+    return np.where(negative.real > -_SHORT, series, 1.0 - change / negative)
 
 
 #: Names bound to numpy: the binding of ``f.raw``.
@@ -208,6 +211,7 @@ ARRAY: dict[str, Any] = {
     "expm1": np.expm1,
     "log": np.log,
     "log10": np.log10,
+    "log1p": np.log1p,
     "sin": np.sin,
     "sqrt": np.sqrt,
     "tanh": np.tanh,
@@ -243,6 +247,7 @@ SCALAR: dict[str, Any] = {
     "expm1": math.expm1,
     "log": math.log,
     "log10": math.log10,
+    "log1p": math.log1p,
     "sin": math.sin,
     "sqrt": math.sqrt,
     "tanh": math.tanh,
@@ -382,6 +387,7 @@ def symbolic_names() -> dict[str, Any]:
     return {
         "exp": sp.exp,
         "expm1": lambda x: sp.exp(x) - 1,
+        "log1p": lambda x: sp.log(1 + x),
         "log": sp.log,
         "log10": lambda x: sp.log(x) / sp.log(10),
         "sin": sp.sin,

@@ -13,8 +13,9 @@ from typing import Any
 from gasphys import blood, lungs
 from gasphys.errors import GasphysError, InputFileError, RangeError, unknown_name
 from gasphys.policy import outside_validity
-from gasphys.quantities import quantity
+from gasphys.quantities import attributes, quantity
 from gasphys.toml_files import TomlFile, read_toml
+from gasphys.units import convert
 
 __all__ = ["Person"]
 
@@ -59,6 +60,8 @@ class Person:
         Gas exchange at rest [L/min STPD].
     cohb_fraction : float, optional
         Carboxyhemoglobin [1].
+    surface_maximum_ventilation_btps : float, optional
+        Maximum voluntary ventilation in air at the surface [L/min BTPS].
     assumed : tuple of str
         Names of given fields that are assumed, not measured.
 
@@ -72,7 +75,9 @@ class Person:
     Notes
     -----
     A field that is not given is None; :meth:`value` then returns the assumed value of
-    ``person_defaults.toml``, and results name it as assumed.
+    ``person_defaults.toml``, and results name it as assumed. A field may hold several persons: a labelled
+    array, which broadcasts over the scenarios of an exposure (:func:`gasphys.gas_exchange.oxygenation`), or
+    a plain one, which gets the dimension ``person``.
 
     Examples
     --------
@@ -95,6 +100,7 @@ class Person:
     o2_uptake_stpd: Any = None
     co2_output_stpd: Any = None
     cohb_fraction: Any = None
+    surface_maximum_ventilation_btps: Any = None
     assumed: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
@@ -105,6 +111,9 @@ class Person:
             if value is None:
                 continue
             one = quantity(name)
+            if hasattr(value, "__len__") and not isinstance(value, str):
+                object.__setattr__(self, name, _of_several(name, value))
+                continue
             if isinstance(value, str):
                 value = one.from_text(value)
             if isinstance(value, bool) or not isinstance(value, (int, float)):
@@ -117,7 +126,7 @@ class Person:
             if name not in measurable():
                 raise unknown_name("field of a person", name, measurable())
 
-    def value(self, name: str) -> float:
+    def value(self, name: str) -> Any:
         """Return a field, measured or assumed.
 
         Parameters
@@ -127,8 +136,8 @@ class Person:
 
         Returns
         -------
-        float
-            In the canonical unit.
+        float or DataArray
+            In the canonical unit; a DataArray where it was given for several persons.
 
         Raises
         ------
@@ -144,8 +153,63 @@ class Person:
             raise unknown_name("field of a person", name, measurable())
         given = getattr(self, name)
         if given is None and name == "arteriovenous_difference" and self._has_flow():
-            return float(blood.arteriovenous_o2_difference(self.o2_uptake_stpd, self.cardiac_output))
-        return float(_defaults()[name]["value"]) if given is None else float(given)
+            return blood.arteriovenous_o2_difference(self.o2_uptake_stpd, self.cardiac_output)
+        return float(_defaults()[name]["value"]) if given is None else given
+
+    def told(self, names: Iterable[str], *, measured: bool) -> str:
+        """Return fields in words: those that are measured, or those that are assumed.
+
+        Parameters
+        ----------
+        names : iterable of str
+            Fields.
+        measured : bool
+            Which of them.
+
+        Returns
+        -------
+        str
+            Such as ``"hemoglobin = 12.9, arterial_ph = 7.4"``; of several persons lowest and highest.
+
+        Examples
+        --------
+        >>> Person(hemoglobin=[9.0, 12.9]).told(["hemoglobin", "arterial_ph"], measured=True)
+        'hemoglobin = 9 to 12.9'
+        """
+        words = []
+        for name in names:
+            if self.is_measured(name) == measured:
+                value = self.value(name)
+                if isinstance(value, float):
+                    words.append(f"{name} = {value:g}")
+                elif value.chunks is not None:
+                    words.append(f"{name} of {value.size} persons")
+                else:
+                    words.append(f"{name} = {float(value.min()):g} to {float(value.max()):g}")
+        return ", ".join(words)
+
+    def one(self) -> Person:
+        """Return this person if it is a single one.
+
+        Returns
+        -------
+        Person
+            The same.
+
+        Raises
+        ------
+        GasphysError
+            If a field is given for several persons.
+
+        Examples
+        --------
+        >>> Person(hemoglobin=12.9).one().hemoglobin
+        12.9
+        """
+        for name in measurable():
+            if getattr(self, name) is not None and not isinstance(getattr(self, name), float):
+                raise GasphysError(f"{name} is given for several persons; this asks for one: pick one first")
+        return self
 
     def is_measured(self, name: str) -> bool:
         """Tell whether a field was given and is not marked as assumed.
@@ -242,9 +306,10 @@ class Person:
         shunt = blood.shunt_at_arterial_po2(
             po2,
             alveolar,
-            blood.functional_hemoglobin(person.value("hemoglobin"), person.value("cohb_fraction")),
+            person.value("hemoglobin"),
             person.value("arteriovenous_difference"),
             person.value("arterial_ph"),
+            person.value("cohb_fraction"),
         )
         return replace(person, shunt_fraction=shunt)
 
@@ -257,7 +322,8 @@ class Person:
         path : path
             Fields of :class:`Person` at the top level; a table ``[sample]`` with
             ``arterial_po2``, ``fio2``, ``arterial_pco2`` and ``barometric_pressure`` for the
-            arterial/alveolar ratio. Numbers in canonical units or text such as ``"190 mmHg"``.
+            arterial/alveolar ratio; a table ``[devices]`` is left to the chamber's worksheet. Numbers in
+            canonical units or text such as ``"190 mmHg"``.
 
         Returns
         -------
@@ -280,10 +346,11 @@ class Person:
         file = read_toml(path, 'write TOML, such as hemoglobin = 12.9 or arterial_pco2 = "39 mmHg"')
         data = dict(file.data)
         sample = data.pop("sample", None)
+        data.pop("devices", None)  # what is attached to the person: read where it matters
         known = {f.name for f in fields(cls)}
         for key in data:
             if key not in known:
-                raise _unknown(file, key, "field of a person", {*known, "sample"}, "")
+                raise _unknown(file, key, "field of a person", {*known, "sample", "devices"}, "")
         if "assumed" in data:
             data["assumed"] = tuple(data["assumed"])
         wanted = ("arterial_po2", "fio2", "arterial_pco2", "barometric_pressure")
@@ -321,6 +388,31 @@ def measurable() -> tuple[str, ...]:
     True
     """
     return tuple(f.name for f in fields(Person) if f.name not in ("code", "role", "assumed"))
+
+
+def _of_several(name: str, value: Any) -> Any:
+    """Return values of several persons as a labelled array in the canonical unit."""
+    import numpy as np
+    import xarray as xr
+
+    one = quantity(name)
+    if isinstance(value, xr.DataArray):
+        if value.attrs.get("units", "1") != one.unit:
+            bare = xr.DataArray(value.data, dims=value.dims, coords=value.coords)
+            value = convert(bare, value.attrs.get("units", "1"), one.unit)
+    else:
+        plain = np.asarray(value, dtype=float)
+        if plain.ndim != 1:
+            raise TypeError(f"{name}: give a DataArray with named dimensions, or a row of numbers")
+        value = xr.DataArray(plain, dims="person")
+    if value.chunks is None:
+        wrong = ~((value >= one.possible[0]) & (value <= one.possible[1]))
+        if bool(wrong.any()):
+            raise one.range_error(float(value.values[wrong.values].flat[0]))
+        value = value.astype(float)
+    value = value.copy(deep=False)
+    value.attrs = attributes(name)
+    return value
 
 
 def _number(name: str, value: Any) -> float:

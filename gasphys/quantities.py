@@ -6,6 +6,7 @@ The data stand in ``quantities.toml``, written once.
 from __future__ import annotations
 
 import tomllib
+from collections.abc import Iterable
 from dataclasses import dataclass
 from importlib import resources
 from typing import Any
@@ -13,7 +14,7 @@ from typing import Any
 from gasphys.errors import RangeError, UnitError, unknown_name
 from gasphys.units import convert, parse_quantity, unit
 
-__all__ = ["CAUTION", "QUANTITIES", "Quantity", "attributes", "quantity"]
+__all__ = ["CAUTION", "QUANTITIES", "Quantity", "attributes", "dataset_attributes", "quantity"]
 
 #: The caution that every dataset, page and command output carries.
 CAUTION = (
@@ -203,3 +204,52 @@ def attributes(name: str, **more: str | float | int) -> dict[str, Any]:
         attrs["dose_unit"] = one.dose_unit
     attrs.update(more)
     return attrs
+
+
+def dataset_attributes(
+    title: str,
+    source: str,
+    *,
+    history: Iterable[str] = (),
+    references: Iterable[str] = (),
+    comment: str = "",
+    **more: Any,
+) -> dict[str, Any]:
+    """Return the attributes every result carries: what it is, what made it, from what, the caution.
+
+    Parameters
+    ----------
+    title : str
+        What the dataset holds.
+    source : str
+        What of gasphys made it; the version stands before it.
+    history : iterable of str
+        What was done to the exposure, an entry a step.
+    references : iterable of str
+        Keys of ``sources.toml``; repeats are dropped.
+    comment : str
+        Said after the caution.
+    **more : Any
+        Further attributes.
+
+    Returns
+    -------
+    dict
+        Attributes of a dataset.
+
+    Examples
+    --------
+    >>> dataset_attributes("pressure", "exposure")["history"]
+    'as given'
+    """
+    from gasphys import __version__
+
+    return {
+        "Conventions": "CF-1.11",
+        "title": title,
+        "source": f"gasphys {__version__}, {source}",
+        "history": "\n".join(history) or "as given",
+        "references": "; ".join(dict.fromkeys(references)),
+        "comment": f"{CAUTION} {comment}".rstrip(),
+        **more,
+    }

@@ -20,9 +20,14 @@ MODULES = (
     "lungs",
     "blood",
     "gas_exchange.equations",
+    "breathing.equations",
     "doses.equations",
     "tissues.equations",
+    "bubbles.equations",
+    "risk.equations",
     "ascent.equations",
+    "supply.equations",
+    "chamber.equations",
 )
 
 
@@ -70,7 +75,7 @@ def as_records() -> list[dict[str, Any]]:
                 "result": f.result.name,
                 "unit": f.result.unit,
                 "latex": f.latex() if f.kind == "formula" else "",
-                "choices": [k if isinstance(k, str) else list(k) for k in getattr(f, "registry", {})],
+                "choices": [list(k) if isinstance(k, tuple) else k for k in getattr(f, "registry", {})],
                 "arguments": [
                     {
                         "name": a.name,

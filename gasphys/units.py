@@ -123,6 +123,7 @@ UNITS: dict[str, Unit] = {
         _u("mW", 1e-3, (1, 2, -3, 0, 0), "1e-3 W"),
         _u("N", 1.0, (1, 1, -2, 0, 0), "SI"),
         _u("mN", 1e-3, (1, 1, -2, 0, 0), "1e-3 N"),
+        _u("kgf", _GRAVITY, (1, 1, -2, 0, 0), "kilogram-force, 9.80665 N"),
         _u("degrees_north", 1.0, _NONE, "latitude"),
     ]
 }

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from gasphys.quantities import CAUTION, attributes
+from gasphys.quantities import attributes, dataset_attributes
 from gasphys.sources import cite
 
 if TYPE_CHECKING:
@@ -66,9 +66,5 @@ def exercise_o2_uptake() -> xr.Dataset:
             "note": ("task", [row["note"] for row in rows]),
         },
         coords={"task": [row["task"] for row in rows]},
-        attrs={
-            "title": "O2 uptake of tasks in water and on land",
-            "references": "; ".join(dict.fromkeys(keys)),
-            "comment": CAUTION,
-        },
+        attrs=dataset_attributes("O2 uptake of tasks in water and on land", "lungs", references=keys),
     )
