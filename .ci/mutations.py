@@ -30,32 +30,49 @@ ACCEPTED = ROOT / ".ci" / "mutation_survivors.toml"
 #: "rows PREFIX ..." are the published rows of the equations that begin with a prefix.
 TESTS = {
     "gasphys/limits": ["tests/data/test_transcriptions.py", "tests/floors/test_review.py", "tests/doses"],
-    "gasphys/schedules": ["tests/data/test_transcriptions.py", "tests/floors/test_doses_along.py"],
+    "gasphys/schedules": [
+        "tests/data/test_transcriptions.py",
+        "tests/schedules",
+        "tests/floors/test_doses_along.py",
+    ],
     "gasphys/person_defaults": ["tests/data/test_transcriptions.py", "tests/floors/test_person.py"],
     "gasphys/dry_air": ["tests/data/test_transcriptions.py", "tests/floors/test_exposure.py"],
     "gasphys/constants": [
         "rows laws. lungs. blood. surroundings.",
-        "rows real_gas. doses.",
+        "rows real_gas. doses. bubbles.",
+        "tests/bubbles/test_published_data.py",
         "tests/data/test_transcriptions.py",
         "tests/twins/test_surroundings.py",
     ],
     "gasphys/real_gas": ["rows real_gas.", "tests/real_gas"],
     "gasphys/doses": ["rows doses.", "tests/doses", "tests/properties/test_doses.py"],
     "gasphys/tissues": ["rows tissues.", "tests/tissues"],
+    "gasphys/bubbles": [
+        "rows bubbles.",
+        "tests/properties/test_bubbles.py",
+        "tests/bubbles/test_published_data.py",
+        "tests/bubbles/test_nuclei.py",
+        "tests/bubbles",
+    ],
+    "gasphys/ascent": ["tests/properties/test_ascent.py", "tests/ascent"],
     "gasphys/blood": ["rows blood.", "tests/lungs_and_blood", "tests/properties/test_lungs_and_blood.py"],
     "gasphys/lungs": ["rows lungs.", "tests/lungs_and_blood", "tests/properties/test_lungs_and_blood.py"],
     "gasphys/vapor": ["rows lungs. vapor.", "tests/lungs_and_blood", "tests/twins"],
+    "gasphys/breathing/": ["rows breathing.", "tests/breathing", "tests/properties/test_breathing.py"],
     "gasphys/breathing_gas": ["rows breathing_gas.", "tests/properties/test_floor_equations.py"],
     "gasphys/gas_exchange": [
         "rows gas_exchange.",
         "tests/gas_exchange",
         "tests/properties/test_gas_exchange.py",
     ],
+    "gasphys/risk": ["rows risk.", "tests/properties/test_risk.py", "tests/risk"],
+    "gasphys/chamber/equations": ["rows chamber.", "tests/properties/test_chamber.py"],
     "gasphys/laws": [
         "rows laws.",
         "tests/properties/test_laws_and_surroundings.py",
         "tests/properties/test_floor_equations.py",
     ],
+    "gasphys/supply": ["rows supply.", "tests/properties/test_supply.py", "tests/supply"],
     "gasphys/surroundings": [
         "rows surroundings.",
         "tests/properties/test_laws_and_surroundings.py",
@@ -74,8 +91,13 @@ CODE = [
     "gasphys/blood*",
     "gasphys/real_gas/*.py",
     "gasphys/gas_exchange/equations.py",
+    "gasphys/breathing/*.py",
     "gasphys/doses/*.py",
     "gasphys/tissues/equations.py",
+    "gasphys/bubbles/equations.py",
+    "gasphys/risk/equations.py",
+    "gasphys/supply/equations.py",
+    "gasphys/chamber/equations.py",
     "gasphys/constants.py",
 ]
 DATA = [
@@ -83,11 +105,14 @@ DATA = [
     "gasphys/schedules/*.csv",
     "gasphys/dry_air.toml",
     "gasphys/person_defaults.toml",
+    "gasphys/breathing/*.csv",
     "gasphys/doses/*.csv",
     "gasphys/blood/*.csv",
     "gasphys/real_gas/*.toml",
     "gasphys/tissues/**/*.toml",
     "gasphys/tissues/**/*.csv",
+    "gasphys/bubbles/*.toml",
+    "gasphys/bubbles/*.csv",
 ]
 
 
@@ -250,7 +275,8 @@ def tests_for(path: str) -> list[str]:
     """Return the tests that speak of a file and exist."""
     for prefix, folders in TESTS.items():
         if path.startswith(prefix):
-            return [f for f in folders if f.startswith("rows ") or (ROOT / f).exists()]
+            found = [f for f in folders if f.startswith("rows ") or (ROOT / f).exists()]
+            return found if path.endswith(".py") else ["tests/data/test_control_sums.py", *found]
     raise KeyError(f"{path}: say in TESTS which tests speak of it")
 
 

@@ -32,7 +32,8 @@ from gasphys.quantities import CAUTION, attributes
 
 from .samples import LEAVES, columns, each, each_argument, for_all, other_unit, samples, wrong_units
 
-TIGHT = 1e-12
+#: A number, an array and an old numpy may each take another logarithm, and differences cancel.
+TIGHT = 5e-12
 
 PINT = pint.UnitRegistry()
 
@@ -459,7 +460,8 @@ def test_units_of_labelled_input(name: str, argument: str) -> None:
     converted = good[argument].copy(data=gp.convert(values[argument], one.unit, other))
     converted.attrs["units"] = other
     np.testing.assert_allclose(f(**{**good, argument: converted}).values, expected.values, rtol=1e-9)
-    missing = good[argument].drop_attrs()
+    missing = good[argument].assign_attrs()
+    missing.attrs.clear()
     with pytest.raises(UnitError, match="units") as caught:
         f(**{**good, argument: missing})
     assert argument in str(caught.value)

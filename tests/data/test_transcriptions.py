@@ -12,8 +12,12 @@ from gasphys.constants import CONSTANTS
 from gasphys.gas import FORMULAS, Gas, dry_air_standards
 from gasphys.limits import load
 from gasphys.person import Person, measurable
+from gasphys.policy import PROVENANCE
 from gasphys.quantities import quantity
+from gasphys.schedules import attendant_oxygen, surface_intervals
+from gasphys.schedules.data import read_rows
 from gasphys.schedules.tables import segments, tables
+from gasphys.sources import sources
 
 HERE = Path(__file__).parent / "transcribed"
 
@@ -28,7 +32,8 @@ def test_every_segment_of_every_table() -> None:
     for row in rows("treatment_tables.csv"):
         wanted.setdefault(row["table"], []).append(row)
     shipped = segments()
-    assert set(wanted) == {name for name in shipped if name.startswith("usn_")}
+    others = ("usn_1a", "usn_2a", "usn_3", "usn_4", "usn_6a_before_rev_4", "usn_9_extension_45")
+    assert set(wanted) == {name for name in shipped if name.startswith("usn_")} - set(others)
     for name, expected in wanted.items():
         assert len(shipped[name]) == len(expected)
         for got, row in zip(shipped[name], expected, strict=True):
@@ -57,7 +62,10 @@ def test_the_clinical_session() -> None:
 def test_tables_are_whole(name: str) -> None:
     table = tables()[name]
     pieces = table["segments"]
-    assert pieces[0].start in ("0", "surface")
+    if table.get("steps"):
+        assert not pieces
+        return
+    assert table.get("descent_inside") or pieces[0].start in ("0", "surface")
     assert pieces[-1].end in ("0", "surface")
     for before, after in itertools.pairwise(pieces):
         assert before.end == after.start
@@ -66,28 +74,106 @@ def test_tables_are_whole(name: str) -> None:
         assert table[key]
 
 
-#: Attendants, US Navy Diving Manual Rev 4 Change A, p 21-26 [read]: minutes at the stop with at most one
-#: extension and with more, and the stop's depth.
-ATTENDANTS = {
-    "usn_5": ([0, 0], 30),
-    "usn_6": ([30, 60], 30),
-    "usn_6a": ([60, 90], 30),
-    "usn_9": ([15, 15], 45),
+#: Most extensions at the deeper and the shallower stop, and variants the tables themselves allow.
+MOST = {
+    "usn_5": (0, 2),
+    "usn_6": (2, 2),
+    "usn_6a": (2, 2),
+    "usn_9": (5, 0),  # O2 may total 4 h: 90 + 5 x 30 min
 }
 
 
-def test_attendants_and_extensions() -> None:
-    for name, (minutes, depth) in ATTENDANTS.items():
-        assert tables()[name]["attendant_stop_minutes"] == minutes
-        assert tables()[name]["attendant_depth"] == depth
-    most = {name: (t["most_deep"], t["most_shallow"]) for name, t in tables().items()}
-    assert most == {
-        "usn_5": (0, 2),
-        "usn_6": (2, 2),
-        "usn_6a": (2, 2),
-        "usn_9": (0, 0),
-        "clinical_2_4_atm": (0, 0),
-    }
+def test_extensions() -> None:
+    for name, table in tables().items():
+        assert (table["most_deep"], table["most_shallow"]) == MOST.get(name, (0, 0))
+
+
+def test_stops_of_the_air_tables_and_of_table_4() -> None:
+    wanted: dict[str, list[tuple[str, str, float]]] = {}
+    found = rows("stops_of_long_tables.csv")
+    for row, after in itertools.zip_longest(found, found[1:]):
+        stop = row["stop_fsw"]
+        end = after["stop_fsw"] if after and after["table"] == row["table"] else "0"
+        wanted.setdefault(row["table"], []).append((stop, stop, float(row["minutes"])))
+        wanted[row["table"]].append((stop, end, float(row["travel_minutes"])))
+    assert set(wanted) == {"usn_1a", "usn_2a", "usn_3", "usn_4"}
+    for name, expected in wanted.items():
+        assert [(r.start, r.end, r.minutes) for r in segments()[name]] == expected
+        for row in segments()[name]:
+            cycles = name == "usn_4" and float(row.start) <= 60.0
+            assert row.gas == ("oxygen in cycles" if cycles else "air")
+
+
+def test_table_6a_of_old() -> None:
+    """165 fsw 30 min including the descent, 165 to 60 in 4 min, then Table 6 from 60 fsw."""
+    old, six = segments()["usn_6a_before_rev_4"], segments()["usn_6"]
+    assert [(r.start, r.end, r.minutes, r.gas) for r in old[:2]] == [
+        ("165", "165", 30.0, "air"),
+        ("165", "60", 4.0, "air"),
+    ]
+    assert [(r.start, r.end, r.minutes, r.gas) for r in old[2:]] == [
+        (r.start, r.end, r.minutes, r.gas) for r in six[1:]
+    ]
+
+
+#: Tables of steps: minutes of a stop by depth, [memory-medium]: the rates of Table 7 are 3, 2, 1 fsw/h.
+STEPS = {
+    "usn_7": {42: 40, 58: 40, 40: 60, 22: 60, 20: 120, 6: 120, 4: 240},
+    "usn_8": {222: 5, 166: 5, 164: 12, 142: 12, 140: 15, 122: 15, 120: 20, 102: 20, 100: 25, 82: 25, 80: 30}
+    | {62: 30, 60: 40, 42: 40, 40: 60, 22: 60, 20: 120, 4: 120, 2: 120},
+}
+LONGEST = {225: 30, 165: 180, 140: 300, 120: 480, 100: 660, 80: 900, 60: float("inf")}
+
+
+def test_tables_of_steps() -> None:
+    for name, minutes in STEPS.items():
+        bands = [r for r in read_rows("stops.csv") if r["table"] == name]
+        for depth, expected in minutes.items():
+            (band,) = [r for r in bands if float(r["shallowest"]) <= depth <= float(r["deepest"])]
+            assert float(band["minutes"]) == expected
+            assert float(band["step"]) == 2.0
+    stays = {float(r["depth"]): float(r["minutes"]) for r in read_rows("longest_stays.csv")}
+    assert stays == LONGEST
+
+
+@pytest.mark.parametrize("row", rows("attendants.csv"), ids=lambda r: "-".join(r.values()))
+def test_attendants(row: dict[str, str]) -> None:
+    owed = attendant_oxygen(
+        row["table"],
+        extensions=int(row["extensions"]),
+        exposed_before=row["exposed_before"] == "yes",
+        altitude=f"{row['altitude_ft']} ft",
+    )
+    assert owed.minutes == float(row["minutes"])
+    assert (owed.ascent, owed.provenance) == (row["ascent"], row["provenance"])
+    assert owed.edition.startswith("Revision 4 Change A")
+    assert owed.depth == {"usn_9": 45.0, "usn_7": 60.0}.get(row["table"], 30.0)
+
+
+def test_every_cell_of_the_attendants_says_who_says_so() -> None:
+    for name in ("attendants.csv", "intervals.csv"):
+        for row in read_rows(name):
+            assert row["provenance"] in PROVENANCE
+            assert row["edition"]
+            assert row["source"] in sources()
+
+
+#: Hours after tending, US Navy Diving Manual Revision 4 Change A, p 21-26 to 21-29 [read].
+SHORT, LONG = ("1a", "2a", "3", "5", "6", "6a"), ("4", "7", "8")
+HOURS = {
+    "treatment": (12, 48),
+    "no-stop dive": (12, 48),
+    "dive with stops": (24, 48),
+    "flying": (24, 72),
+    "near the chamber": (1, 1),
+}
+
+
+def test_intervals() -> None:
+    for place, group in enumerate((SHORT, LONG)):
+        for table in group:
+            found = {r["next"]: int(r["hours"]) for r in surface_intervals(f"usn_{table}")}
+            assert found == {what: hours[place] for what, hours in HOURS.items()}
 
 
 def test_every_limit() -> None:

@@ -299,6 +299,8 @@ def test_registry_names_lead_to_the_equations() -> None:
         module, _, function = choice.rpartition(".")
         value = getattr(importlib.import_module(f"gasphys.{module}"), function)
         if member:
-            keys = {k if isinstance(k, str) else ",".join(map(str, k)): v for k, v in value.registry.items()}
+            keys = {
+                ",".join(map(str, k if isinstance(k, tuple) else (k,))): v for k, v in value.registry.items()
+            }
             value = keys[member.removesuffix("]")]
         assert value is f, name
