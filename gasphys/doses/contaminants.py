@@ -11,7 +11,7 @@ from gasphys.constants import ATMOSPHERE
 from gasphys.doses.carbon_dioxide import surface_equivalent
 from gasphys.doses.published_tables import published
 from gasphys.errors import unknown_name
-from gasphys.quantities import CAUTION
+from gasphys.quantities import dataset_attributes
 
 __all__ = ["purity"]
 
@@ -104,11 +104,10 @@ def purity(
             ),
         },
         coords={"standard": chosen, "contaminant": list(measured)},
-        attrs={
-            "Conventions": "CF-1.11",
-            "title": "purity of a breathing gas against published limits",
-            "ambient_pressure": float(ambient_pressure),
-            "references": "; ".join(dict.fromkeys(str(rows[s]["source"]) for s in chosen)),
-            "comment": CAUTION,
-        },
+        attrs=dataset_attributes(
+            "purity of a breathing gas against published limits",
+            "contaminants",
+            references=(str(rows[s]["source"]) for s in chosen),
+            ambient_pressure=float(ambient_pressure),
+        ),
     )

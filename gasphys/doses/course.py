@@ -185,8 +185,10 @@ def course_doses(
     Dataset
         On ``measure`` and ``session``: ``session_dose``, ``day_dose`` (all sessions of its date so
         far) and ``course_dose`` (after it, by the measure's ``course_rule``; NaN where a measure is
-        told for each session only); ``session_start``, ``session_label``, ``interval_before``; and of
-        one session ``status``, ``reason``, ``context`` and the seizure rates, as :func:`oxygen` gives.
+        told for each session only), which follows from ``session_total``, ``recovery_po2`` and
+        ``interval_before``; ``course_reason`` (why it is not defined, or a flag); ``session_start``,
+        ``session_label``; and of one session ``status``, ``reason``, ``context`` and the seizure rates,
+        as :func:`oxygen` gives.
 
     Raises
     ------
@@ -236,9 +238,10 @@ def course_doses(
         if rule == SUMS:
             whole[k] = measure.dose(np.cumsum(total[k]))
         elif rule == RECOVERS:
-            whole[k] = measure.dose(_recovering(total[k], intervals, before))
+            whole[k] = measure.dose(recovering(total[k], intervals, before))
     first = single[0]
     dims = ("measure", "session")
+    po2_meaning = "PO2 of the same index K in the same time at and above 1 atm; sets the recovery"
 
     def number(values: Array, meaning: str) -> tuple[Any, ...]:
         return (dims, values, {"units": "1", "long_name": f"{meaning}, in the unit of the variable unit"})
@@ -248,7 +251,18 @@ def course_doses(
             "session_dose": number(dose, "dose of the session"),
             "day_dose": number(day, "dose of its date so far"),
             "course_dose": number(whole, "dose of the course after it, by the course rule"),
+            "session_total": (
+                dims,
+                total,
+                {"units": "1", "long_name": "sum over the pieces that the dose of the session follows from"},
+            ),
+            "recovery_po2": ("session", np.array(before), {"units": "kPa", "long_name": po2_meaning}),
             "course_rule": ("measure", [_RULES.get(n, _ALONE) for n in names], {"long_name": "course rule"}),
+            "course_reason": (
+                "measure",
+                [_outside_recovery(before[:-1]) if _RULES.get(n) == RECOVERS else "" for n in names],
+                {"long_name": "why course_dose is not defined, or a flag"},
+            ),
             "status": (
                 dims,
                 np.stack([d["status"].values for d in single], axis=-1),
@@ -329,8 +343,46 @@ def _equivalent_po2(exposure: Exposure, count: str) -> float:
     return float(ATMOSPHERE) * power
 
 
-def _recovering(total: Array, intervals: Array, po2: Sequence[float]) -> Array:
-    """Follow the sum over sessions of ESOT, the loss of vital capacity recovering in between."""
+def _outside_recovery(po2: Sequence[float]) -> str:
+    """Say of which sessions the recovery rate is not known; nothing where it is of all."""
+    one = vital_capacity_recovery_rate.arguments[0]
+    low = [n for n, p in enumerate(po2, 1) if not p >= one.possible[0]]
+    outside = [n for n, p in enumerate(po2, 1) if p >= one.possible[0] and not one.low <= p <= one.high]
+    said = []
+    if low:
+        said.append(f"no recovery rate is known after session {low[0]}, whose PO2 is too low: not defined")
+    if outside:
+        low_atm, high_atm = (x / ATMOSPHERE for x in (one.low, one.high))
+        sessions = "session" if len(outside) == 1 else f"{len(outside)} sessions, first"
+        said.append(
+            f"after {sessions} {outside[0]} the recovery rate is extrapolated: its data span "
+            f"{low_atm:.2g} to {high_atm:.2g} atm"
+        )
+    return "; ".join(said)
+
+
+def recovering(total: Array, intervals: Array, po2: Sequence[float] | Array) -> Array:
+    """Follow the sum over sessions of ESOT, the loss of vital capacity recovering in between.
+
+    Parameters
+    ----------
+    total : array
+        Sum of each session.
+    intervals : array
+        Time between sessions [min].
+    po2 : sequence of float
+        PO2 of each session that sets the rate [kPa].
+
+    Returns
+    -------
+    array
+        Sum after each session.
+
+    Examples
+    --------
+    >>> recovering(np.array([100.0]), np.array([]), [200.0]).tolist()
+    [100.0]
+    """
     found = np.zeros(len(total))
     left = 0.0
     for n, added in enumerate(total):

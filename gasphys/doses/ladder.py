@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime
 import math
+import textwrap
 from dataclasses import dataclass
 from typing import Any
 
@@ -75,7 +76,8 @@ def sessions_left(
         sessions or days that count), ``sessions_left``
         (inf: no end at this rhythm; NaN: not defined), ``passed_with`` (number of the session that
         went beyond), ``status``, ``reason``, ``rule``, ``title``, ``measure``, ``unit``, ``authority``,
-        ``for_whom``, ``provenance``.
+        ``for_whom``, ``provenance``; attribute ``any_sign``, the risk of any nervous system sign in one
+        session in words, with the seizure rates of clinics.
 
     Raises
     ------
@@ -98,10 +100,13 @@ def sessions_left(
     """
     if role not in ("diver", "patient", "attendant"):
         raise unknown_name("role", role, ("diver", "patient", "attendant"))
-    following = next_exposure or course.sessions[-1].exposure
     names = ("uptd", "arieli_pulmonary_index", "noaa_cns_day")
-    done = course_doses(course, names, count, role=role)
-    coming = oxygen(following, names, count, role=role)
+    asked = (*names, *_SIGNS[role])
+    done = course_doses(course, asked, count, role=role)
+    if next_exposure is None:
+        coming = done.isel(session=-1).rename(session_dose="dose")
+    else:
+        coming = oxygen(next_exposure, asked, count, role=role)
     each = {n: float(coming["dose"].sel(measure=n)) for n in names}
     rungs = [
         *_cumulative(course, done, each["uptd"]),
@@ -157,12 +162,37 @@ def sessions_left(
             "title": f"sessions left after {len(course.sessions)} sessions",
             "references": "; ".join(dict.fromkeys(r.source for r in rungs)),
             "sessions_done": len(course.sessions),
+            "any_sign": _any_sign(done, coming, role),
             "next_session": "as given"
             if next_exposure is not None
             else course.sessions[-1].label or "as the last",
         },
     )
     return ds
+
+
+#: Fits of the risk of any nervous system sign that come nearest to a role.
+_SIGNS = {
+    "diver": ("cns_risk_active", "cns_risk_immersed_rest"),
+    "patient": ("cns_risk_dry_rest",),
+    "attendant": ("cns_risk_dry_rest",),
+}
+
+
+def _any_sign(done: xr.Dataset, coming: xr.Dataset, role: str) -> str:
+    """Say the highest risk of any sign in one session, and the seizure rates that must stand beside it."""
+    shown, context = [], ""
+    for name in _SIGNS[role]:
+        before, next_one = done.sel(measure=name), coming.sel(measure=name)
+        risks = [*before["session_dose"].values, float(next_one["dose"].values)]
+        contexts = [*before["context"].values, str(next_one["context"].values)]
+        highest = max(range(len(risks)), key=lambda k: np.nan_to_num(risks[k], nan=-1.0))
+        risk = risks[highest]
+        fit = name.removeprefix("cns_risk_").replace("_", " ")
+        shown.append(f"{fit} " + ("not applicable" if math.isnan(risk) else f"{100.0 * risk:.3g} %"))
+        context = context or ("" if math.isnan(risk) else str(contexts[highest]))
+    text = f"Risk of any nervous system sign in one session: {', '.join(shown)}; not a seizure probability."
+    return text + (f" Beside it: {context}." if context else "")
 
 
 def _first_beyond(values: Array, limit: float) -> float:
@@ -372,6 +402,7 @@ def ladder_text(ds: xr.Dataset) -> str:
             f"    {row['authority'].values}, for {row['for_whom'].values} [{row['provenance'].values}]"
             + (f"; {row['reason'].values}" if str(row["reason"].values) else "")
         )
+    lines += textwrap.wrap(ds.attrs["any_sign"], 100, subsequent_indent="  ")
     lines.append("# done, - left, | the limit, > no end at this rhythm. Arithmetic, not advice.")
     return "\n".join([*lines, CAUTION])
 
@@ -443,7 +474,7 @@ def course_text(course: Course, *, role: str = "patient", count: str = "all") ->
     >>> print(course_text(Course((Session(noon, treatment("usn_9"), "usn_9"),), "P-01")).splitlines()[0])
     COURSE P-01: 1 session, 2042-03-03
     """
-    measures = ("uptd", "esot", "arieli_pulmonary_index", "vital_capacity_loss", "cns_risk_dry_rest")
+    measures = ("uptd", "esot", "arieli_pulmonary_index", "vital_capacity_loss")
     ds = course_doses(course, measures, count, role=role)
     n, first, last = len(course.sessions), course.sessions[0].day, course.sessions[-1].day
     span = f"{first}" if first == last else f"{first} to {last}"
@@ -469,17 +500,7 @@ def course_text(course: Course, *, role: str = "patient", count: str = "all") ->
     for name, rule in ((SUMS, "UPTD, ESOT"), (RECOVERS, "K, VC loss")):
         lines.append(f"  {rule}: {name}")
     lines.append("")
-    worst = int(np.nanargmax(np.nan_to_num(rows[-1], nan=-1.0)))
-    risk = ds.isel(session=worst).sel(measure="cns_risk_dry_rest")
-    value = float(risk["session_dose"].values)
-    shown = "not applicable" if math.isnan(value) else f"{100.0 * value:.3g} %"
-    lines.append(
-        f"Risk of any nervous system sign in one session, dry rest: {shown}; not a seizure probability."
-    )
-    context = str(risk["context"].values)
-    if context:
-        lines.append(f"  {context}")
-    lines += ["", ladder_text(sessions_left(course, count=count, role=role))]
+    lines.append(ladder_text(sessions_left(course, count=count, role=role)))
     return "\n".join(lines)
 
 

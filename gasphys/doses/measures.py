@@ -32,11 +32,21 @@ from gasphys.doses.pulmonary import (
     vital_capacity_loss,
     vital_capacity_loss_from_index,
 )
+from gasphys.equation import EquationFunction
 from gasphys.errors import unknown_name
 from gasphys.exposure import Pieces
 from gasphys.policy import weakest
 
-__all__ = ["MEASURES", "Measure", "clipped", "closed_circuit", "outside_fit", "piece_doses"]
+__all__ = [
+    "MEASURES",
+    "Link",
+    "Measure",
+    "clipped",
+    "closed_circuit",
+    "outside_fit",
+    "piece_doses",
+    "worst_day",
+]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -45,16 +55,37 @@ _ROUNDING = 1e-9
 _DAY = 24.0 * 60.0
 
 
-def _same(total: Array) -> Array:
-    return total
-
-
 def _no_reason(pieces: Pieces) -> str:
     return "not defined for this exposure"
 
 
 def _no_caveat(total: Array) -> str:
     return ""
+
+
+@dataclass(frozen=True)
+class Link:
+    """One equation on the way from the sum over the pieces to the dose.
+
+    Parameters
+    ----------
+    equation : EquationFunction
+        The equation.
+    argument : str
+        Its argument that takes the number before.
+    given : dict
+        Its other arguments.
+    """
+
+    equation: EquationFunction
+    argument: str
+    given: Mapping[str, float] = field(default_factory=dict)
+
+    def __call__(self, number: Array) -> Array:
+        """Return what the equation makes of the number before."""
+        values = {**self.given, self.argument: number}
+        with np.errstate(divide="ignore"):
+            return np.asarray(self.equation.raw(*(values[a.name] for a in self.equation.arguments)))
 
 
 @dataclass(frozen=True)
@@ -77,16 +108,16 @@ class Measure:
         How the numbers are known.
     options : dict
         Keyword arguments of the equation.
-    dose : callable
+    links : tuple of Link
         From the sum over the pieces to the dose: K is the square of a sum, a risk its distribution.
+    of_something : bool
+        Whether there is no dose where the sum is zero: an intercept says nothing of such an exposure.
     fit : tuple of float
         PO2 the model was fitted to [kPa].
     limit : str
         Id of its limit among the shipped ones; "" where none is published.
     limit_as : callable
         From the limit's quantity to this one.
-    per_day : bool
-        Whether the limit is for a day.
     whole : callable or None
         ``(pieces, mask) -> dose`` where the measure is no sum over pieces.
     why : callable
@@ -104,15 +135,38 @@ class Measure:
     population: str
     provenance: str
     options: Mapping[str, Any] = field(default_factory=dict)
-    dose: Callable[[Array], Array] = _same
+    links: tuple[Link, ...] = ()
+    of_something: bool = False
     fit: tuple[float, float] = (0.0, np.inf)
     limit: str = ""
     limit_as: Callable[[float], float] = float
-    per_day: bool = False
     whole: Callable[[Pieces, Mask], Array] | None = None
     why: Callable[[Pieces], str] = _no_reason
     caveat: Callable[[Array], str] = _no_caveat
     of_one_exposure: bool = False
+
+    def dose(self, total: Array) -> Array:
+        """Return the dose that follows from the sum over the pieces.
+
+        Parameters
+        ----------
+        total : array
+            The sum.
+
+        Returns
+        -------
+        array
+            The dose.
+
+        Examples
+        --------
+        >>> float(MEASURES["arieli_pulmonary_index"].dose(np.array(60.0)))
+        1.0
+        """
+        dose = total
+        for link in self.links:
+            dose = link(dose)
+        return np.where(total > 0.0, dose, np.nan) if self.of_something else dose
 
     @property
     def is_symptom_risk(self) -> bool:
@@ -138,42 +192,66 @@ def _above_table(pieces: Pieces) -> str:
     )
 
 
-def _worst_day(rule: str) -> Callable[[Pieces, Mask], Array]:
-    """Largest share used in any 24 h that begin or end where a piece does."""
+def worst_day(pieces: Pieces, mask: Mask, rule: str) -> tuple[Array, Array]:
+    """Return the largest NOAA share used in any 24 h that begin or end where a piece does.
+
+    Parameters
+    ----------
+    pieces : Pieces
+        From :meth:`Exposure.pieces`.
+    mask : array of bool
+        Pieces that count.
+    rule : str
+        Rule between rows of the table.
+
+    Returns
+    -------
+    tuple of array
+        Share [1] and the end of those 24 h [min].
+
+    Examples
+    --------
+    >>> from gasphys import Exposure
+    >>> pieces = Exposure.start("oxygen").stay(150).pieces()
+    >>> [float(v) for v in worst_day(pieces, np.ones(1, dtype=bool), "step")]
+    [0.5, 150.0]
+    """
     kernel = _noaa(rule, "day")
 
-    def whole(pieces: Pieces, mask: Mask) -> Array:
-        each = np.where(mask & (pieces.duration > 0.0), kernel(*_ramps(pieces)), 0.0)
-        total: Array = each.sum(axis=-1)
-        if not np.any(pieces.times[..., -1] > _DAY * (1.0 + _ROUNDING)) or np.isnan(total).all():
-            return total
-        shape = each.shape[:-1]
-        reached = np.concatenate([np.zeros((*shape, 1)), np.cumsum(each, axis=-1)], axis=-1)
-        times = np.broadcast_to(pieces.times, reached.shape)
-        ends = np.concatenate([times, np.minimum(times + _DAY, times[..., -1:])], axis=-1)
+    each = np.where(mask & (pieces.duration > 0.0), kernel(*_ramps(pieces)), 0.0)
+    total: Array = each.sum(axis=-1)
+    last = np.broadcast_to(pieces.times[..., -1], total.shape)
+    if not np.any(pieces.times[..., -1] > _DAY * (1.0 + _ROUNDING)) or np.isnan(total).all():
+        return total, last
+    shape = each.shape[:-1]
+    reached = np.concatenate([np.zeros((*shape, 1)), np.cumsum(each, axis=-1)], axis=-1)
+    times = np.broadcast_to(pieces.times, reached.shape)
+    ends = np.concatenate([times, np.minimum(times + _DAY, times[..., -1:])], axis=-1)
 
-        def at(moment: Array) -> Array:
-            index = (times[..., None, :] <= moment[..., :, None]).sum(axis=-1) - 1
-            index = np.clip(index, 0, each.shape[-1] - 1)
+    def at(moment: Array) -> Array:
+        index = (times[..., None, :] <= moment[..., :, None]).sum(axis=-1) - 1
+        index = np.clip(index, 0, each.shape[-1] - 1)
 
-            def pick(values: Array) -> Array:
-                return np.take_along_axis(np.broadcast_to(values, each.shape), index, axis=-1)
+        def pick(values: Array) -> Array:
+            return np.take_along_axis(np.broadcast_to(values, each.shape), index, axis=-1)
 
-            length = pick(pieces.duration)
-            begun = np.take_along_axis(times, index, axis=-1)
-            share = np.where(length > 0.0, (moment - begun) / np.where(length > 0.0, length, 1.0), 0.0)
-            share = np.clip(share, 0.0, 1.0)
-            start, end = pick(pieces.start_po2), pick(pieces.end_po2)
-            part = kernel(start, start + (end - start) * share, length * share)
-            counts = pick(np.asarray(mask, dtype=float)) > 0.0
-            before = np.take_along_axis(reached[..., :-1], index, axis=-1)
-            return np.asarray(before + np.where(counts & (length * share > 0.0), part, 0.0))
+        length = pick(pieces.duration)
+        begun = np.take_along_axis(times, index, axis=-1)
+        share = np.where(length > 0.0, (moment - begun) / np.where(length > 0.0, length, 1.0), 0.0)
+        share = np.clip(share, 0.0, 1.0)
+        start, end = pick(pieces.start_po2), pick(pieces.end_po2)
+        part = kernel(start, start + (end - start) * share, length * share)
+        counts = pick(np.asarray(mask, dtype=float)) > 0.0
+        before = np.take_along_axis(reached[..., :-1], index, axis=-1)
+        return np.asarray(before + np.where(counts & (length * share > 0.0), part, 0.0))
 
-        with np.errstate(invalid="ignore"):
-            window = at(ends) - at(np.maximum(ends - _DAY, 0.0))
-        return np.asarray(window.max(axis=-1))
-
-    return whole
+    with np.errstate(invalid="ignore"):
+        window = at(ends) - at(np.maximum(ends - _DAY, 0.0))
+    best = np.argmax(np.nan_to_num(window, nan=np.inf), axis=-1)[..., None]
+    return (
+        np.asarray(np.take_along_axis(window, best, axis=-1)[..., 0]),
+        np.asarray(np.take_along_axis(ends, best, axis=-1)[..., 0]),
+    )
 
 
 # -- US Navy closed-circuit oxygen -----------------------------------------------------------------
@@ -193,14 +271,17 @@ class ClosedCircuit:
         Greatest depth of this dive before the piece [fsw].
     depths : tuple of array
         Depth at the start and end of the piece [fsw].
+    refused : array of bool
+        Scenarios that cannot be judged, ``(...)``.
     reason : str
-        Why it cannot be judged; "" where it can.
+        Why; "" where all can.
     """
 
     on: Mask
     before: Array
     deepest: Array
     depths: tuple[Array, Array]
+    refused: Mask
     reason: str
 
     def used(self, share: Array, duration: Array) -> Array:
@@ -259,16 +340,19 @@ def closed_circuit(pieces: Pieces, mask: Mask) -> ClosedCircuit:
         reached = np.where(breathing, np.maximum(reached, np.maximum(start[..., k], end[..., k])), reached)
         off = np.where(breathing, 0.0, off + length)
     other = np.where(real & mask & ~pure, np.maximum(pieces.start_po2, pieces.end_po2), 0.0)
-    if not on.any():
+    none = ~on.any(axis=-1)
+    mixed = (other > 0.6 * ATMOSPHERE * (1.0 + _ROUNDING)).any(axis=-1)
+    depth = np.where(on, np.maximum(start, end), 0.0).max(axis=-1)
+    deep = depth > 50.0 * (1.0 + _ROUNDING)
+    if none.all():
         reason = "no pure oxygen is breathed"
-    elif np.any(other > 0.6 * ATMOSPHERE * (1.0 + _ROUNDING)):
+    elif mixed.any():
         reason = "not for mixed gas: another gas is breathed at a PO2 above 0.6 atm"
-    elif np.any(np.where(on, np.maximum(start, end), 0.0) > 50.0 * (1.0 + _ROUNDING)):
-        deep = float(np.max(np.where(on, np.maximum(start, end), 0.0)))
-        reason = f"pure oxygen at {deep:.1f} fsw; the table ends at 50 fsw and is not extrapolated"
+    elif deep.any():
+        reason = f"pure oxygen at {depth.max():.1f} fsw; the table ends at 50 fsw and is not extrapolated"
     else:
-        reason = ""
-    return ClosedCircuit(on, before, deepest, (start, end), reason)
+        reason = "no pure oxygen is breathed" if none.any() else ""
+    return ClosedCircuit(on, before, deepest, (start, end), none | mixed | deep, reason)
 
 
 def _closed_circuit_dose(pieces: Pieces, mask: Mask) -> Array:
@@ -296,11 +380,6 @@ def _shykoff(start: Array, end: Array, duration: Array) -> Array:
     return np.where(np.maximum(start, end) > SHYKOFF_BAND[1] * (1.0 + _ROUNDING), np.nan, inside)
 
 
-def _shykoff_dose(minutes: Array) -> Array:
-    # No time in the band: the intercept of the formula says nothing of such an exposure.
-    return np.where(minutes > 0.0, shykoff_incidence.raw(130.0, minutes), np.nan)
-
-
 def _shykoff_reason(pieces: Pieces) -> str:
     highest = float(np.nanmax(np.maximum(pieces.start_po2, pieces.end_po2)))
     low, high = SHYKOFF_BAND
@@ -310,12 +389,11 @@ def _shykoff_reason(pieces: Pieces) -> str:
 # -- The measures ----------------------------------------------------------------------------------
 
 
-def _index(minutes: Array) -> Array:
-    return np.asarray(arieli_index_from_esot.raw(minutes))
+_INDEX = Link(arieli_index_from_esot, "esot")
 
 
 def _above_250(total: Array) -> str:
-    highest = float(np.nanmax(_index(total), initial=0.0))
+    highest = float(np.nanmax(_INDEX(total), initial=0.0))
     return f"K reaches {highest:.0f}, the data about 250; capped at 100 %" if highest > 250.0 else ""
 
 
@@ -330,16 +408,12 @@ def _symptoms(population: str) -> Measure:
     def kernel(start: Array, end: Array, duration: Array) -> Array:
         return np.asarray(exposure.raw(start, end, duration))
 
-    def dose(total: Array) -> Array:
-        with np.errstate(divide="ignore"):
-            return np.asarray(risk.raw(total))
-
     return Measure(
         quantity="cns_symptom_risk",
         equation="doses.cns_exposure",
         options={"population": population},
         kernel=kernel,
-        dose=dose,
+        links=(Link(risk, "cns_exposure"),),
         endpoint="any nervous system sign, not a seizure probability; no air breaks",
         population=POPULATIONS[population].who
         + (f"; {POPULATIONS[population].remark}" if POPULATIONS[population].remark else ""),
@@ -371,7 +445,7 @@ def _noaa_measure(rule: str, total: str) -> Measure:
         population="working divers, 24 h" if each_day else "working divers, one exposure",
         provenance=noaa_cns_ramp.registry[rule, total].provenance,  # type: ignore[attr-defined]
         limit="noaa_cns_day" if each_day else "noaa_cns_single",
-        whole=_worst_day(rule) if each_day else None,
+        whole=(lambda pieces, mask: worst_day(pieces, mask, rule)[0]) if each_day else None,
         why=_above_table,
     )
 
@@ -387,7 +461,6 @@ MEASURES: dict[str, Measure] = {
         population="people at rest, dry and immersed",
         provenance=uptd_ramp.provenance,
         limit="uptd_day_one",
-        per_day=True,
     ),
     "esot": Measure(
         quantity="esot",
@@ -395,28 +468,26 @@ MEASURES: dict[str, Measure] = {
         provenance=esot_ramp.provenance,
         limit="pulmonary_index_2_days",
         limit_as=lambda index: float(esot.raw(float(ATMOSPHERE), 60.0 * index**0.5)),
-        per_day=True,
         **_POWER,
     ),
     "arieli_pulmonary_index": Measure(
         quantity="arieli_pulmonary_index",
-        dose=_index,
+        links=(_INDEX,),
         endpoint="pulmonary oxygen index K: square of a sum, does not add",
         provenance=arieli_pulmonary_index.provenance,
         limit="pulmonary_index_2_days",
-        per_day=True,
         **_POWER,
     ),
     "vital_capacity_loss": Measure(
         quantity="vital_capacity_loss",
-        dose=lambda total: np.asarray(vital_capacity_loss_from_index.raw(_index(total))),
+        links=(_INDEX, Link(vital_capacity_loss_from_index, "arieli_pulmonary_index")),
         endpoint="mean loss of vital capacity at the end, power equation, no recovery within",
         provenance=vital_capacity_loss.provenance,
         **_POWER,
     ),
     "pulmonary_toxicity_incidence": Measure(
         quantity="pulmonary_toxicity_incidence",
-        dose=lambda total: np.asarray(pulmonary_toxicity_incidence.raw(_index(total))),
+        links=(_INDEX, Link(pulmonary_toxicity_incidence, "arieli_pulmonary_index")),
         endpoint="share of people with pulmonary oxygen toxicity; 1.85 % at no exposure; one data set",
         provenance=pulmonary_toxicity_incidence.provenance,
         caveat=_above_250,
@@ -435,7 +506,8 @@ MEASURES: dict[str, Measure] = {
         quantity="pulmonary_symptom_incidence",
         equation="doses.shykoff_incidence",
         kernel=_shykoff,
-        dose=_shykoff_dose,
+        links=(Link(shykoff_incidence, "duration", {"po2": 130.0}),),
+        of_something=True,
         endpoint="share of dives with pulmonary changes or symptoms; 2.70 % at no time at all",
         population="divers at a PO2 of about 130 kPa, 1352 man-dives",
         provenance=shykoff_incidence.provenance,

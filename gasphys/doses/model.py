@@ -21,7 +21,7 @@ from gasphys.errors import ExposureError, ProvenanceError, unknown_name
 from gasphys.exposure import Exposure, Pieces
 from gasphys.limits import Limit, load
 from gasphys.policy import require_provenance
-from gasphys.quantities import CAUTION, quantity
+from gasphys.quantities import CAUTION, dataset_attributes, quantity
 
 __all__ = ["MEASURES", "Measure", "counted", "dose_text", "oxygen", "piece_doses"]
 
@@ -86,19 +86,70 @@ def counted(exposure: Exposure, count: str) -> Mask:
     return result
 
 
-def _with_recovery(each: Array, exposure: Exposure, pieces: Pieces, rule: str) -> Array:
-    """Sum the pieces, an interval taking off what a named convention says."""
+def with_recovery(
+    each: Array, exposure: Exposure, pieces: Pieces, rule: str
+) -> tuple[Array, list[tuple[Array, Array]]]:
+    """Sum the pieces, an interval taking off what a named convention says.
+
+    Parameters
+    ----------
+    each : array
+        What each piece adds, ``(..., segment)``.
+    exposure : Exposure
+        Whose pieces.
+    pieces : Pieces
+        From :meth:`Exposure.pieces`.
+    rule : str
+        A rule of :func:`noaa_cns_after_interval`.
+
+    Returns
+    -------
+    tuple
+        The sum, and for each interval the sum before it and its length [min].
+
+    Examples
+    --------
+    >>> dive = Exposure.start("oxygen").stay(30).then(90)
+    >>> total, seen = with_recovery(np.array([1.0, 0.0]), dive, dive.pieces(), "half_time_90_min")
+    >>> float(total), len(seen)
+    (0.5, 1)
+    """
     total = np.zeros(each.shape[:-1])
     rest = np.zeros(each.shape[:-1])
+    seen = []
     for k, part in enumerate(exposure.part):
         if part == "interval":
             rest = rest + pieces.duration[..., k]
             if k + 1 < len(exposure.part) and exposure.part[k + 1] == "interval":
                 continue  # one interval, however it is cut
+            seen.append((total, rest))
             total = np.asarray(noaa_cns_after_interval.raw(total, rest, rule=rule))
             rest = np.zeros(each.shape[:-1])
         total = total + each[..., k]
-    return total
+    return total, seen
+
+
+def recovers(measure: str, recovery: str) -> bool:
+    """Return whether a convention on intervals holds for a measure.
+
+    Parameters
+    ----------
+    measure : str
+        A name of :data:`MEASURES`.
+    recovery : str
+        "none" or a rule of :func:`noaa_cns_after_interval`.
+
+    Returns
+    -------
+    bool
+        True for the NOAA fraction of one exposure.
+
+    Examples
+    --------
+    >>> recovers("uptd", "half_time_90_min"), recovers("noaa_cns", "half_time_90_min")
+    (False, True)
+    """
+    return recovery != "none" and MEASURES[measure].limit == "noaa_cns_single"
 
 
 # -- The Dataset -----------------------------------------------------------------------------------
@@ -118,6 +169,7 @@ class _Row:
     limit: float
     status: NDArray[np.object_]
     reason: str
+    carried: Array
 
 
 def _row(
@@ -135,25 +187,30 @@ def _row(
     try:
         require_provenance(one.provenance, f"measure {name}")
     except ProvenanceError as error:
-        return _Row(nothing, nothing, np.nan, np.full(shape, "not applicable", dtype=object), str(error))
+        refused = np.full(shape, "not applicable", dtype=object)
+        return _Row(nothing, nothing, np.nan, refused, str(error), nothing)
     reasons: list[str] = []
+    carried = nothing
     with np.errstate(all="ignore"):
         if one.whole is not None:
             total = one.whole(pieces, mask) if initial is None else nothing
             dose = total
         else:
             each = np.where(mask, piece_doses(name, pieces), 0.0)
-            if recovery != "none" and one.limit == "noaa_cns_single":
-                total = _with_recovery(each, exposure, pieces, recovery)
+            if recovers(name, recovery):
+                total = with_recovery(each, exposure, pieces, recovery)[0]
             else:
                 total = each.sum(axis=-1)
             if initial is not None:
-                total = total + _earlier(initial, name, exposure)
+                carried = _earlier(initial, name, exposure)
+                total = total + carried
             outside = outside_fit(name, pieces, mask)
             total = np.where(outside >= 1.0 - _ROUNDING, np.nan, total)
             dose = one.dose(total)
             reasons += [_fit_reason(name, outside), one.caveat(total)]
-    total, dose = (np.broadcast_to(np.asarray(v, dtype=float), shape).copy() for v in (total, dose))
+    total, dose, carried = (
+        np.broadcast_to(np.asarray(v, dtype=float), shape).copy() for v in (total, dose, carried)
+    )
     undefined = np.isnan(dose)
     if undefined.any():
         if one.whole is not None and initial is not None:
@@ -179,7 +236,9 @@ def _row(
     else:
         limit = _limits()[one.limit]
         limit_value = one.limit_as(limit.value)
-        longer = one.per_day and bool(np.any(pieces.times[..., -1] > _DAY * (1.0 + _ROUNDING)))
+        # A measure that looks for the worst day itself is judged by it, however long it all lasts.
+        a_day = limit.per_day and one.whole is None
+        longer = a_day and bool(np.any(pieces.times[..., -1] > _DAY * (1.0 + _ROUNDING)))
         if role not in limit.roles:
             status[...] = "not applicable"
             made_for = " and ".join(f"{r}s" for r in limit.roles)
@@ -195,7 +254,7 @@ def _row(
                 beyond = dose > limit_value * (1.0 + _ROUNDING)
             status = np.where(beyond, "beyond", "within").astype(object)
     status = np.where(undefined, "not applicable", status).astype(object)
-    return _Row(total, dose, limit_value, status, "; ".join(r for r in reasons if r))
+    return _Row(total, dose, limit_value, status, "; ".join(r for r in reasons if r), carried)
 
 
 def _earlier(initial: xr.Dataset, name: str, exposure: Exposure) -> Array:
@@ -323,7 +382,6 @@ def _beside(exposure: Exposure, pieces: Pieces, mask: Mask) -> _Beside:
 def _dataset(
     exposure: Exposure, rows: dict[str, _Row], beside: _Beside, mask: Mask, options: dict[str, str]
 ) -> xr.Dataset:
-    from gasphys import __version__
 
     dims = ("measure", *exposure.dims)
     ones = {name: MEASURES[name] for name in rows}
@@ -394,6 +452,12 @@ def _dataset(
         beside.breaks.astype(np.int32),
         {"units": "1", "long_name": "breaks between times at a PO2 of 100 kPa and more"},
     )
+    if options["carried_on"] == "yes":
+        ds["carried_total"] = (
+            dims,
+            np.stack([r.carried for r in rows.values()]),
+            {"units": "1", "long_name": "sum of the exposure before, part of total"},
+        )
     if any(one.is_symptom_risk for one in ones.values()):
         nothing = np.full(beside.low.shape, np.nan)
         for word, rate in (("low", beside.low), ("high", beside.high)):
@@ -417,17 +481,14 @@ def _dataset(
         {"long_name": "1 where the piece counts"},
     )
     ds = ds.merge(view, combine_attrs="override")
-    ds.attrs = {
-        **view.attrs,
-        "Conventions": "CF-1.11",
-        "title": "oxygen dose of an exposure",
-        "source": f"gasphys {__version__}, oxygen dose, count {options['count']}",
-        "history": "\n".join(exposure.history) or "as given",
-        "references": "; ".join(dict.fromkeys(keys)),
-        "comment": CAUTION,
+    ds.attrs = view.attrs | dataset_attributes(
+        "oxygen dose of an exposure",
+        f"oxygen dose, count {options['count']}",
+        history=exposure.history,
+        references=keys,
         **options,
-        "equations": json.dumps({n: [one.equation, dict(one.options)] for n, one in ones.items()}),
-    }
+        equations=json.dumps({n: [one.equation, dict(one.options)] for n, one in ones.items()}),
+    )
     return ds
 
 

@@ -66,7 +66,12 @@ def published(name: str) -> tuple[dict[str, Any], ...]:
         raise unknown_name("published table", name, tables())
     text = resources.files("gasphys.doses").joinpath(f"{name}.csv").read_text("utf-8")
     lines = [line for line in text.splitlines() if not line.startswith("#")]
-    return tuple({k: _cell(v) for k, v in row.items()} for row in csv.DictReader(lines, strict=True))
+    rows = csv.DictReader(lines, strict=True)
+    return tuple({k: v if k in _WORDS else _cell(v) for k, v in row.items()} for row in rows)
+
+
+#: Columns of words, even where a cell looks like a number: a year is no quantity.
+_WORDS = ("edition",)
 
 
 def _cell(text: str) -> float | str | None:

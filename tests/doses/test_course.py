@@ -409,7 +409,23 @@ def test_a_course_in_words(forty: Path) -> None:
     assert "2 air breaks" in text
     assert text.rstrip().endswith(CAUTION)
     low = course_text(course(Exposure.start("air").stay(60), [0.0]))
-    assert "dry rest: not applicable" in low
+    assert "dry rest not applicable; not a seizure probability" in " ".join(low.split())
+
+
+def test_the_highest_risk_of_any_session_is_told_by_the_fits_of_the_role() -> None:
+    """2.4 atm, 90 min, dry rest 3.8 %; active 14 %: not the last, mild session (Aviner 2020, Arieli 2003)."""
+    mixed = course(held(2.4, 90), [0.0])
+    mild = Session(mixed.sessions[-1].end + datetime.timedelta(hours=20), held(2.0, 10), "mild")
+    mixed = Course((*mixed.sessions, mild))
+    text = str(sessions_left(mixed).attrs["any_sign"])
+    assert text.startswith("Risk of any nervous system sign in one session: dry rest 3.79 %; not a seizure")
+    assert "25 to 1500 times that" in text
+    diver = str(sessions_left(mixed, role="diver").attrs["any_sign"])
+    assert "active 14.1 %, immersed rest 64.2 %" in diver
+    assert "of clinics' treatments near this PO2" in diver
+    next_one = str(sessions_left(Course((mild,)), next_exposure=held(2.4, 90)).attrs["any_sign"])
+    assert "dry rest 3.79 %" in next_one
+    assert text in " ".join(ladder_text(sessions_left(mixed)).split())
 
 
 def test_the_ladder_as_a_figure(forty: Path, tmp_path: Path) -> None:
@@ -421,6 +437,10 @@ def test_the_ladder_as_a_figure(forty: Path, tmp_path: Path) -> None:
     assert "Sessions left after 40, P-01" in words
     assert "not applicable, context only (no end at this rhythm)" in words
     assert "Model estimates" in words
+    shown = " ".join(words.split())
+    assert "Risk of any nervous system sign in one session: dry rest 4.1" in shown
+    assert "not a seizure probability" in shown
+    assert "of clinics' treatments near this PO2" in shown
     figure.savefig(tmp_path / "course.png")
     assert (tmp_path / "course.png").stat().st_size > 10_000
     with pytest.raises(ExposureError, match="sessions_left"):

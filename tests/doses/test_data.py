@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import itertools
+import re
 
 import pytest
 
@@ -186,6 +187,7 @@ def test_purity_under_pressure() -> None:
     assert float(row.surface_equivalent) == pytest.approx(12.0)
     assert float(row.margin) == pytest.approx(-2.0)
     assert str(row.edition.values) == "not known"
+    assert str(deep.edition.sel(standard="EN 12021 air").values) == "2014"
     assert deep.sizes == {"standard": 10, "contaminant": 3}
     oxygen = purity({"carbon_monoxide": 1.0}, standards=["US Navy O2 MIL-O-27210 type I"])
     assert oxygen.status.values.tolist() == [["not judged"]]
@@ -207,6 +209,16 @@ LIMITS = {
     "co2_usn_4_hours": (2, "%", ("diver", "attendant")),
     "co2_osha": (5000, "ppm", ("diver", "attendant")),
     "co2_nasa": (0.7, "%", ("diver", "patient", "attendant")),
+    "co2_rest": (4, "%", ("diver", "patient", "attendant")),
+    "co2_nrc_1_hour": (25000, "ppm", ("diver", "attendant")),
+    "co2_nrc_24_hours": (25000, "ppm", ("diver", "attendant")),
+    "co2_nrc_90_days": (8000, "ppm", ("diver", "attendant")),
+    "o2_fraction_osha": (40, "%", ("diver",)),
+    "nitrogen_slips": (1.58, "atm", ("diver", "patient", "attendant")),
+    "nitrogen_slow": (3.16, "atm", ("diver", "patient", "attendant")),
+    "nitrogen_confusion": (4.74, "atm", ("diver", "patient", "attendant")),
+    "nitrogen_stupor": (6.32, "atm", ("diver", "patient", "attendant")),
+    "nitrogen_hallucination": (7.90, "atm", ("diver", "patient", "attendant")),
     "helium_nervous_syndrome_fast": (150, "msw", ("diver",)),
     "helium_nervous_syndrome_motor": (200, "msw", ("diver",)),
     "helium_nervous_syndrome_eeg": (300, "msw", ("diver",)),
@@ -228,3 +240,88 @@ def test_conventions_that_are_limits_stand_in_both_files() -> None:
         if row["convention"].startswith(("highest", "lowest", "of concern", "surface-supplied", "1910")):
             value = row["high"] if row["high"] is not None else row["low"]
             assert (value, row["unit"]) in shipped, row
+
+
+# -- The other tables, every row typed again from the reference tables: numbers and how they are known --
+
+#: Inspired CO2, surface equivalent: "0.5 % SEV", "25000 ppm", "1 kPa" of 101.325, as percent.
+CO2_LEVELS = [
+    (0.5, None, "secondary"), (2.0, None, "secondary"), (4.0, None, "secondary"), (0.7, None, "read"),
+    (0.987, None, "read"), (0.5, None, "memory_high"), (2.5, None, "memory_medium"),
+    (2.5, None, "memory_medium"), (0.8, None, "memory_medium"), (0.5, None, "memory_high"),
+    (2, 3, "memory_medium"), (4, 6, "memory_medium"), (6, 10, "memory_medium"),
+    (10, None, "memory_high"), (15, None, "memory_medium"),
+]  # fmt: skip
+
+ANESTHETIC = [
+    ("Xe", 0.71, "read"), ("Xe", 0.63, "secondary"), ("Xe", 0.326, "read"), ("N2O", 1.05, "secondary"),
+    ("N2O", 1.03, "secondary"), ("N2O", 0.633, "read"), ("N2O", 0.71, "secondary"), ("Ar", 15.2, "read"),
+    ("Kr", 4.5, "read"), ("Xe", 1.61, "memory_medium"), ("Kr", 7.31, "memory_medium"),
+    ("Ar", 27.0, "memory_medium"), ("N2", 110, "memory_low"),
+]  # fmt: skip
+
+#: Nitrogen pressures of the bands of impairment: low, high, unit.
+IMPAIRMENT = [
+    (0.79, 1.58, "atm"), (1.58, 3.16, "atm"), (3.16, 4.74, "atm"), (4.74, 6.32, "atm"), (6.32, 7.90, "atm"),
+    (7.90, None, "atm"), (2, 4, "bar"), (4, 4, "bar"), (4, 6, "bar"), (6, 8, "bar"), (8, 8, "bar"),
+    (10, None, "bar"),
+]  # fmt: skip
+
+ABSORBENT = [
+    (2.64, 2.0, 202, 153.0), (2.38, 2.0, 138, 116.0), (2.64, 2.0, 188, 142.4), (2.64, 2.0, 241, 182.6),
+    (2.64, 2.0, 239, 181.1), (0.6, 0.3, 240, 120), (None, 1.4, 400, None), (None, 1.4, 300, None),
+    (None, None, None, 242),
+]  # fmt: skip
+
+PO2_CONVENTIONS = [
+    (None, 1.4, "atm", "read"), (None, 1.4, "bar", "secondary"), (None, 1.6, "bar", "secondary"),
+    (None, 1.5, "bar", "secondary"), (None, 1.4, "bar", "secondary"), (None, 0.75, "atm", "secondary"),
+    (0.75, 1.3, "atm", "memory_high"), (None, 1.3, "atm", "memory_high"), (None, 2.4, "atm", "memory_high"),
+    (0.44, 0.48, "atm", "secondary"), (None, 0.6, "atm", "secondary"), (0.42, None, "atm", "secondary"),
+    (None, 0.60, "atm", "read"), (None, 60, "kPa", "read"), (None, 70, "kPa", "read"),
+    (None, 80, "kPa", "read"),
+    (None, 1.4, "bar", "memory_high"), (None, 1.4, "atm", "memory_high"), (0.16, None, "atm", "secondary"),
+    (0.18, None, "bar", "memory_high"),
+]  # fmt: skip
+
+#: The numbers in each row of observations on helium and hydrogen, as printed.
+NERVOUS_SYNDROME = [
+    ("150", "500"), ("600", "4", "800", "2", "27.7", "91"), ("500", "610", "300"), ("200",),
+    ("1000", "10", "33"), ("460", "5", "12", "20", "5"), ("460", "650", "10", "7.7"),
+    ("650", "6", "8", "10", "686", "20", "30"), ("300",), ("450", "54", "56", "200"), ("500", "49", "25"),
+    ("0", "60", "0.5", "30"), ("60", "250", "0.5", "10"), ("250", "750", "0.5", "3"),
+    ("750", "1000", "0.5", "2"),
+]  # fmt: skip
+
+
+def test_every_row_of_the_other_tables() -> None:
+    assert columns("co2_levels", "low_percent", "high_percent", "provenance") == CO2_LEVELS
+    assert columns("anesthetic_pressure", "gas", "value_atm", "provenance") == ANESTHETIC
+    assert columns("narcosis_impairment", "pn2_low", "pn2_high", "pn2_unit") == IMPAIRMENT
+    assert {r["provenance"] for r in published("narcosis_impairment")} == {"read"}
+    assert columns("absorbent", "mass_kg", "co2_flow_l_min", "minutes", "capacity_l_kg") == ABSORBENT
+    assert columns("po2_conventions", "low", "high", "unit", "provenance") == PO2_CONVENTIONS
+    for row, numbers in zip(published("high_pressure_nervous_syndrome"), NERVOUS_SYNDROME, strict=True):
+        text = re.sub(r"(?<=[HN])2|O2|PH2", "", f"{row['item']} {row['value']}")
+        assert tuple(re.findall(r"\d+(?:\.\d+)?", text)) == numbers, row
+
+
+def test_oxygen_dive_trials() -> None:
+    """465 man-dives, 33 toxic episodes, 2 convulsions; 153 exposures; 2527 dives (reference sheet, 3)."""
+    assert columns("oxygen_dive_trials", "dives", "signs", "convulsions") == [
+        (465, 33, 2), (153, None, None), (2527, None, None),
+    ]  # fmt: skip
+    first = published("oxygen_dive_trials")[0]
+    assert first["signs"] / first["dives"] == pytest.approx(0.071, abs=0.0005)
+    assert first["convulsions"] / first["dives"] == pytest.approx(0.0043, abs=0.00005)
+
+
+def test_ranking_of_potencies() -> None:
+    """He 4.26, Ne 3.58, H2 1.83, N2 1, Ar 0.43, Kr 0.14, Xe 0.039: reciprocals."""
+    ranking = {"He": 4.26, "Ne": 3.58, "H2": 1.83, "N2": 1.0, "Ar": 0.43, "Kr": 0.14, "Xe": 0.039}
+    found = {r["gas"]: r["inverse_of_ranking"] for r in published("narcotic_potency")}
+    for gas, value in found.items():
+        if gas in ranking:
+            assert value == pytest.approx(1.0 / ranking[gas], abs=0.0006)
+        else:
+            assert value is None
