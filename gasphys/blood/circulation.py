@@ -3,37 +3,24 @@
 from __future__ import annotations
 
 from gasphys.blood.carbon_dioxide import content_of_buffered_blood
-from gasphys.blood.oxygen import po2_at_content_severinghaus, severinghaus_1979, severinghaus_content
+from gasphys.blood.haldane import (
+    liganded_fraction,
+    o2_content_beside_cohb,
+    o2_saturation_beside_cohb,
+    po2_at_content_beside_cohb,
+)
 from gasphys.equation import Value, formula, inverse
 
 __all__ = [
     "arterial_o2_content_from_shunt",
     "arterial_po2_from_shunt",
     "co2_load",
-    "functional_hemoglobin",
     "mixed_venous_co2_content",
     "mixed_venous_o2_content",
     "mixed_venous_ph",
     "shunt_at_arterial_po2",
     "venous_arterial_pco2_difference",
 ]
-
-
-@formula(result="functional_hemoglobin", source="o2_capacity_texts", provenance="secondary")
-def functional_hemoglobin(hemoglobin: Value, cohb_fraction: Value = 0.0) -> Value:
-    """Hemoglobin left for O2 where some carries carbon monoxide.
-
-    Notes
-    -----
-    Hb (1 - COHb). Carbon monoxide also shifts the curve of what is left to the left, which no curve here
-    knows: venous PO2 is then lower than calculated.
-
-    Examples
-    --------
-    >>> round(functional_hemoglobin(14.1, 0.31), 2)
-    9.73
-    """
-    return hemoglobin * (1.0 - cohb_fraction)
 
 
 @formula(
@@ -60,7 +47,7 @@ def arterial_o2_content_from_shunt(
     return end_capillary_o2_content - shunt_fraction / (1.0 - shunt_fraction) * arteriovenous_difference
 
 
-_O2 = ("riley_cournand_1949", "severinghaus_1979", "o2_capacity_texts")
+_O2 = ("riley_cournand_1949", "severinghaus_1979", "o2_capacity_texts", "haldane_1912")
 
 
 @formula(
@@ -75,6 +62,7 @@ def arterial_po2_from_shunt(
     hemoglobin: Value = 15.0,
     arteriovenous_difference: Value = 5.0,
     ph: Value = 7.4,
+    cohb_fraction: Value = 0.0,
 ) -> Value:
     """Arterial PO2 where a constant share of cardiac output passes no ventilated alveolus.
 
@@ -92,9 +80,9 @@ def arterial_po2_from_shunt(
     >>> round(arterial_po2_from_shunt("2193 mmHg", 0.10) / 0.1333224)
     2014
     """
-    ideal = severinghaus_content(alveolar_po2, hemoglobin, ph, 37.0)
+    ideal = o2_content_beside_cohb(alveolar_po2, hemoglobin, cohb_fraction, ph)
     content = arterial_o2_content_from_shunt(ideal, shunt_fraction, arteriovenous_difference)
-    return po2_at_content_severinghaus(content, hemoglobin, ph, 37.0)
+    return po2_at_content_beside_cohb(content, hemoglobin, cohb_fraction, ph)
 
 
 @formula(
@@ -110,6 +98,7 @@ def shunt_at_arterial_po2(
     hemoglobin: Value = 15.0,
     arteriovenous_difference: Value = 5.0,
     ph: Value = 7.4,
+    cohb_fraction: Value = 0.0,
 ) -> Value:
     """Shunt that a sample implies: venous admixture as a share of cardiac output.
 
@@ -126,8 +115,8 @@ def shunt_at_arterial_po2(
     >>> round(shunt_at_arterial_po2("538.4 mmHg", "673 mmHg"), 3)
     0.077
     """
-    ideal = severinghaus_content(alveolar_po2, hemoglobin, ph, 37.0)
-    missing = ideal - severinghaus_content(arterial_po2, hemoglobin, ph, 37.0)
+    ideal = o2_content_beside_cohb(alveolar_po2, hemoglobin, cohb_fraction, ph)
+    missing = ideal - o2_content_beside_cohb(arterial_po2, hemoglobin, cohb_fraction, ph)
     return missing / (missing + arteriovenous_difference)
 
 
@@ -196,15 +185,16 @@ def co2_content_at_o2_content(
     base_excess: Value,
     hemoglobin: Value,
     mixed_venous_o2_content: Value,
-    functional_hemoglobin: Value,
+    cohb_fraction: Value = 0.0,
 ) -> Value:
     """CO2 content of blood of a base excess and an O2 content at a pH.
 
     The pH shifts the O2 curve (Bohr), the saturation that follows changes CO2 content (Haldane).
     """
-    po2 = po2_at_content_severinghaus(mixed_venous_o2_content, functional_hemoglobin, mixed_venous_ph, 37.0)
-    saturation = severinghaus_1979(po2, mixed_venous_ph, 37.0)
-    return content_of_buffered_blood(mixed_venous_ph, base_excess, hemoglobin, saturation)
+    po2 = po2_at_content_beside_cohb(mixed_venous_o2_content, hemoglobin, cohb_fraction, mixed_venous_ph)
+    saturation = o2_saturation_beside_cohb(po2, cohb_fraction, mixed_venous_ph)
+    liganded = liganded_fraction(saturation, cohb_fraction)
+    return content_of_buffered_blood(mixed_venous_ph, base_excess, hemoglobin, liganded)
 
 
 mixed_venous_ph = inverse(
@@ -218,12 +208,12 @@ Notes
 -----
 The one pH at which blood holds both contents: pH shifts the O2 curve (Bohr), the saturation that follows
 changes CO2 content and buffering (Haldane). With it PO2 follows from O2 content and PCO2 from base excess.
-Content by Douglas 1988, base excess by Lang & Zander 2002, curve of Severinghaus 1979. Not reached: outside
-pH 7.0 to 7.7, or no O2 left.
+Content by Douglas 1988, base excess by Lang & Zander 2002, curve of Severinghaus 1979, with carbon monoxide
+by the laws of Haldane. Not reached: outside pH 7.0 to 7.7, or no O2 left.
 
 Examples
 --------
->>> round(mixed_venous_ph(50.69, 0.0, 15.0, 15.0, 15.0), 3)
+>>> round(mixed_venous_ph(50.69, 0.0, 15.0, 15.0), 3)
 7.38
 """,
 )

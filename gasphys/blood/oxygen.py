@@ -565,14 +565,19 @@ def _content_kernel(forward: EquationFunction) -> Callable[..., Array]:
         high = content / dissolved_o2.raw(1.0) * (1.0 + 1e-12)
         return _root(forward, content, rest, high, _kelman_start(rest[1:]) if kelman else None)
 
-    def tabled(content: Array, *rest: Any) -> Array:
+    # Large arrays come part by part, and the same blood comes again.
+    @functools.lru_cache(maxsize=8)
+    def table(*rest: float) -> tuple[Any, ...]:
         nodes = np.linspace(0.0, np.cbrt(float(forward.raw(_TOP, *rest))), _NODES)
         po2 = _in_blocks(bracketed, nodes**3, *rest)
         step = 1e-5 * np.maximum(po2, po2[1])
         below, above = np.maximum(po2 - step, 0.0), po2 + step
         slope = (above - below) / (forward.raw(above, *rest) - forward.raw(below, *rest))
-        width = nodes[1]
-        po2_rise, slope_rise = np.diff(po2, append=po2[-1]), np.diff(slope, append=slope[-1])
+        rises = np.diff(po2, append=po2[-1]), np.diff(slope, append=slope[-1])
+        return nodes[1], po2, slope, *rises
+
+    def tabled(content: Array, *rest: float) -> Array:
+        width, po2, slope, po2_rise, slope_rise = table(*rest)
 
         def solve(content: Array) -> Any:
             place = np.cbrt(content) / width
@@ -593,7 +598,7 @@ def _content_kernel(forward: EquationFunction) -> Callable[..., Array]:
     def kernel(content: Any, *rest: Any) -> Array:
         with np.errstate(all="ignore"):
             if np.size(content) > _NODES and not any(np.ndim(v) for v in rest):
-                return tabled(content, *rest)
+                return tabled(content, *(float(v) for v in rest))
             return _in_blocks(bracketed, content, *rest)
 
     return kernel

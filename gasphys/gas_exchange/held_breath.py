@@ -14,7 +14,6 @@ from numpy.typing import NDArray
 
 from gasphys import blood, lungs
 from gasphys.blood.carbon_dioxide import content_of_buffered_blood, unbounded_pco2_at_base_excess
-from gasphys.blood.oxygen import severinghaus_content
 from gasphys.constants import BODY_VAPOR_PRESSURE
 from gasphys.errors import ExposureError, RangeError
 from gasphys.exposure import Exposure
@@ -25,7 +24,7 @@ from gasphys.gas_exchange.equations import (
     lung_volume_of_gas,
     squeeze_pressure,
 )
-from gasphys.gas_exchange.model import _Chain
+from gasphys.gas_exchange.model import _Chain, recorded
 from gasphys.person import Person
 from gasphys.policy import validity, weakest
 from gasphys.quantities import CAUTION, attributes, quantity
@@ -54,6 +53,13 @@ _USED = (
 
 #: Alveolar PO2 below which the hold is not followed: no one is conscious long before.
 _LOWEST_PO2 = 1.0
+
+#: The transfers that what is integrated follows from.
+_RATES = {
+    **{f"{gas}_in_{place}": f"{gas}_transfer_stpd" for gas in ("o2", "co2") for place in ("lung", "blood")},
+    **{f"mixed_venous_{gas}_content": f"{gas}_transfer_stpd" for gas in ("o2", "co2")},
+    "lung_gas_stpd": "o2_transfer_stpd co2_transfer_stpd",
+}
 
 # Positions in the state, all L STPD: in the lungs, in the blood, inert gas given to the blood so far.
 _O2, _CO2, _INERT, _BLOOD_O2, _BLOOD_CO2, _INERT_GIVEN = range(6)
@@ -118,15 +124,16 @@ def breath_hold(
     >>> ds.lung_volume_btps.values.round(2)
     array([6.  , 1.82, 1.66, 5.16])
     """
-    person = Person() if person is None else person
+    person = Person() if person is None else person.one()
     if exposure.dims:
         raise ExposureError("a breath-hold takes one exposure; pick one scenario first")
     lung = _value("lung_volume_btps", lung_volume_btps)
     residual = _value("residual_volume_btps", residual_volume_btps)
+    store = _value("blood_volume", blood_volume)
     if not residual < lung:
         raise RangeError(f"residual_volume_btps = {residual:g} L must be below lung_volume_btps = {lung:g} L")
     out = exposure.to_dataset(at=at)
-    body = _Body.of(person, exposure, _value("blood_volume", blood_volume))
+    body = _Body.of(person, exposure, store)
     with validity("ignore"):
         start = body.start(exposure, lung)
         states, crossings = _integrate(exposure, body, start, out["time"].values, residual)
@@ -138,8 +145,15 @@ def breath_hold(
         "title": "gas of lungs and blood through one breath-hold",
         "source": out.attrs["source"].replace(", exposure", ", breath-hold mass balance"),
         "references": "; ".join(dict.fromkeys([*chain.references, "lanphier_rahn_1963"])),
-        "assumed": ", ".join(f"{n} = {person.value(n):g}" for n in _USED if not person.is_measured(n)),
-        "measured": ", ".join(f"{n} = {person.value(n):g}" for n in _USED if person.is_measured(n)),
+        "assumed": person.told(_USED, measured=False),
+        "measured": person.told(_USED, measured=True),
+        "run": recorded(
+            person,
+            model="breath_hold",
+            lung_volume_btps=lung,
+            residual_volume_btps=residual,
+            blood_volume=store,
+        ),
         "lung_volume_at_start": lung,
         "residual_volume": residual,
         "blood_volume": body.blood_volume,
@@ -166,6 +180,8 @@ class _Body:
     exchange: float
     difference: float
     hemoglobin: float
+    cohb: float
+    liganded: float
     ph: float
     arterial_pco2: float
     blood_volume: float
@@ -178,12 +194,12 @@ class _Body:
         from scipy.interpolate import CubicSpline
 
         hemoglobin = person.value("hemoglobin")
-        able = blood.functional_hemoglobin(hemoglobin, person.value("cohb_fraction"))
+        cohb = person.value("cohb_fraction")
         pco2, ph = person.value("arterial_pco2"), person.value("arterial_ph")
         po2 = cls.breathed(person, exposure)
         if not po2 > 0.0:
             raise RangeError(f"alveolar_po2 = {po2:.4g} kPa at the start: this gas cannot sustain life")
-        saturation = blood.o2_saturation.raw(po2, "severinghaus_1979", ph)
+        saturation = blood.liganded_fraction.raw(blood.o2_saturation_beside_cohb.raw(po2, cohb, ph), cohb)
         excess = blood.base_excess.raw(pco2, ph, hemoglobin, saturation)
         # Content against PCO2 at one base excess: both follow from pH, nodes from alkaline to acid.
         nodes = np.linspace(_PH[1], _PH[0], _NODES)
@@ -195,7 +211,9 @@ class _Body:
             uptake=np.where(np.isnan(work), person.value("o2_uptake_stpd"), work),
             exchange=person.value("respiratory_exchange_ratio"),
             difference=person.value("arteriovenous_difference"),
-            hemoglobin=float(able),
+            hemoglobin=hemoglobin,
+            cohb=cohb,
+            liganded=float(saturation),
             ph=ph,
             arterial_pco2=pco2,
             blood_volume=blood_volume,
@@ -241,7 +259,7 @@ class _Body:
 
     def o2_content(self, po2: Any) -> Any:
         # A trial step of the solver may overdraw the lungs; an accepted one is stopped before.
-        return severinghaus_content.raw(np.maximum(po2, 0.0), self.hemoglobin, self.ph, 37.0)
+        return blood.o2_content_beside_cohb.raw(np.maximum(po2, 0.0), self.hemoglobin, self.cohb, self.ph)
 
     def pressures(self, state: Any, pressure: Any) -> Any:
         total = state[_O2] + state[_CO2] + state[_INERT]
@@ -388,7 +406,8 @@ def _describe(chain: _Chain, body: _Body, exposure: Exposure, states: Array) -> 
     ds["cardiac_output"] = ("segment", flows, attributes("cardiac_output"))
 
     def put(name: str, values: Array, of: str, what: str) -> None:
-        ds[name] = ("time", np.asarray(values), {**attributes(of), "long_name": what})
+        attrs = {**attributes(of), "long_name": what, "integral_of": _RATES.get(name, "")}
+        ds[name] = ("time", np.asarray(values), attrs)
 
     for index, gas in ((_O2, "o2"), (_CO2, "co2"), (_INERT, "inert")):
         name = {"o2": "O2", "co2": "CO2", "inert": "inert gas"}[gas]
@@ -420,16 +439,38 @@ def _describe(chain: _Chain, body: _Body, exposure: Exposure, states: Array) -> 
             **pressure,
         )
     chain.put(
-        "end_capillary_o2_content",
-        "blood.o2_content",
-        blood.o2_content,
-        po2="@alveolar_po2",
+        "functional_hemoglobin",
+        "blood.functional_hemoglobin",
+        blood.functional_hemoglobin,
         hemoglobin=body.hemoglobin,
-        model="severinghaus_1979",
-        ph=body.ph,
+        cohb_fraction=body.cohb,
     )
-    contents = np.asarray(body.co2_content(ds["alveolar_pco2"].values))
-    put("end_capillary_co2_content", contents, "co2_content", "CO2 content of end-capillary blood")
+    chain.values = {"hemoglobin": body.hemoglobin, "cohb_fraction": body.cohb}
+    chain.content("end_capillary_o2_content", po2="@alveolar_po2", ph=body.ph)
+    held = {"hemoglobin": body.hemoglobin, "o2_saturation": body.liganded}
+    chain.put(
+        "base_excess", "blood.base_excess", blood.base_excess, pco2=body.arterial_pco2, ph=body.ph, **held
+    )
+    pco2 = {"pco2": "@alveolar_pco2"}
+    chain.put(
+        "end_capillary_ph",
+        "blood.ph_at_base_excess",
+        blood.ph_at_base_excess,
+        base_excess="@base_excess",
+        **pco2,
+        **held,
+    )
+    chain.put(
+        "end_capillary_co2_content",
+        "blood.co2_content",
+        blood.co2_content,
+        **pco2,
+        ph="@end_capillary_ph",
+        **held,
+        model="douglas_1988",
+    )
+    for name, what in (("end_capillary_ph", "pH"), ("end_capillary_co2_content", "CO2 content")):
+        ds[name].attrs["long_name"] = f"{what} of end-capillary blood"
     output = ds["cardiac_output"].isel(segment=ds["segment_of_time"]).drop_vars("segment")
     for gas in ("o2", "co2"):
         inputs = {
@@ -463,7 +504,11 @@ def _events(
         ds[name] = (
             "event",
             np.array([pair[column] for pair in crossings]),
-            {"units": "min", "long_name": f"first time at which the band {word}; missing: never"},
+            {
+                "units": "min",
+                "long_name": f"first time at which the band {word}; missing: never",
+                "integral_of": "o2_transfer_stpd co2_transfer_stpd",
+            },
         )
     for name in ("meaning", "source", "provenance"):
         ds[f"event_{name}"] = ("event", [row[name] for row in rows], {"long_name": f"{name} of the band"})

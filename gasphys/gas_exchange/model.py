@@ -14,7 +14,7 @@ from gasphys.constants import BODY_VAPOR_PRESSURE
 from gasphys.errors import unknown_name
 from gasphys.exposure import Exposure
 from gasphys.gas_exchange.equations import arterial_po2_from_ratio
-from gasphys.person import Person
+from gasphys.person import Person, measurable
 from gasphys.policy import validity, weakest
 from gasphys.quantities import CAUTION, attributes, quantity
 
@@ -53,7 +53,14 @@ _OF_BLOOD = ("hemoglobin", "arteriovenous_difference", "cardiac_output", "arteri
 _CURVE = {"model": "severinghaus_1979"}
 
 #: Quantity of a variable where it is not that of its name.
-_QUANTITY = {"mixed_venous_o2_saturation": "venous_o2_saturation", "mixed_venous_pco2": "venous_pco2"}
+_QUANTITY = {
+    "mixed_venous_o2_saturation": "venous_o2_saturation",
+    "mixed_venous_pco2": "venous_pco2",
+    "arterial_liganded_fraction": "liganded_fraction",
+    "mixed_venous_liganded_fraction": "liganded_fraction",
+    "end_capillary_ph": "ph",
+    "end_capillary_co2_content": "co2_content",
+}
 
 
 def calibrate(
@@ -114,7 +121,12 @@ def calibrate(
 
 
 def oxygenation(
-    exposure: Exposure, person: Person | None = None, model: str = "ratio", *, at: Any = None
+    exposure: Exposure,
+    person: Person | None = None,
+    model: str = "ratio",
+    *,
+    fico2: Any = None,
+    at: Any = None,
 ) -> xr.Dataset:
     """Oxygen and CO2 of a person along an exposure, from the breathing gas to mixed venous blood.
 
@@ -123,21 +135,25 @@ def oxygenation(
     exposure : Exposure
         Pressure and breathing gas against time.
     person : Person, optional
-        What is measured; what is not is assumed and named in the Dataset.
+        What is measured; what is not is assumed and named in the Dataset. Labelled arrays broadcast over
+        the scenarios of the exposure.
     model : {"ratio", "shunt", "both"}
         How arterial follows alveolar PO2: a constant ratio (healthy lungs), a constant shunt (diseased
         lungs), or both, on a dimension ``model``.
+    fico2 : float or array_like, optional
+        CO2 of the dry gas breathed [1], a number or one for each piece, where the gas does not tell it (a
+        mask, a chamber, a worn absorbent). Else that of the gas; a loop's absorbent takes its CO2.
     at : array_like, optional
         Times to add to the exposure's own [min].
 
     Returns
     -------
     Dataset
-        On the exposure's ``time``: ``inspired_po2``, ``alveolar_po2``, ``end_capillary_po2``,
-        ``arterial_po2`` and ``mixed_venous_po2`` with ``_low`` and ``_high``; saturations and contents;
-        ``arterial_dissolved_o2`` and ``dissolved_o2_share``; ``o2_delivery_stpd`` and ``o2_extraction``;
-        ``mixed_venous_pco2`` and ``venous_arterial_pco2_difference``; ``gas_exchange_flag``, which tells
-        of each NaN why.
+        On the exposure's ``time``: ``inspired_po2``, ``inspired_pco2``, ``alveolar_po2``,
+        ``end_capillary_po2``, ``arterial_po2`` and ``mixed_venous_po2`` with ``_low`` and ``_high``;
+        saturations and contents; ``arterial_dissolved_o2`` and ``dissolved_o2_share``;
+        ``o2_delivery_stpd`` and ``o2_extraction``; ``mixed_venous_pco2`` and
+        ``venous_arterial_pco2_difference``; ``gas_exchange_flag``, which tells of each NaN why.
 
     Raises
     ------
@@ -150,8 +166,9 @@ def oxygenation(
     are inputs and stay as given; pH 7.40 where it was not measured, as in the compensated. Mixed venous
     O2 and CO2 are solved together: venous pH shifts the O2 curve (Bohr), venous saturation changes CO2
     content (Haldane). ``_low`` and ``_high`` are for 0.9 and 1.2 times the arteriovenous difference
-    (4.5 to 6 mL/dL about 5), arterial blood unchanged. Carbon monoxide takes hemoglobin away here; its
-    shift of the curve is not counted.
+    (4.5 to 6 mL/dL about 5), arterial blood unchanged. Carbon monoxide takes hemoglobin away and shifts
+    the curve of the rest to the left (:func:`gasphys.blood.o2_saturation_beside_cohb`); COHb stays as given.
+    CO2 in the gas raises alveolar PO2 for the arterial PCO2 given, which it would itself raise.
 
     Examples
     --------
@@ -170,10 +187,12 @@ def oxygenation(
     values = {name: person.value(name) for name in used}
     out = exposure.to_dataset(at=at)
     chain = _Chain(out)
+    chain.values = {name: chain.given(name, value) for name, value in values.items()}
+    out["fico2"] = _co2_breathed(out, fico2)
     with validity("ignore"):
-        _to_alveolus(chain, values)
-        _to_artery(chain, values, chosen, both=model == "both")
-        _to_vein(chain, values)
+        _to_alveolus(chain)
+        _to_artery(chain, chosen, both=model == "both")
+        _to_vein(chain)
         _flag(out)
     texts = _texts(out, values, chosen, both=model == "both")
     out.attrs = {
@@ -181,15 +200,24 @@ def oxygenation(
         "title": "oxygen from breathing gas to mixed venous blood",
         "source": out.attrs["source"].replace(", exposure", f", gas exchange model {model}"),
         "references": "; ".join(dict.fromkeys(chain.references)),
-        "assumed": ", ".join(f"{n} = {values[n]:g}" for n in used if not person.is_measured(n)),
-        "measured": ", ".join(f"{n} = {values[n]:g}" for n in used if person.is_measured(n)),
-        "arteriovenous_band": [f * values["arteriovenous_difference"] for f in ARTERIOVENOUS_BAND],
+        "assumed": person.told(used, measured=False),
+        "measured": person.told(used, measured=True),
+        "arteriovenous_band": [
+            float(end(f * values["arteriovenous_difference"]))
+            for f, end in zip(ARTERIOVENOUS_BAND, (np.min, np.max), strict=True)
+        ],
         "provenance": weakest(chain.provenance),
         "comment": CAUTION,
     }
     if texts:
         out.attrs["flags"] = "; ".join(texts)
     return out
+
+
+def recorded(person: Person, **arguments: Any) -> str:
+    """Return what an integration was started with, as text it can be run again from."""
+    known = {n: getattr(person, n) for n in measurable() if getattr(person, n) is not None}
+    return json.dumps({"person": {**known, "assumed": person.assumed}, **arguments})
 
 
 class _Chain:
@@ -199,11 +227,24 @@ class _Chain:
         self.ds = ds
         self.references: list[str] = []
         self.provenance: list[str] = []
+        #: What is known of the person, each a number or the name of a variable, ``"@x"``.
+        self.values: dict[str, Any] = {}
+
+    def read(self, inputs: dict[str, Any]) -> dict[str, Any]:
+        """Return inputs with the variable x of the dataset in the place of ``"@x"``."""
+        return {k: self.ds[v[1:]] if _is_name(v) else v for k, v in inputs.items()}
+
+    def given(self, name: str, value: Any, end: str = "") -> Any:
+        """Return a value to be used as an input: a labelled array becomes a variable of the dataset."""
+        if not isinstance(value, xr.DataArray):
+            return value
+        self.ds[name + end] = value
+        self.ds[name + end].attrs = attributes(name)
+        return f"@{name}{end}"
 
     def put(self, name: str, equation: str, f: Any, **inputs: Any) -> None:
         """Add a variable; an input ``"@x"`` is the variable x of the dataset."""
-        given = {k: self.ds[v[1:]] if _is_name(v) else v for k, v in inputs.items()}
-        result = f(**given)
+        result = f(**self.read(inputs))
         if not isinstance(result, xr.DataArray):
             # From numbers alone: one value for the whole exposure.
             result = xr.DataArray(result)
@@ -220,15 +261,101 @@ class _Chain:
         attrs = attributes(_QUANTITY.get(base, base))
         if base != name:
             attrs["long_name"] += f", {end} end of the band"
-        self.ds[name] = result
+        along = self.ds["ambient_pressure"].dims[-1]
+        self.ds[name] = result.transpose(..., along) if along in result.dims else result
         self.ds[name].attrs = {**attrs, **known, "equation": equation, "inputs": json.dumps(inputs)}
+
+    # Blood with carbon monoxide has equations of its own; without it the plain ones are told.
+
+    @property
+    def carries_co(self) -> bool:
+        """Whether any of the blood carries carbon monoxide."""
+        return bool(np.any(self.read(self.values)["cohb_fraction"] > 0.0))
+
+    def content(self, name: str, *, po2: str, ph: Any) -> None:
+        """Add the O2 content at a PO2."""
+        if self.carries_co:
+            blood_of = {k: self.values[k] for k in ("hemoglobin", "cohb_fraction")}
+            self.put(
+                name, "blood.o2_content_beside_cohb", blood.o2_content_beside_cohb, po2=po2, **blood_of, ph=ph
+            )
+        else:
+            self.put(
+                name,
+                "blood.o2_content",
+                blood.o2_content,
+                po2=po2,
+                hemoglobin="@functional_hemoglobin",
+                **_CURVE,
+                ph=ph,
+            )
+
+    def saturation(self, name: str, *, po2: str, ph: Any) -> None:
+        """Add the saturation of what hemoglobin is left for O2."""
+        if self.carries_co:
+            f = blood.o2_saturation_beside_cohb
+            cohb = self.values["cohb_fraction"]
+            self.put(name, "blood.o2_saturation_beside_cohb", f, po2=po2, cohb_fraction=cohb, ph=ph)
+        else:
+            self.put(name, "blood.o2_saturation", blood.o2_saturation, po2=po2, **_CURVE, ph=ph)
+
+    def po2(self, name: str, *, content: str, ph: Any) -> None:
+        """Add the PO2 at an O2 content."""
+        if self.carries_co:
+            f = blood.po2_at_content_beside_cohb
+            blood_of = {k: self.values[k] for k in ("hemoglobin", "cohb_fraction")}
+            self.put(name, "blood.po2_at_content_beside_cohb", f, content=content, **blood_of, ph=ph)
+        else:
+            self.put(
+                name,
+                "blood.po2_at_content",
+                blood.po2_at_content,
+                content=content,
+                hemoglobin="@functional_hemoglobin",
+                **_CURVE,
+                ph=ph,
+            )
+
+    def liganded(self, site: str) -> str:
+        """Return the variable with the share of hemoglobin that carries O2 or CO."""
+        saturation = f"@{site}_o2_saturation"
+        if not self.carries_co:
+            return saturation
+        name = f"{site}_liganded_fraction"
+        self.put(
+            name,
+            "blood.liganded_fraction",
+            blood.liganded_fraction,
+            o2_saturation=saturation,
+            cohb_fraction=self.values["cohb_fraction"],
+        )
+        return f"@{name}"
 
 
 def _is_name(value: Any) -> bool:
     return isinstance(value, str) and value.startswith("@")
 
 
-def _to_alveolus(chain: _Chain, values: dict[str, float]) -> None:
+def _co2_breathed(ds: xr.Dataset, fico2: Any) -> xr.DataArray:
+    """Return the CO2 fraction of the dry gas at each time: as given, or that of the gas."""
+    if fico2 is not None:
+        one = quantity("fico2")
+        given = np.asarray(one.from_text(fico2) if isinstance(fico2, str) else fico2, dtype=float)
+        low, high = one.possible
+        if not np.all((given >= low) & (given <= high)):
+            raise one.range_error(float(np.ravel(given[~((given >= low) & (given <= high))])[0]))
+        of_piece = xr.DataArray(np.broadcast_to(given, (ds.sizes["segment"],)).copy(), dims="segment")
+    elif "CO2" in ds["gas"].values:
+        of_piece = ds["gas_fraction"].sel(gas="CO2", drop=True).where(ds["setpoint"].isnull(), 0.0)
+    else:
+        of_piece = xr.DataArray(np.zeros(ds.sizes["segment"]), dims="segment")
+    found = of_piece.isel(segment=ds["segment_of_time"]).drop_vars("segment", errors="ignore")
+    found.attrs = attributes("fico2")
+    return found
+
+
+def _to_alveolus(chain: _Chain) -> None:
+    values = chain.values
     vapor = float(BODY_VAPOR_PRESSURE)
     pressure = {"ambient_pressure": "@ambient_pressure"}
     # The fraction of what is breathed, on a loop too: dry PO2 over ambient pressure.
@@ -247,19 +374,28 @@ def _to_alveolus(chain: _Chain, values: dict[str, float]) -> None:
         fio2="@fio2",
         water_vapor_pressure=vapor,
     )
+    chain.put(
+        "inspired_pco2",
+        "lungs.inspired_pco2",
+        lungs.inspired_pco2,
+        **pressure,
+        fico2="@fico2",
+        water_vapor_pressure=vapor,
+    )
     alveolar = {
         **pressure,
         "fio2": "@fio2",
         "alveolar_pco2": values["arterial_pco2"],
         "respiratory_exchange_ratio": values["respiratory_exchange_ratio"],
-        "fico2": 0.0,
+        "fico2": "@fico2",
         "water_vapor_pressure": vapor,
     }
     for name in ("alveolar_po2", "end_capillary_po2"):  # the ideal alveolus: in equilibrium
         chain.put(name, "lungs.alveolar_po2", lungs.alveolar_po2, **alveolar)
 
 
-def _to_artery(chain: _Chain, values: dict[str, float], chosen: tuple[str, ...], both: bool) -> None:
+def _to_artery(chain: _Chain, chosen: tuple[str, ...], both: bool) -> None:
+    values = chain.values
     chain.put(
         "functional_hemoglobin",
         "blood.functional_hemoglobin",
@@ -268,30 +404,22 @@ def _to_artery(chain: _Chain, values: dict[str, float], chosen: tuple[str, ...],
         cohb_fraction=values["cohb_fraction"],
     )
     ph = values["arterial_ph"]
-    hemoglobin = float(chain.ds["functional_hemoglobin"])
-    chain.put(
-        "end_capillary_o2_content",
-        "blood.o2_content",
-        blood.o2_content,
-        po2="@end_capillary_po2",
-        hemoglobin="@functional_hemoglobin",
-        **_CURVE,
-        ph=ph,
-    )
+    chain.content("end_capillary_o2_content", po2="@end_capillary_po2", ph=ph)
     inputs: dict[str, dict[str, Any]] = {
         "ratio": {"ratio": values.get("arterial_alveolar_ratio")},
         "shunt": {
             "shunt_fraction": values.get("shunt_fraction"),
-            "hemoglobin": hemoglobin,
+            "hemoglobin": values["hemoglobin"],
             "arteriovenous_difference": values["arteriovenous_difference"],
             "ph": ph,
+            "cohb_fraction": values["cohb_fraction"],
         },
     }
     equations = {
         "ratio": ("gas_exchange.arterial_po2_from_ratio", arterial_po2_from_ratio),
         "shunt": ("blood.arterial_po2_from_shunt", blood.arterial_po2_from_shunt),
     }
-    found = [equations[m][1](alveolar_po2=chain.ds["alveolar_po2"], **inputs[m]) for m in chosen]
+    found = [equations[m][1](alveolar_po2=chain.ds["alveolar_po2"], **chain.read(inputs[m])) for m in chosen]
     arterial = found[0]
     if both:
         arterial = xr.concat(found, dim=xr.DataArray(list(chosen), dims="model", name="model"))
@@ -305,16 +433,9 @@ def _to_artery(chain: _Chain, values: dict[str, float], chosen: tuple[str, ...],
         " | ".join(equations[m][0] for m in chosen),
         {"alveolar_po2": "@alveolar_po2", **{k: v for m in chosen for k, v in inputs[m].items()}},
     )
-    state = {"po2": "@arterial_po2", **_CURVE, "ph": ph}
-    chain.put("arterial_o2_saturation", "blood.o2_saturation", blood.o2_saturation, **state)
+    chain.saturation("arterial_o2_saturation", po2="@arterial_po2", ph=ph)
     chain.put("arterial_dissolved_o2", "blood.dissolved_o2", blood.dissolved_o2, po2="@arterial_po2")
-    chain.put(
-        "arterial_o2_content",
-        "blood.o2_content",
-        blood.o2_content,
-        hemoglobin="@functional_hemoglobin",
-        **state,
-    )
+    chain.content("arterial_o2_content", po2="@arterial_po2", ph=ph)
     content = {"arterial_o2_content": "@arterial_o2_content"}
     chain.put(
         "dissolved_o2_share",
@@ -339,13 +460,14 @@ def _to_artery(chain: _Chain, values: dict[str, float], chosen: tuple[str, ...],
     )
 
 
-def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
+def _to_vein(chain: _Chain) -> None:
+    values = chain.values
     hemoglobin = values["hemoglobin"]
     arterial = {
         "pco2": values["arterial_pco2"],
         "ph": values["arterial_ph"],
         "hemoglobin": hemoglobin,
-        "o2_saturation": "@arterial_o2_saturation",
+        "o2_saturation": chain.liganded("arterial"),
     }
     chain.put("base_excess", "blood.base_excess", blood.base_excess, **arterial)
     chain.put(
@@ -355,13 +477,15 @@ def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
         **arterial,
         model="douglas_1988",
     )
-    difference = values["arteriovenous_difference"]
+    difference, exchange = (
+        chain.read(values)[name] for name in ("arteriovenous_difference", "respiratory_exchange_ratio")
+    )
     for end, factor in (
         ("", 1.0),
         ("_high", ARTERIOVENOUS_BAND[0]),
         ("_low", ARTERIOVENOUS_BAND[1]),
     ):
-        taken = difference * factor
+        taken = chain.given("arteriovenous_difference", difference * factor, end)
         chain.put(
             f"mixed_venous_o2_content{end}",
             "blood.mixed_venous_o2_content",
@@ -369,7 +493,7 @@ def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
             arterial_o2_content="@arterial_o2_content",
             arteriovenous_difference=taken,
         )
-        load = blood.co2_load(values["respiratory_exchange_ratio"], taken)
+        load = blood.co2_load(exchange, difference * factor)
         # The flow that gives less O2 off takes less CO2 up: high O2 goes with low CO2.
         other = {"": "", "_high": "_low", "_low": "_high"}[end]
         chain.put(
@@ -377,7 +501,7 @@ def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
             "blood.mixed_venous_co2_content",
             blood.mixed_venous_co2_content,
             arterial_co2_content="@arterial_co2_content",
-            venous_arterial_co2_difference=load,
+            venous_arterial_co2_difference=chain.given("venous_arterial_co2_difference", load, other),
         )
         chain.put(
             f"mixed_venous_ph{end}",
@@ -387,25 +511,14 @@ def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
             base_excess="@base_excess",
             hemoglobin=hemoglobin,
             mixed_venous_o2_content=f"@mixed_venous_o2_content{end}",
-            functional_hemoglobin="@functional_hemoglobin",
+            cohb_fraction=values["cohb_fraction"],
         )
-        chain.put(
+        chain.po2(
             f"mixed_venous_po2{end}",
-            "blood.po2_at_content",
-            blood.po2_at_content,
             content=f"@mixed_venous_o2_content{end}",
-            hemoglobin="@functional_hemoglobin",
-            **_CURVE,
             ph=f"@mixed_venous_ph{end}",
         )
-    chain.put(
-        "mixed_venous_o2_saturation",
-        "blood.o2_saturation",
-        blood.o2_saturation,
-        po2="@mixed_venous_po2",
-        **_CURVE,
-        ph="@mixed_venous_ph",
-    )
+    chain.saturation("mixed_venous_o2_saturation", po2="@mixed_venous_po2", ph="@mixed_venous_ph")
     chain.put(
         "mixed_venous_pco2",
         "blood.pco2_at_base_excess",
@@ -413,7 +526,7 @@ def _to_vein(chain: _Chain, values: dict[str, float]) -> None:
         base_excess="@base_excess",
         ph="@mixed_venous_ph",
         hemoglobin=hemoglobin,
-        o2_saturation="@mixed_venous_o2_saturation",
+        o2_saturation=chain.liganded("mixed_venous"),
     )
     chain.put(
         "venous_arterial_pco2_difference",
@@ -436,7 +549,7 @@ def _flag(ds: xr.Dataset) -> None:
     flag = xr.zeros_like(ds["arterial_po2"], dtype=np.int8)
     for code, reason in reversed(list(enumerate(reasons, start=1))):
         flag = flag.where(~reason, np.int8(code)).astype(np.int8)
-    ds["gas_exchange_flag"] = flag.transpose(*ds["arterial_po2"].dims)
+    ds["gas_exchange_flag"] = flag.transpose(..., ds["ambient_pressure"].dims[-1])
     ds["gas_exchange_flag"].attrs = {
         "long_name": "why values are missing",
         "flag_values": list(range(len(FLAGS))),
@@ -444,8 +557,10 @@ def _flag(ds: xr.Dataset) -> None:
     }
 
 
-def _texts(ds: xr.Dataset, values: dict[str, float], chosen: tuple[str, ...], both: bool) -> list[str]:
+def _texts(ds: xr.Dataset, values: dict[str, Any], chosen: tuple[str, ...], both: bool) -> list[str]:
     flag = ds["gas_exchange_flag"]
+    if flag.chunks is not None:
+        return ["values not computed yet: gas_exchange_flag tells of each that is missing why"]
     texts = []
     for code, text in _FLAG_TEXT.items():
         hit = flag == code
@@ -457,14 +572,20 @@ def _texts(ds: xr.Dataset, values: dict[str, float], chosen: tuple[str, ...], bo
                 where = "" if len(names) == 2 else f" (model {names[0]})"
             texts.append(f"{int(hit.sum())} instants with {text}{where}")
     ratio = values.get("arterial_alveolar_ratio")
-    if ratio is not None and ratio < 0.75:
-        text = f"arterial/alveolar ratio {ratio:.2f} is below 0.75, where it did not carry over to pressure"
+    if ratio is not None and np.any(ratio < 0.75):
+        low = float(np.min(ratio))
+        text = f"arterial/alveolar ratio {low:.2f} is below 0.75, where it did not carry over to pressure"
         text += "; the models part" if both else "; see the shunt model"
         texts.append(text)
+    cohb = float(np.max(values["cohb_fraction"]))
+    if cohb > 0.0:
+        texts.append(
+            f"carboxyhemoglobin stays {cohb:.2f} here; on oxygen it falls (gas_exchange.carboxyhemoglobin)"
+        )
+    if bool((ds["inspired_pco2"] >= np.min(values["arterial_pco2"])).any()):
+        texts.append("inspired PCO2 reaches the arterial PCO2 given: no steady state, arterial PCO2 rises")
     shunt = values.get("shunt_fraction")
-    if values["cohb_fraction"] > 0.0:
-        texts.append("carbon monoxide: the shift of the O2 curve is not counted, venous PO2 is lower")
     low, high = quantity("shunt_fraction").usual
-    if shunt is not None and not low <= shunt <= high:
-        texts.append(f"shunt {shunt:.2f} is beyond the {high:g} that the model is used for")
+    if shunt is not None and not np.all((low <= shunt) & (shunt <= high)):
+        texts.append(f"shunt {float(np.max(shunt)):.2f} is beyond the {high:g} that the model is used for")
     return texts

@@ -175,7 +175,7 @@ def _search(
         raise unknown_name("gas exchange model", model, (*MODELS, "both"))
     if not span[0] < span[1]:
         raise RangeError(f"{name}: highest = {span[1]:g} must be above {span[0]:g}")
-    person = Person() if person is None else person
+    person = Person() if person is None else person.one()
     found, misses = [], []
     for one in MODELS if model == "both" else (model,):
         try:
@@ -224,7 +224,6 @@ def _root(
 def _arterial(person: Person, model: str) -> Callable[[Any, Any], Array]:
     """Return arterial PO2 of pressure and fraction; where a shunt takes all O2 it is nothing."""
     pco2, exchange = person.value("arterial_pco2"), person.value("respiratory_exchange_ratio")
-    hemoglobin = blood.functional_hemoglobin(person.value("hemoglobin"), person.value("cohb_fraction"))
 
     def of(pressure: Any, fraction: Any) -> Array:
         alveolar = lungs.alveolar_po2.raw(pressure, fraction, pco2, exchange, 0.0, float(BODY_VAPOR_PRESSURE))
@@ -233,9 +232,10 @@ def _arterial(person: Person, model: str) -> Callable[[Any, Any], Array]:
         found = blood.arterial_po2_from_shunt.raw(
             np.maximum(alveolar, 0.0),
             person.value("shunt_fraction"),
-            hemoglobin,
+            person.value("hemoglobin"),
             person.value("arteriovenous_difference"),
             person.value("arterial_ph"),
+            person.value("cohb_fraction"),
         )
         return np.where(np.isnan(found), 0.0, found)
 

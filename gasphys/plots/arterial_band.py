@@ -19,7 +19,7 @@ _DASHES: dict[str, Any] = {"ratio": "-", "shunt": (0, (5, 2))}
 
 
 def arterial_band_figure(ds: xr.Dataset, *, pressure_unit: str = "atm", po2_unit: str = "kPa") -> Any:
-    """Draw alveolar, arterial and mixed venous PO2 and dissolved O2 against pressure, models as bands.
+    """Draw the cascade of O2 from inspired gas to mixed venous blood against pressure, models as bands.
 
     Parameters
     ----------
@@ -32,9 +32,9 @@ def arterial_band_figure(ds: xr.Dataset, *, pressure_unit: str = "atm", po2_unit
     Returns
     -------
     matplotlib.figure.Figure
-        Above: alveolar PO2, and arterial PO2 between the constant ratio and the constant shunt. Middle:
-        mixed venous PO2 over the arteriovenous band. Below: dissolved O2 between the models, and the
-        arteriovenous difference that it would have to cover.
+        Above: inspired and alveolar PO2, and arterial PO2 between the constant ratio and the constant
+        shunt. Middle: mixed venous PO2 over the arteriovenous band. Below: dissolved O2 between the
+        models, and the arteriovenous difference that it would have to cover.
 
     Raises
     ------
@@ -70,7 +70,12 @@ def arterial_band_figure(ds: xr.Dataset, *, pressure_unit: str = "atm", po2_unit
         tidy(axes)
     alveolar = shown("alveolar_po2", "ratio")
     upper.plot(x, alveolar, color=INK, linewidth=1.2)
-    words: list[tuple[Any, float, str]] = [(upper, alveolar[-1], "alveolar")]
+    inspired = shown("inspired_po2", "ratio")
+    upper.plot(x, inspired, color=INK, linewidth=1.0, linestyle=(0, (1, 2)))
+    words: list[tuple[Any, float, str]] = [
+        (upper, inspired[-1], "inspired, moist"),
+        (upper, alveolar[-1], "alveolar"),
+    ]
     for axes, name in ((upper, "arterial_po2"), (lower, "arterial_dissolved_o2")):
         both = {model: shown(name, model) for model in _DASHES}
         axes.fill_between(x, both["ratio"], both["shunt"], color=PALE, linewidth=0.0)
@@ -90,9 +95,10 @@ def arterial_band_figure(ds: xr.Dataset, *, pressure_unit: str = "atm", po2_unit
     lower.axhspan(band[0], band[1], facecolor="none", edgecolor=INK, linewidth=0.0, hatch="....", alpha=0.5)
     lower.text(x[0], band.mean(), " arteriovenous difference", fontsize=8, va="center", color=INK,
                bbox={"facecolor": "white", "edgecolor": "none", "pad": 1.0})  # fmt: skip
-    upper.set_ylabel(f"arterial PO2, {po2_unit}", fontsize=9)
-    middle.set_ylabel(f"mixed venous PO2, {po2_unit}", fontsize=9)
-    lower.set_ylabel("dissolved O2, mL/dL", fontsize=9)
+    upper.set_ylabel(f"PO2, {po2_unit}\n(arterial: the band)", fontsize=9)
+    middle.set_ylabel(f"mixed venous\nPO2, {po2_unit}", fontsize=9)
+    lower.set_ylabel("dissolved O2\nmL/dL", fontsize=9)
+    figure.align_ylabels()
     lower.set_xlabel(f"{quantity('ambient_pressure').long_name}, {pressure_unit}", fontsize=9)
     for axes in (upper, middle, lower):
         axes.set_ylim(bottom=0.0)

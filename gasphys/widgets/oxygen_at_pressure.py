@@ -46,7 +46,8 @@ class OxygenAtPressure(App):
     Notes
     -----
     Steady state at each pressure; the arterial/alveolar ratio is taken as it was found at 1 atm
-    (:func:`gasphys.gas_exchange.oxygenation`).
+    (:func:`gasphys.gas_exchange.oxygenation`). Where a person's sample tells a shunt too, the answer gives
+    what that would make: between the two lies what is not known.
 
     Examples
     --------
@@ -148,10 +149,17 @@ class OxygenAtPressure(App):
             self.pressures(), dims="pressure", attrs=attributes("ambient_pressure"), name="ambient_pressure"
         )
         session = Exposure.start(self.params["gas"], pressure=pressure).stay(1)
-        ds = oxygenation(session, self.described()).isel(time=0, segment=0, drop=True)
+        person = self.described()
+        ds = oxygenation(session, person).isel(time=0, segment=0, drop=True)
+        if self._has_shunt():
+            other = oxygenation(session, person, "shunt").isel(time=0, segment=0, drop=True)
+            for name in ("arterial_po2", "arterial_dissolved_o2"):
+                ds[f"{name}_by_shunt"] = other[name]
         ds = ds.swap_dims(pressure="ambient_pressure").set_coords("ambient_pressure").drop_vars("pressure")
         ds["ambient_pressure"].attrs = attributes("ambient_pressure")  # given, not computed from a piece
-        kept = [n for n in ds.data_vars if "equation" in ds[n].attrs or n in ("gas_fraction", "setpoint")]
+        kept = [
+            n for n in ds.data_vars if "equation" in ds[n].attrs or n in ("gas_fraction", "setpoint", "fico2")
+        ]
         ds = ds[kept]
         ds["arterial_po2_valid"] = _valid(ds, "arterial_po2")
         ds.attrs["chosen_pressure"] = self.params["ambient_pressure"]
@@ -225,10 +233,24 @@ class OxygenAtPressure(App):
         content, dissolved = (
             shown(float(row[n]), 3) for n in ("arterial_o2_content", "arterial_dissolved_o2")
         )
-        return (
+        text = (
             f"Alveolar PO2 is {alveolar} {unit} and arterial PO2 {arterial} {unit}; arterial blood then "
             f"carries {content} mL/dL of O2, {dissolved} mL/dL of it dissolved."
         )
+        if "arterial_po2_by_shunt" not in row or np.isnan(float(row["arterial_po2_by_shunt"])):
+            return text
+        other = shown(float(convert(float(row["arterial_po2_by_shunt"]), "kPa", unit)))
+        shunt = shown(self.person.shunt_fraction, 2)
+        more = shown(float(row["arterial_dissolved_o2_by_shunt"]), 3)
+        return (
+            f"{text} The same sample read as a constant shunt of {shunt} gives "
+            f"{other} {unit} and {more} mL/dL dissolved."
+        )
+
+    def _has_shunt(self) -> bool:
+        """Whether a sample tells the shunt too, and the sentence still says what it found."""
+        same = all(self.params[name] == self.person.value(name) for name in self.personal)
+        return same and self.person.is_measured("shunt_fraction")
 
     def notes(self, ds: xr.Dataset) -> list[str]:
         """Return where the model is beyond its evidence, what is assumed, and how numbers are known.

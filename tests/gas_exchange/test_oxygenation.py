@@ -273,6 +273,174 @@ def test_coupled_solution_agrees_with_a_general_root_finder() -> None:
     assert worst < 1e-8
 
 
+# -- Carbon monoxide, CO2 in the gas -----------------------------------------------------------------
+
+
+def test_carbon_monoxide_shifts_the_curve_of_what_is_left() -> None:
+    """Haldane's two laws solved for PCO by scipy, typed here, against the chain; 30 random persons."""
+    from scipy.optimize import brentq
+
+    rng = np.random.default_rng(12)
+    for _ in range(30):
+        cohb, hemoglobin, ph = rng.uniform(0.02, 0.6), rng.uniform(8.0, 17.0), rng.uniform(7.3, 7.5)
+        one = Person(hemoglobin=hemoglobin, cohb_fraction=cohb, arterial_ph=ph, arteriovenous_difference=2.5)
+        row = gas_exchange.oxygenation(at(rng.uniform(100.0, 280.0), "nitrox 60"), one).isel(time=0)
+        for site, site_ph in (("arterial", ph), ("mixed_venous", float(row.mixed_venous_ph))):
+            po2 = float(row[f"{site}_po2"]) / MMHG
+
+            def together(pressure: float, ph: float = site_ph) -> float:
+                x = pressure * np.exp(((pressure / 26.6) ** 0.184 - 2.2) * (7.4 - ph))
+                return 1.0 / (23400.0 / (x**3 + 150.0 * x) + 1.0)
+
+            def missing(pco: float, po2: float = po2, together=together, cohb: float = cohb) -> float:
+                joint = po2 + 218.0 * pco
+                return together(joint) * 218.0 * pco / joint - cohb
+
+            pco = brentq(missing, 0.0, 1e5, xtol=1e-14, rtol=1e-14)
+            o2hb = together(po2 + 218.0 * pco) - cohb
+            assert float(row[f"{site}_o2_saturation"]) == pytest.approx(o2hb / (1.0 - cohb), rel=1e-8)
+            content = 1.34 * hemoglobin * o2hb + 0.0031 * po2
+            assert float(row[f"{site}_o2_content"]) == pytest.approx(content, rel=1e-6)
+
+
+def test_carbon_monoxide_lowers_venous_po2_by_more_than_its_share_of_hemoglobin() -> None:
+    """Smoke, 31 %, against an anemia that leaves as much hemoglobin for O2; on air."""
+    smoke = gas_exchange.oxygenation(at("1 atm", "air"), Person(hemoglobin=14.1, cohb_fraction=0.31))
+    anemia = gas_exchange.oxygenation(at("1 atm", "air"), Person(hemoglobin=14.1 * 0.69))
+    # Arterial blood is full in both; in smoke it is a little fuller.
+    assert 0.0 < float(smoke.arterial_o2_content[0] - anemia.arterial_o2_content[0]) < 0.3
+    assert float(smoke.mixed_venous_po2[0]) < 0.85 * float(anemia.mixed_venous_po2[0])
+    assert "carboxyhemoglobin stays 0.31" in smoke.attrs["flags"]
+    # What carries CO carries no CO2 as reduced hemoglobin does: 1 where all is filled.
+    share = float(smoke.mixed_venous_liganded_fraction[0])
+    assert share == pytest.approx(0.31 + 0.69 * float(smoke.mixed_venous_o2_saturation[0]), rel=1e-12)
+
+
+def test_without_carbon_monoxide_nothing_changes() -> None:
+    plain = gas_exchange.oxygenation(treatment("usn_6"), Person(), "both")
+    trace = gas_exchange.oxygenation(treatment("usn_6"), Person(cohb_fraction=1e-9), "both")
+    for name in NUMBERS:
+        assert trace[name].values == pytest.approx(plain[name].values, rel=1e-6), name
+
+
+def test_carbon_dioxide_of_the_gas_is_breathed() -> None:
+    """A15: 760 mmHg, 20.93 % O2, 2 % CO2, PACO2 45, R 0.8: 112.60 mmHg."""
+    mix = gp.Gas(oxygen=0.2093, carbon_dioxide=0.02)
+    one = Person(arterial_pco2="45 mmHg")
+    ds = gas_exchange.oxygenation(at("760 mmHg", mix), one)  # type: ignore[arg-type]
+    assert float(ds.alveolar_po2[0]) / MMHG == pytest.approx(112.60, abs=0.005)
+    assert float(ds.inspired_pco2[0]) / MMHG == pytest.approx(0.02 * 713.0, rel=1e-4)
+    # The same from a mask, by hand; and a fraction harmless at the surface is not so at depth.
+    air = gp.Gas(oxygen=0.2093)
+    masked = gas_exchange.oxygenation(at("760 mmHg", air), one, fico2="2 %")  # type: ignore[arg-type]
+    assert masked.alveolar_po2.values == pytest.approx(ds.alveolar_po2.values, rel=1e-12)
+    assert "flags" not in masked.attrs
+    deep = gas_exchange.oxygenation(at("4 atm", "air"), one, fico2="2 %")
+    assert "no steady state" in deep.attrs["flags"]
+    session = Exposure.start("oxygen").stay(5).switch("air").stay(5)
+    by_piece = gas_exchange.oxygenation(session, fico2=[0.0, 0.03])
+    assert by_piece.fico2.values.tolist() == [0.0, 0.03, 0.03]
+
+
+def test_an_absorbent_takes_the_carbon_dioxide_of_a_loop() -> None:
+    mix = gp.Gas(oxygen=0.2, carbon_dioxide=0.01)
+    open_circuit = Exposure.start(mix, pressure="2 atm")
+    loop = open_circuit.loop(setpoint=130.0, diluent=mix)
+    assert float(gas_exchange.oxygenation(open_circuit.stay(5)).fico2[0]) == 0.01
+    assert float(gas_exchange.oxygenation(loop.stay(5)).fico2[0]) == 0.0
+    assert float(gas_exchange.oxygenation(loop.stay(5), fico2=0.01).fico2[0]) == 0.01
+
+
+@pytest.mark.parametrize("wrong", [-0.01, float("nan"), 2.0, [0.0, 0.9]])
+def test_impossible_carbon_dioxide_is_refused(wrong: object) -> None:
+    session = Exposure.start("oxygen").stay(5).switch("air").stay(5)
+    with pytest.raises(RangeError, match="fico2"):
+        gas_exchange.oxygenation(session, fico2=wrong)
+
+
+# -- Several persons at once -------------------------------------------------------------------------
+
+SEVERAL = {
+    "hemoglobin": [9.0, 12.9, 15.0],
+    "cohb_fraction": [0.0, 0.2, 0.0],
+    "shunt_fraction": [0.05, 0.2, 0.3],
+}
+
+
+def test_persons_broadcast_over_the_exposure() -> None:
+    labels = ["P-11", "P-12", "P-13"]
+    one = Person(
+        arteriovenous_difference=4.0,
+        **{
+            k: xr.DataArray(v, dims="person", coords={"person": labels}, attrs={"units": unit})
+            for (k, v), unit in zip(SEVERAL.items(), ("g/dL", "1", "1"), strict=True)
+        },
+    )
+    ds = gas_exchange.oxygenation(treatment("usn_5"), one, "both")
+    assert ds.arterial_po2.dims == ("model", "person", "time")
+    assert ds.attrs["measured"].startswith("shunt_fraction = 0.05 to 0.3, hemoglobin = 9 to 15")
+    for i, label in enumerate(labels):
+        single = Person(arteriovenous_difference=4.0, **{k: v[i] for k, v in SEVERAL.items()})
+        alone = gas_exchange.oxygenation(treatment("usn_5"), single, "both")
+        for name in (*NUMBERS, "mixed_venous_po2_low", "gas_exchange_flag"):
+            found = ds[name].sel(person=label).values
+            assert found == pytest.approx(alone[name].values, rel=1e-9), (name, label)
+    found = explain(ds, "mixed_venous_po2_low", time=3.0, model="shunt", person="P-12")
+    assert found.value == pytest.approx(found.stored, rel=1e-12)
+
+
+def test_persons_meet_the_exposures_of_the_same_name() -> None:
+    """Each person at a pressure of his own: one dimension, not two."""
+    pressure = xr.DataArray([150.0, 200.0, 280.0], dims="person", attrs={"units": "kPa"})
+    session = Exposure.start("oxygen").travel(pressure=pressure, minutes=5).stay(10)
+    ds = gas_exchange.oxygenation(session, Person(hemoglobin=[9.0, 12.0, 15.0]))
+    assert ds.arterial_o2_content.sizes == {"person": 3, "time": 3}
+    # Of the ratio model arterial PO2 does not ask for hemoglobin: one value for all of them.
+    both = gas_exchange.oxygenation(at("2 atm"), Person(hemoglobin=[9.0, 12.0, 15.0]))
+    assert both.arterial_po2.dims == ("time",)
+    assert both.gas_exchange_flag.dims == ("person", "time")
+    alone = Exposure.start("oxygen").travel(pressure=200.0, minutes=5).stay(10)
+    expected = gas_exchange.oxygenation(alone, Person(hemoglobin=12.0)).arterial_o2_content.values
+    assert ds.arterial_o2_content.isel(person=1).values == pytest.approx(expected, rel=1e-12)
+
+
+def test_units_of_several_persons_are_read_and_refused() -> None:
+    pco2 = xr.DataArray([38.0, 45.0], dims="person", attrs={"units": "mmHg"})
+    found = Person(arterial_pco2=pco2).value("arterial_pco2")
+    assert found.values == pytest.approx([38.0 * MMHG, 45.0 * MMHG], rel=1e-9)
+    assert found.attrs["units"] == "kPa"
+    with pytest.raises(RangeError, match="hemoglobin"):
+        Person(hemoglobin=[15.0, -1.0])
+    with pytest.raises(RangeError, match="hemoglobin"):
+        Person(hemoglobin=[15.0, float("nan")])
+    with pytest.raises(TypeError, match="named dimensions"):
+        Person(hemoglobin=[[15.0]])
+    several = Person(hemoglobin=[9.0, 12.0])
+    for ask in (
+        lambda: gas_exchange.breath_hold(at("1 atm", "air"), several),
+        lambda: gas_exchange.carboxyhemoglobin(at("1 atm"), several),
+        lambda: gas_exchange.pressure_for(several, arterial_po2=100.0),
+    ):
+        with pytest.raises(GasphysError, match="several persons"):
+            ask()
+
+
+def test_chunked_persons_stay_lazy() -> None:
+    dask = pytest.importorskip("dask")
+    values = xr.DataArray(np.linspace(8.0, 17.0, 12), dims="draw", attrs={"units": "g/dL"})
+    expected = gas_exchange.oxygenation(treatment("usn_5"), Person(hemoglobin=values), "both")
+
+    def refuse(*_: object, **__: object) -> None:
+        raise AssertionError("computed")
+
+    with dask.config.set(scheduler=refuse):
+        ds = gas_exchange.oxygenation(treatment("usn_5"), Person(hemoglobin=values.chunk(draw=5)), "both")
+    assert ds.mixed_venous_po2.chunks is not None
+    assert "gas_exchange_flag tells" in ds.attrs["flags"]
+    for name in (*NUMBERS, "gas_exchange_flag"):
+        assert ds[name].compute().values == pytest.approx(expected[name].values, rel=1e-12, nan_ok=True)
+
+
 # -- Scenarios and explanation -----------------------------------------------------------------------
 
 

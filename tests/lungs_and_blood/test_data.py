@@ -73,6 +73,70 @@ def test_exercise_table():
     assert float(ds.o2_uptake_stpd_high.sel(task="booted diver: leg work grades")) == 1.73
 
 
+#: The table of tasks, typed again: O2 uptake L/min STPD (two where a range is printed), SD, ventilation.
+EXERCISE = {
+    "booted diver on the bottom: sitting": (0.25, None, None),
+    "booted diver: standing": (0.27, None, None),
+    "booted diver: minimal movement": (0.57, None, None),
+    "booted diver: maximal movement": (1.53, None, None),
+    "booted diver: heavy arm work": (1.15, None, None),
+    "booted diver: leg work grades": ((1.06, 1.73), None, None),
+    "fin swimming 1.3-1.7 ft/s (0.77-1.01 kn)": (2.68, None, None),
+    "fin swimming 1.7-2.3 ft/s (1.01-1.36 kn)": (3.66, None, None),
+    "combat swimmers at own pace": (1.5, 0.2, None),
+    "resting in water": (0.64, 0.09, None),
+    "rest": (0.25, None, (6, 8)),
+    "swim 0.5 kn": (0.8, None, (18, 18)),
+    "swim 0.85 kn": (1.4, None, (30, 30)),
+    "swim 1.0 kn": (1.8, None, (40, 40)),
+    "swim 1.2 kn": (2.5, None, (60, 60)),
+    "uphill run": (4.0, None, (95, 95)),
+}
+
+
+def test_every_task_is_as_printed():
+    rows = {row["task"]: row for row in _rows("gasphys.lungs", "exercise_o2_uptake.csv")}
+    assert list(rows) == list(EXERCISE)
+    for task, (uptake, spread, ventilation) in EXERCISE.items():
+        row = rows[task]
+        low, high = uptake if isinstance(uptake, tuple) else (None, None)
+        columns = {
+            "o2_uptake_stpd": None if low else uptake,
+            "o2_uptake_stpd_low": low,
+            "o2_uptake_stpd_high": high,
+            "o2_uptake_stpd_sd": spread,
+            "ventilation_low": ventilation[0] if ventilation else None,
+            "ventilation_high": ventilation[1] if ventilation else None,
+        }
+        for column, value in columns.items():
+            assert (float(row[column]) if row[column] else None) == value, (task, column)
+
+
+#: Bunsen coefficients of blood, fat and oil at 37 degC, typed again.
+TISSUES = [
+    ("N2", "human blood", 0.0125, 0.0129),
+    ("N2", "olive oil", 0.067, 0.067),
+    ("N2", "fat", 0.061, 0.062),
+    ("He", "blood", 0.0087, 0.0087),
+    ("He", "oil", 0.015, 0.015),
+    ("Ne", "blood", 0.0096, 0.010),
+    ("Ne", "oil", 0.019, 0.020),
+    ("Ar", "dog blood", 0.0226, 0.0226),
+    ("Ar", "oil", 0.14, 0.14),
+    ("H2", "dog blood", 0.0146, 0.0146),
+    ("H2", "oil", 0.036, 0.036),
+    ("O2", "blood", 0.0236, 0.0236),
+    ("O2", "oil", 0.112, 0.112),
+    ("CO2", "plasma", 0.519, 0.519),
+    ("CO2", "oil", 1.34, 1.34),
+]
+
+
+def test_every_tissue_is_as_printed():
+    rows = _rows("gasphys.blood", "tissue_solubility.csv")
+    assert [(r["gas"], r["medium"], float(r["low"]), float(r["high"])) for r in rows] == TISSUES
+
+
 def test_datasets_survive_a_file(tmp_path):
     for ds in (lungs.exercise_o2_uptake(), blood.tissue_bunsen_coefficients()):
         path = tmp_path / "table.nc"
