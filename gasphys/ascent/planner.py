@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -12,15 +12,16 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from gasphys.ascent.equations import gradient_at_depth
-from gasphys.ascent.rules import Rules, Source, read_gases
+from gasphys.ascent.rules import Rules, Source, as_measured, read_gases
+from gasphys.bubbles.varying_permeability import VaryingPermeability, bubble_model
 from gasphys.errors import ExposureError, NotReachableError, ValidityError
-from gasphys.exposure import Exposure
+from gasphys.exposure import Exposure, Pieces
 from gasphys.gas import FORMULAS, Gas
 from gasphys.maths import find_root
 from gasphys.policy import outside_validity, weakest
-from gasphys.quantities import CAUTION, attributes
+from gasphys.quantities import attributes, dataset_attributes
 from gasphys.surroundings import WATERS, depth_at_pressure
-from gasphys.tissues.kinetics import Breath, advance, along, inert_pressure, stretches
+from gasphys.tissues.kinetics import Breath, Passage, along, inert_pressure, stay, stretches
 from gasphys.tissues.model import check_gases, initial_state, present
 from gasphys.tissues.sets import TissueSet, load
 from gasphys.tissues.tolerance import ROUNDING, m_values, short_deep
@@ -31,9 +32,9 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 #: Minutes looked at together; after each row that fails the next is longer.
-_FIRST_ROW, _LONGEST_ROW = 16, 256
-#: Most states held at once, scenarios times minutes: bounds the memory.
-_STATES = 2**15
+_FIRST_ROW, _LONGEST_ROW = 4, 256
+#: Scenarios looked at together, and most states, scenarios times minutes: bounds the memory.
+_BLOCK, _STATES = 512, 2**13
 #: Longest stop looked for, in half-times of the slowest compartment: by then nothing moves any more.
 _PATIENCE = 40.0
 
@@ -57,6 +58,8 @@ class Plan:
         The set used.
     rules : Rules
         The rules used, defaults filled in.
+    initial : optional
+        What the tissues held at the start, as it was given.
     """
 
     exposure: Exposure
@@ -64,6 +67,7 @@ class Plan:
     ascent_time: Any
     model: TissueSet
     rules: Rules
+    initial: Any = None
 
     @property
     def total_time(self) -> Any:
@@ -74,34 +78,20 @@ class Plan:
         return f"<Plan by {self.model.name}: {self.stops.sizes['stop']} stops>"
 
     def __str__(self) -> str:
-        unit = self.exposure.depth_unit
-        if self.exposure.dims:
-            return repr(self)
-        lines = [f"ascent by {self.model.name}, {self.model.edition}"]
-        for k in range(self.stops.sizes["stop"]):
-            row = self.stops.isel(stop=k)
-            half, name = float(row.controlling_half_time), str(row.controlling_compartment.values)
-            control = f"{half:g}-min half-time" if np.isfinite(half) else f"compartment {name}"
-            why = f"{control} in control" if name else "for the switch"
-            lines.append(
-                f"wait at {float(row.depth):g} {unit}, leave at {float(row.leave_time):.1f} min elapsed; "
-                f"{float(row.duration):g} min; {why}; {row.gas.values}"
-            )
-        lines.append(
-            f"surface at {float(self.total_time):.1f} min elapsed; ascent {float(self.ascent_time):.1f} min"
-        )
-        lines.append(CAUTION)
-        return "\n".join(lines)
+        from gasphys.ascent.texts import leave_at_list
+
+        return repr(self) if self.exposure.dims else leave_at_list(self)
 
 
 def plan(
     exposure: Exposure,
     gases: Sequence[tuple[Any, Any]] = (),
-    model: str | os.PathLike[str] | TissueSet = "buhlmann_1995_c",
+    model: str | os.PathLike[str] | TissueSet | VaryingPermeability = "buhlmann_1995_c",
     rules: Rules | None = None,
     without: Any = None,
     *,
     initial: Any = None,
+    measured: Mapping[str, Any] | None = None,
 ) -> Plan:
     """Ascent from the last instant of an exposure to the surface, by one model.
 
@@ -112,14 +102,18 @@ def plan(
     gases : sequence of (gas, deepest)
         What may be breathed on the way: a Gas, its name or a :class:`Loop`, and its deepest depth of use
         [depth unit] (or text: ``"1.6 bar"`` is a PO2). Without any, the gas or loop of the bottom is kept.
-    model : str, path or TissueSet
-        As for :func:`gasphys.tissues.tensions`.
+    model : str, path, TissueSet or VaryingPermeability
+        As for :func:`gasphys.tissues.tensions`; or a name of :func:`gasphys.bubbles.models`, or what
+        :func:`gasphys.bubbles.varying_permeability` returns.
     rules : Rules, optional
         Rates, stops, gradients.
     without : Gas, str or Loop, optional
         One of the gases that is lost.
     initial : Dataset, DataArray, float or str, optional
         Tissues at the start of the exposure.
+    measured : mapping, optional
+        What was found by analysis, by the name of the planned mix: it is breathed instead, at the bottom
+        and on the way; a depth of use given as a PO2 follows it.
 
     Returns
     -------
@@ -152,14 +146,26 @@ def plan(
     >>> found.stops.depth.values.tolist(), found.stops.duration.values.tolist()
     ([6.0, 3.0], [2.0, 8.0])
     """
-    chosen = load(model)
+    bubbles = bubble_model(model)
+    chosen = load(model) if bubbles is None else bubbles.tissues  # type: ignore[arg-type]
     if not exposure.part:
         raise ExposureError("the exposure has no piece yet")
     used = (Rules() if rules is None else rules).filled(exposure.depth_unit)
+    if measured:
+        exposure, gases, without = as_measured(exposure, gases, without, measured)
     sources = read_gases(gases, without, exposure.depth_unit)
+    if bubbles is not None:
+        from gasphys.ascent.nuclei import nuclei_planner
+
+        return replace(nuclei_planner(exposure, sources, bubbles, used).run(initial), initial=initial)
     if not chosen.limited:
         raise ValidityError(f"{chosen.name} has no limits to plan an ascent with")
-    return _Planner(exposure, sources, chosen, used).run(initial)
+    if used.breaks is None:
+        return replace(_Planner(exposure, sources, chosen, used).run(initial), initial=initial)
+    from gasphys.ascent.breaks import BreakingPlanner
+
+    planner = BreakingPlanner(exposure, (*sources, used.breaks.source()), chosen, used)
+    return replace(planner.run(initial), initial=initial)
 
 
 #: One stretch of the ascent: duration, pressures at its ends, row of the gas, an array a scenario.
@@ -199,6 +205,8 @@ class _Planner:
 
     def __post_init__(self) -> None:
         self.shape = tuple(len(self.exposure.coords[d]) for d in self.exposure.dims)
+        #: The last route asked for, by its target.
+        self._known: tuple[float, list[tuple[_Leg, Array, Passage]]] | None = None
 
     # -- Set up --------------------------------------------------------------------------------
 
@@ -250,10 +258,10 @@ class _Planner:
 
     def _check_sources(self) -> None:
         for source in self.sources:
-            start = Exposure.start(source.gas).stay(1.0)
-            if not np.isnan(source.setpoint):
-                start = replace(start, columns={**start.columns, "setpoint": np.array([source.setpoint])})
-            check_gases(self.model, start.pieces(), ())
+            one = np.ones(1)
+            mix = {g: f * one for g, f in source.gas.fractions.items()}
+            breathed = Pieces(one, one, one, one, one, mix, source.setpoint * one, np.array([0.0, 1.0]))
+            check_gases(self.model, breathed, ())
 
     def _fail(self, lanes: Mask, why: str, error: type[Exception] = NotReachableError) -> None:
         """Give lanes up: an error for one scenario, a mark for some of a batch."""
@@ -278,7 +286,7 @@ class _Planner:
             rows.append((mix, np.full(lanes, s.setpoint)))
         self.mixes = [mix for mix, _ in rows]
         self.setpoints = [setpoint for _, setpoint in rows]
-        self.breaths: list[Breath] = []
+        breaths: list[Breath] = []
         for mix, setpoint in rows:
             if model.alveolar == "ambient":
                 inert = [1.0 - mix["O2"]]
@@ -288,7 +296,13 @@ class _Planner:
                     sum((mix.get(f, nothing) for f in model.formulas_of(g)), nothing)
                     for g in model.inert_gases
                 ]
-            self.breaths.append(Breath(mix["O2"], np.stack(inert, axis=-1), setpoint))
+            breaths.append(Breath(mix["O2"], np.stack(inert, axis=-1), setpoint))
+        #: What may be breathed, ``(row, lane)``.
+        self.breaths = Breath(
+            np.stack([b.oxygen for b in breaths]),
+            np.stack([b.inert for b in breaths]),
+            np.stack([b.setpoint for b in breaths]),
+        )
         # Deepest depth of use of every listed gas, a lane each.
         deepest = []
         for s in self.sources:
@@ -310,13 +324,8 @@ class _Planner:
 
     def _breath(self, rows: NDArray[np.int64], lanes: NDArray[np.int64]) -> Breath:
         """Return what given lanes breathe."""
-        if len(self.breaths) == 1:
-            one = self.breaths[0]
-            return Breath(one.oxygen[lanes], one.inert[lanes], one.setpoint[lanes])
-        oxygen = np.stack([b.oxygen for b in self.breaths])
-        inert = np.stack([b.inert for b in self.breaths])
-        setpoint = np.stack([b.setpoint for b in self.breaths])
-        return Breath(oxygen[rows, lanes], inert[rows, lanes], setpoint[rows, lanes])
+        all_ = self.breaths
+        return Breath(all_.oxygen[rows, lanes], all_.inert[rows, lanes], all_.setpoint[rows, lanes])
 
     # -- The climb -----------------------------------------------------------------------------
 
@@ -350,54 +359,73 @@ class _Planner:
         high = np.full(len(lanes), self.rules.gradient_high)
         good = np.ones(len(lanes), dtype=bool)
         if "before_leaving" in self.model.tested:
-            good &= self._excess(self.state, self.surface, high)[0] <= 0.0
+            good &= self._excess(lanes, self.state, self.surface, high)[0] <= 0.0
         if "on_arrival" in self.model.tested:
-            arrived = self.state
-            for minutes, start, end, rows in self._path(lanes, self.depth, np.zeros(len(lanes))):
-                arrived = advance(self.model, arrived, minutes, start, end, self._breath(rows, lanes))
-            good &= self._excess(arrived, self.surface, high)[0] <= 0.0
+            arrived = self._arrived(lanes, self.state, 0.0)
+            good &= self._excess(lanes, arrived, self.surface, high)[0] <= 0.0
         return good
 
-    def _excess(self, state: Array, pressure: Array, gradient: Array) -> tuple[Array, NDArray[np.int64]]:
-        """Return by how much the worst compartment is over its limit at a pressure [kPa], and which it is."""
+    def _over(self, lanes: NDArray[np.int64], state: Array, pressure: Array, gradient: Array) -> Array:
+        """Return by how much each compartment of the lanes is over its limit at a pressure [kPa]."""
         total, limit = m_values(self.model, state, pressure)
-        limit = pressure[..., None] + gradient[..., None] * (limit - pressure[..., None])
-        over = np.where(np.isnan(limit), -np.inf, total - limit * (1.0 + ROUNDING))
-        worst = np.argmax(over, axis=-1)
-        return np.take_along_axis(over, worst[..., None], axis=-1)[..., 0], worst
+        here = pressure[..., None]
+        allowed = limit - here
+        allowed *= gradient[..., None]
+        allowed += here
+        allowed *= 1.0 + ROUNDING
+        over = np.asarray(total - allowed)
+        # Without a limit it is never over it.
+        return np.where(np.isnan(over), -np.inf, over) if np.isnan(self.model.a).any() else over
 
-    def _path(self, lanes: NDArray[np.int64], depth: Array, target: Array) -> list[_Leg]:
-        """Return the stretches from a depth up to a target: cut where the rate or the gas changes."""
+    def _excess(
+        self, lanes: NDArray[np.int64], state: Array, pressure: Array, gradient: Array
+    ) -> tuple[Array, NDArray[np.int64]]:
+        """Return by how much the worst compartment is over its limit at a pressure [kPa], and which it is."""
+        over = self._over(lanes, state, pressure, gradient)
+        return over.max(axis=-1), np.argmax(over, axis=-1)
+
+    def _route(self, target: float) -> list[tuple[_Leg, Array, Passage]]:
+        """Return the stretches from the present depths to a target: each, where it ends, what it does.
+
+        Worked out once for a step of the grid.
+        """
+        if self._known is None or self._known[0] != target:
+            lanes = np.arange(len(self.depth))
+            found = [
+                (leg, depth, Passage.of(self.model, *leg[:3], self._breath(leg[3], lanes)))
+                for leg, depth in self._path(target)
+            ]
+            self._known = (target, found)
+        return self._known[1]
+
+    def _arrived(self, lanes: NDArray[np.int64], state: Array, target: float) -> Array:
+        """Return states ``(lane, ..., compartment, inert_gas)`` after the travel to the target."""
+        for _, _, passage in self._route(target):
+            state = (passage if len(lanes) == len(self.depth) else passage.take(lanes))(state)
+        return state
+
+    def _path(self, target: float) -> list[tuple[_Leg, Array]]:
+        """Return the stretches from the present depths to a target: cut where the rate or the gas changes."""
         bands = self.rules.bands()
-        edges = {edge for edge, _ in bands} | {float(d) for d in np.unique(self.deepest[:, lanes])}
-        top, low = float(depth.max()), float(target.min())
-        cuts = sorted((e for e in edges if low < e < top), reverse=True)
-        path = []
-        here = depth
-        for cut in [*cuts, low]:
-            there = np.minimum(here, np.maximum(cut, target))
+        edges = {edge for edge, _ in bands} | set(self.deepest.ravel().tolist())
+        top = float(self.depth.max())
+        path: list[tuple[_Leg, Array]] = []
+        here = self.depth
+        for cut in [*sorted((e for e in edges if target < e < top), reverse=True), target]:
+            there = np.minimum(here, cut)
             if not (there < here).any():
                 continue
             middle = 0.5 * (here + there)
-            rate = np.select([middle >= edge for edge, _ in bands], [r for _, r in bands])
+            rate: Any = bands[0][1]
+            if len(bands) > 1:
+                rate = np.select([middle >= edge for edge, _ in bands], [r for _, r in bands])
+            # The bottom's own pressure, not its depth's: they may differ in the last bit.
+            start = path[-1][0][2] if path else self.pressure
+            end = np.where(there < here, self._pressure(there), start)
             # Between two cuts the gas is that of the deeper end: the shallower end is where it changes.
-            full = np.zeros(len(self.depth))
-            full[lanes] = middle
-            rows = self._gas_at(full)[lanes]
-            path.append(
-                (np.where(there < here, (here - there) / rate, 0.0), *self._ends(lanes, here, there), rows)
-            )
+            path.append((((here - there) / rate, start, end, self._gas_at(middle)), there))
             here = there
         return path
-
-    def _ends(self, lanes: NDArray[np.int64], here: Array, there: Array) -> tuple[Array, Array]:
-        full = [np.zeros(len(self.depth)) for _ in range(2)]
-        for values, depth in zip(full, (here, there), strict=True):
-            values[lanes] = depth
-        start, end = (self._pressure(v)[lanes] for v in full)
-        # The bottom's own pressure, not its depth's: they may differ in the last bit.
-        start = np.where(here == self.depth[lanes], self.pressure[lanes], start)
-        return start, end
 
     def _switch(self, moving: Mask) -> None:
         """Breathe what the present depth asks for."""
@@ -414,9 +442,8 @@ class _Planner:
         if not lanes.size:
             return
         p = self.pressure[lanes]
-        self.state[lanes] = advance(
-            self.model, self.state[lanes], minutes[lanes], p, p, self._breath(self.gas[lanes], lanes)
-        )
+        breath = self._breath(self.gas[lanes], lanes)
+        self.state[lanes] = stay(self.model, self.state[lanes], minutes[lanes], p, breath)
         spent = np.zeros(len(minutes))
         spent[lanes] = minutes[lanes]
         self.clock += spent
@@ -426,18 +453,16 @@ class _Planner:
         lanes = np.flatnonzero(moving)
         if not lanes.size:
             return
-        for minutes, start, end, rows in self._path(lanes, self.depth[lanes], np.full(len(lanes), target)):
-            self.state[lanes] = advance(
-                self.model, self.state[lanes], minutes, start, end, self._breath(rows, lanes)
-            )
-            spent, gas = np.zeros(len(self.depth)), self.gas.copy()
-            first, last = self.pressure.copy(), self.pressure.copy()
-            spent[lanes], first[lanes], last[lanes], gas[lanes] = minutes, start, end, rows
-            self.legs.append((spent, first, last, gas))
+        for (minutes, start, end, rows), depth, passage in self._route(target):
+            self.state[lanes] = passage.take(lanes)(self.state[lanes])
+            spent = np.where(moving, minutes, 0.0)
+            first, last = (np.where(moving, there, self.pressure) for there in (start, end))
+            self.legs.append((spent, first, last, np.where(moving, rows, self.gas)))
             self.clock += spent
             self.pressure = last
-            self.depth[lanes] = np.where(minutes > 0.0, self._depth(last)[lanes], self.depth[lanes])
+            self.depth = np.where(moving, depth, self.depth)
             self._switch(moving & (self.depth > 0.0))
+        self._known = None
         self.depth[lanes] = target
         self.pressure[lanes] = self._pressure(np.full(len(self.depth), target))[lanes]
 
@@ -453,18 +478,18 @@ class _Planner:
             self._fail(self._mask(lanes), why)
             return
         there = self._pressure(np.full(len(self.depth), target))
-        low = np.full(len(self.depth), self.rules.gradient_low)
-        over, _ = self._step_excess(lanes, self.state[lanes], target, there, low)
-        stopped = lanes[(over > 0.0) | ~np.isnan(self.first[lanes])]
-        new = stopped[np.isnan(self.first[stopped])]
-        self.first[new] = self.depth[new]
+        free = lanes[np.isnan(self.first[lanes])]
+        if free.size:
+            low = np.full(len(self.depth), self.rules.gradient_low)
+            new = free[~self._may_go(free, target, there, low)]
+            self.first[new] = self.depth[new]
+        stopped = lanes[~np.isnan(self.first[lanes])]
         if not stopped.size:
             return
         gradient = gradient_at_depth.raw(
             target, np.nan_to_num(self.first, nan=0.0), self.rules.gradient_low, self.rules.gradient_high
         )
-        over, _ = self._step_excess(stopped, self.state[stopped], target, there, gradient)
-        waiting = stopped[over > 0.0]
+        waiting = stopped[~self._may_go(stopped, target, there, gradient)]
         if not waiting.size:
             return
         minutes = self._search(waiting, target, there, gradient)
@@ -476,17 +501,14 @@ class _Planner:
             return
         spent = np.zeros(len(self.depth))
         spent[waiting] = np.maximum(minutes, self.rules.shortest_stop)
-        before = self.state[waiting]
-        self._stay(self._mask(waiting), spent)
         # In control is what held it last: just before it was allowed.
-        held = advance(
-            self.model, before, np.maximum(minutes - (1.0 if self.rules.whole_minutes else 1e-6), 0.0),
-            self.pressure[waiting], self.pressure[waiting], self._breath(self.gas[waiting], waiting),
-        )  # fmt: skip
-        _, control = self._step_excess(waiting, held, target, there, gradient)
-        left, _ = self._step_excess(waiting, self.state[waiting], target, there, gradient)
+        short = np.maximum(minutes - (1.0 if self.rules.whole_minutes else 1e-6), 0.0)
+        held = self._held(waiting, self.state[waiting], short)
+        self._stay(self._mask(waiting), spent)
+        both = np.stack([held, self.state[waiting]], axis=1)
+        over, worst = self._step_excess(waiting, both, target, there, gradient)
         controls, margins = np.full(len(self.depth), -1), np.full(len(self.depth), np.nan)
-        controls[waiting], margins[waiting] = control, np.maximum(-left, 0.0)
+        controls[waiting], margins[waiting] = worst[:, 0], np.maximum(-over[:, 1], 0.0)
         self._note(self._mask(waiting), spent, controls, margins)
 
     def _mask(self, lanes: NDArray[np.int64]) -> Mask:
@@ -498,32 +520,42 @@ class _Planner:
         self, lanes: NDArray[np.int64], state: Array, target: float, there: Array, gradient: Array
     ) -> tuple[Array, NDArray[np.int64]]:
         """Return by how much the step up is not allowed [kPa], as the set tests it, and what holds it."""
-        extra = state.ndim - 3
-        pressure = there[lanes].reshape(-1, *(1,) * extra)
-        share = gradient[lanes].reshape(-1, *(1,) * extra)
-        pressure, share = (np.broadcast_to(v, state.shape[:-2]) for v in (pressure, share))
-        over = np.full(state.shape[:-2], -np.inf)
-        worst = np.zeros(state.shape[:-2], dtype=np.int64)
-        if "before_leaving" in self.model.tested:
-            over, worst = self._excess(state, pressure, share)
-        if "on_arrival" in self.model.tested:
-            arrived = state
-            for minutes, start, end, rows in self._path(
-                lanes, self.depth[lanes], np.full(len(lanes), target)
-            ):
-                breath = self._breath(rows, lanes)
-                wide = Breath(
-                    *(
-                        np.expand_dims(v, tuple(range(1, 1 + extra)))
-                        for v in (breath.oxygen, breath.inert, breath.setpoint)
-                    )
-                )
-                t, a, b = (v.reshape(-1, *(1,) * extra) for v in (minutes, start, end))
-                arrived = advance(self.model, arrived, t, a, b, wide)
-            there_over, there_worst = self._excess(arrived, pressure, share)
-            later = there_over > over
-            over, worst = np.where(later, there_over, over), np.where(later, there_worst, worst)
+        extra = (1,) * (state.ndim - 3)
+        pressure, share = (v[lanes].reshape(-1, *extra) for v in (there, gradient))
+        tested = self.model.tested
+        if "on_arrival" not in tested:
+            return self._excess(lanes, state, pressure, share)
+        over, worst = self._excess(lanes, self._arrived(lanes, state, target), pressure, share)
+        if "before_leaving" in tested:
+            before, which = self._excess(lanes, state, pressure, share)
+            later = over > before
+            over, worst = np.where(later, over, before), np.where(later, worst, which)
         return over, worst
+
+    def _may_go(self, lanes: NDArray[np.int64], target: float, there: Array, gradient: Array) -> Mask:
+        """Return which lanes may leave now."""
+        first = self._first_allowed(lanes, self.state[lanes][:, None], target, there, gradient)
+        return np.asarray(first == 0)
+
+    def _first_allowed(
+        self, lanes: NDArray[np.int64], state: Array, target: float, there: Array, gradient: Array
+    ) -> NDArray[np.int64]:
+        """Return which of the states ``(lane, stay, ...)`` is the first that is allowed; -1: none."""
+        everyone = np.arange(len(lanes))
+        good = np.ones(state.shape[:2], dtype=bool)
+        if "before_leaving" in self.model.tested:
+            pressure, share = there[lanes][:, None], gradient[lanes][:, None]
+            good = self._over(lanes, state, pressure, share).max(axis=-1) <= 0.0
+        if "on_arrival" in self.model.tested:
+            # The travel matters only where one may leave, and mostly it forbids nothing there.
+            first = good.argmax(axis=1)
+            some = everyone[good[everyone, first]]
+            over, _ = self._step_excess(lanes[some], state[some, first[some]], target, there, gradient)
+            some = some[over > 0.0]
+            if some.size:
+                good[some] &= self._step_excess(lanes[some], state[some], target, there, gradient)[0] <= 0.0
+        first = good.argmax(axis=1)
+        return np.where(good[everyone, first], first, -1)
 
     def _search(self, lanes: NDArray[np.int64], target: float, there: Array, gradient: Array) -> Array:
         """Return the shortest wait [min] after which the step is allowed; NaN where it never is.
@@ -531,24 +563,33 @@ class _Planner:
         Whole minutes are looked at in rows that get longer; the first that is allowed ends it, so the search
         ends even where a slower tissue closes the door again.
         """
+        state = self.state[lanes]
+        found = np.concatenate(
+            [
+                self._whole_minutes(lanes[k : k + _BLOCK], state[k : k + _BLOCK], target, there, gradient)
+                for k in range(0, len(lanes), _BLOCK)
+            ]
+        )
+        if not self.rules.whole_minutes:
+            found = self._exact(found, lanes, state, target, there, gradient)
+        return found
+
+    def _whole_minutes(
+        self, lanes: NDArray[np.int64], state: Array, target: float, there: Array, gradient: Array
+    ) -> Array:
         found = np.full(len(lanes), np.nan)
         todo = np.arange(len(lanes))
         slowest = float(np.nanmax(self.model.half_time)) if self.model.kinetics != "serial" else 300.0
         patience = int(np.ceil(_PATIENCE * slowest))
         done, size, step = 0, _FIRST_ROW, 1
-        state = self.state[lanes]
         while todo.size and done < patience:
             some = lanes[todo]
-            size = max(4, min(size, _STATES // todo.size))
+            size = max(_FIRST_ROW, min(size, _STATES // todo.size))
             minutes = done + step * np.arange(1.0, size + 1.0)
-            p = self.pressure[some][:, None]
-            breath = self._breath(self.gas[some], some)
-            wide = Breath(breath.oxygen[:, None], breath.inert[:, None], breath.setpoint[:, None])
-            later = advance(self.model, state[todo][:, None], minutes[None, :], p, p, wide)
-            over, _ = self._step_excess(some, later, target, there, gradient)
-            good = over <= 0.0
-            hit = good.any(axis=1)
-            found[todo[hit]] = minutes[np.argmax(good[hit], axis=1)]
+            later = self._held(some, state[todo], minutes[None, :])
+            first = self._first_allowed(some, later, target, there, gradient)
+            hit = first >= 0
+            found[todo[hit]] = minutes[first[hit]]
             if step > 1 and hit.any():
                 found[todo[hit]] = self._narrow(
                     todo[hit], lanes, found[todo[hit]], step, state, target, there, gradient
@@ -557,8 +598,6 @@ class _Planner:
             done = int(minutes[-1])
             size = min(2 * size, _LONGEST_ROW)
             step = 1 if done < 2000 else max(1, done // 500)
-        if not self.rules.whole_minutes:
-            found = self._exact(found, lanes, state, target, there, gradient)
         return found
 
     def _after(
@@ -571,10 +610,12 @@ class _Planner:
         there: Array,
         gradient: Array,
     ) -> Array:
-        some = lanes[index]
-        p = self.pressure[some]
-        held = advance(self.model, state[index], minutes, p, p, self._breath(self.gas[some], some))
-        return self._step_excess(some, held, target, there, gradient)[0]
+        held = self._held(lanes[index], state[index], minutes)
+        return self._step_excess(lanes[index], held, target, there, gradient)[0]
+
+    def _held(self, lanes: NDArray[np.int64], state: Array, minutes: Array) -> Array:
+        """Return tissues after stays at the present depth on the present gas, as :func:`stay`."""
+        return stay(self.model, state, minutes, self.pressure[lanes], self._breath(self.gas[lanes], lanes))
 
     def _narrow(
         self,
@@ -709,14 +750,17 @@ class _Planner:
             full = np.broadcast_to(np.asarray(value, dtype=float), self.shape)
             return np.broadcast_to(full[..., None], (*self.shape, len(keep)))
 
-        def of_gas(rows: list[Array], leg: _Leg) -> Array:
-            return np.asarray(np.stack(rows)[leg[3], np.arange(len(leg[3]))])
+        breathed = np.stack([leg[3] for leg in keep], axis=-1)
+        lanes = np.arange(len(self.depth))[:, None]
+
+        def of_gas(rows: list[Array]) -> Array:
+            return np.asarray(np.stack(rows)[breathed, lanes]).reshape(*self.shape, len(keep))
 
         added = {
             "segment_duration": column([np.where(self.off, 0.0, leg[0]) for leg in keep]),
             "start_pressure": column([leg[1] for leg in keep]),
             "end_pressure": column([leg[2] for leg in keep]),
-            "setpoint": column([of_gas(self.setpoints, leg) for leg in keep]),
+            "setpoint": of_gas(self.setpoints),
             "o2_uptake_stpd": cells(exposure.workload[0]),
             "ventilation_btps": cells(exposure.workload[1]),
         }
@@ -724,10 +768,7 @@ class _Planner:
             [*exposure.fractions, *(g for mix in self.mixes for g, v in mix.items() if v.any())]
         )
         nothing = np.zeros(len(self.depth))
-        mixes = {
-            g: column([of_gas([m.get(g, nothing) for m in self.mixes], leg) for leg in keep])
-            for g in formulas
-        }
+        mixes = {g: of_gas([m.get(g, nothing) for m in self.mixes]) for g in formulas}
         there = len(exposure.part)
 
         def joined(old: Array, new: Array) -> Array:
@@ -735,10 +776,8 @@ class _Planner:
             return np.concatenate([np.broadcast_to(v, (*lead, v.shape[-1])) for v in (old, new)], axis=-1)
 
         zero = np.zeros((*(1,) * rank, there))
-        last = keep[-1]
-        state = {
-            g: of_gas([m.get(g, nothing) for m in self.mixes], last).reshape(self.shape) for g in formulas
-        }
+        state = {g: v[..., -1] for g, v in mixes.items()}
+        setpoint = added["setpoint"][..., -1]
         new = replace(
             exposure,
             columns={k: joined(v, added[k]) for k, v in exposure.columns.items()},
@@ -747,9 +786,7 @@ class _Planner:
             session=(*exposure.session, *(exposure.session[-1],) * len(keep)),
             gas=state if rank else {g: float(v) for g, v in state.items()},
             pressure=self.pressure.reshape(self.shape) if rank else float(self.pressure[0]),
-            setpoint_now=of_gas(self.setpoints, last).reshape(self.shape)
-            if rank
-            else float(of_gas(self.setpoints, last)[0]),
+            setpoint_now=setpoint if rank else float(setpoint),
             part_now="ascent",
             history=(
                 *exposure.history,
@@ -759,7 +796,6 @@ class _Planner:
         return new._split_clamps(since=there)
 
     def _stops(self, whole: Exposure, bottom_time: Array) -> xr.Dataset:
-        from gasphys import __version__
 
         exposure, model = self.exposure, self.model
         rows = self._joined()
@@ -779,8 +815,7 @@ class _Planner:
         gas = self._names()[row, np.arange(len(self.depth))[:, None]].astype(str)
         leave = stack("leave") + bottom_time.reshape(self.shape)[..., None]
         margin = "what the worst compartment had left to its limit of the next depth on leaving"
-        ds = xr.Dataset(coords={"stop": np.arange(len(rows)), **exposure.coords})
-        for name, values, attrs, meaning in (
+        described: tuple[tuple[str, Any, dict[str, Any], str], ...] = (
             ("depth", stack("depth"), attributes(unit), "depth of the stop"),
             ("duration", stack("duration"), attributes("duration"), "time at the stop, travel not counted"),
             ("gas", gas.reshape(control.shape), {}, "gas breathed on leaving"),
@@ -788,21 +823,24 @@ class _Planner:
             ("controlling_compartment", names[control], {}, "what held the stop; empty: a switch did"),
             ("controlling_half_time", halves[control], attributes("half_time"), "half-time in control"),
             ("margin", stack("margin"), {"units": "kPa"}, margin),
-        ):
-            ds[name] = (dims, values, attrs | {"long_name": meaning})
-        ds.attrs = {
-            "Conventions": "CF-1.11",
-            "title": f"stops of an ascent by the model {model.name}",
-            "source": f"gasphys {__version__}, ascent, model {model.name}, parameters {model.digest}",
-            "history": "; ".join(exposure.history) or "as given",
-            "references": model.source,
-            "provenance": known,
-            "depth_unit": exposure.depth_unit,
-            "rules": ", ".join(f"{k} {v}" for k, v in vars(self.rules).items()),
-            "does_not_claim": model.does_not_claim,
-            "comment": CAUTION,
-        }
-        return ds
+        )
+        attrs = dataset_attributes(
+            f"stops of an ascent by the model {model.name}",
+            f"ascent, model {model.name}, parameters {model.digest}",
+            history=exposure.history,
+            references=[model.source],
+            provenance=known,
+            depth_unit=exposure.depth_unit,
+            rules=", ".join(f"{k} {v}" for k, v in vars(self.rules).items()),
+            does_not_claim=model.does_not_claim,
+        )
+        first = attributes(unit) | {"long_name": "where the low gradient first asks to stop; nan: nowhere"}
+        return xr.Dataset(
+            {name: (dims, values, own | {"long_name": meaning}) for name, values, own, meaning in described}
+            | {"first_stop_depth": (exposure.dims, self.first.reshape(self.shape), first)},
+            coords={"stop": np.arange(len(rows)), **exposure.coords},
+            attrs=attrs,
+        )
 
     def _joined(self) -> list[dict[str, Any]]:
         """Merge the notes of one depth (a switch and a wait); of one scenario drop what lasts no time."""

@@ -7,15 +7,94 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
+import numpy as np
+
 from gasphys.errors import RangeError, UnitError, unknown_name
-from gasphys.gas import Gas
+from gasphys.exposure import Exposure
+from gasphys.gas import FORMULAS, Gas
 from gasphys.quantities import quantity
 from gasphys.units import parse_quantity, unit
 
-__all__ = ["Loop", "Rules", "Source"]
+__all__ = ["Breaks", "Loop", "Rules", "Source"]
 
 #: Depth unit to the default ascent rate, spacing of stops and last stop.
 DEFAULTS = {"m": (9.0, 3.0, 3.0), "msw": (9.0, 3.0, 3.0), "fsw": (30.0, 10.0, 10.0)}
+
+
+@dataclass(frozen=True)
+class Breaks:
+    """Breaks on another gas, taken at stops while a gas of high PO2 is breathed.
+
+    Parameters
+    ----------
+    every : float
+        Uninterrupted minutes at or above `from_po2` after which a break is due [min].
+    minutes : float
+        Length of a break [min].
+    gas : Gas or str
+        What is breathed in it, on open circuit.
+    from_po2 : float or str
+        PO2 from which minutes are counted [kPa absolute], or text such as ``"1.4 bar"``.
+    counted : bool
+        True: a break is part of the stop. False: it comes on top, so that the minutes on the stop's own gas
+        are at least those the model asks for without it.
+
+    Raises
+    ------
+    RangeError
+        If a value is not possible.
+
+    Notes
+    -----
+    Either way the tissues follow what is breathed and the limit is kept as breathed. A break is taken at
+    stops only; one that falls due on the way is taken at the next stop, and one under way when the stop may
+    end is not finished. Minutes below `from_po2` set the count back to none. How often and how long is
+    custom, not measured: this library has no default.
+
+    Examples
+    --------
+    >>> str(Breaks(20, 5, "air", "1.4 bar"))
+    'break of 5 min on air after 20 min at 140 kPa or more, counted as stop time'
+    """
+
+    every: float
+    minutes: float
+    gas: Any
+    from_po2: Any
+    counted: bool = True
+
+    def __post_init__(self) -> None:
+        for name in ("every", "minutes"):
+            if not 0.0 < float(getattr(self, name)) < math.inf:
+                raise RangeError(f"breaks: {name} = {getattr(self, name)} min must be positive")
+        one = quantity("breathing_gas_po2")
+        value = one.from_text(self.from_po2) if isinstance(self.from_po2, str) else float(self.from_po2)
+        if not one.possible[0] <= value <= one.possible[1]:
+            raise one.range_error(value)
+        object.__setattr__(self, "from_po2", value)
+        object.__setattr__(self, "gas", Gas.parse(self.gas))
+
+    def source(self) -> Source:
+        """Return the gas of the break as an entry of the gases that no depth asks for.
+
+        Returns
+        -------
+        Source
+            Of negative deepest depth.
+
+        Examples
+        --------
+        >>> Breaks(20, 5, "air", 140.0).source().name
+        'air'
+        """
+        return Source(str(self.gas), self.gas, math.nan, -1.0)
+
+    def __str__(self) -> str:
+        how = "counted as stop time" if self.counted else "on top of the stop time"
+        return (
+            f"break of {self.minutes:g} min on {self.gas} after {self.every:g} min at "
+            f"{self.from_po2:.4g} kPa or more, {how}"
+        )
 
 
 @dataclass(frozen=True)
@@ -38,6 +117,8 @@ class Rules:
         A stop, where there is one, lasts at least this long [min].
     switch_minutes : float
         Time taken at the depth of a switch, on the new gas [min].
+    breaks : Breaks, optional
+        Breaks on another gas at stops.
 
     Raises
     ------
@@ -58,6 +139,7 @@ class Rules:
     gradient_high: float = 1.0
     shortest_stop: float = 0.0
     switch_minutes: float = 0.0
+    breaks: Breaks | None = None
 
     def __post_init__(self) -> None:
         for name in ("stop_spacing", "last_stop"):
@@ -247,3 +329,79 @@ def read_gases(gases: Sequence[tuple[Any, Any]], without: Any, depth_unit: str) 
     if lost not in [s.name for s in found]:
         raise unknown_name("gas of the plan", lost, [s.name for s in found])
     return tuple(s for s in found if s.name != lost)
+
+
+def as_measured(
+    exposure: Exposure, gases: Sequence[tuple[Any, Any]], without: Any, measured: Mapping[str, Any]
+) -> tuple[Exposure, list[tuple[Any, Any]], Any]:
+    """Put measured mixes where the planned ones stand.
+
+    Parameters
+    ----------
+    exposure : Exposure
+        The way to the bottom.
+    gases : sequence of (gas, deepest)
+        As for :func:`read_gases`.
+    without : Gas, str, Loop or None
+        The gas that is lost, by its planned name.
+    measured : mapping
+        Name of a planned mix to the Gas found.
+
+    Returns
+    -------
+    tuple
+        Exposure, gases and `without`, with the measured mixes.
+
+    Raises
+    ------
+    UnknownNameError
+        If a planned mix is neither breathed at the bottom nor listed.
+
+    Examples
+    --------
+    >>> bottom = Exposure.start("air").travel(depth=30, rate=20)
+    >>> _, gases, _ = as_measured(bottom, [("nitrox 48", 20.0)], None, {"nitrox 48": "nitrox 46.5"})
+    >>> str(gases[0][0])
+    'nitrox 46.5'
+    """
+    pairs = [(Gas.parse(planned), Gas.parse(found)) for planned, found in measured.items()]
+
+    def found_for(gas: Any) -> Any:
+        if isinstance(gas, Loop):
+            return replace(gas, diluent=found_for(gas.diluent))
+        own = Gas.parse(gas)
+        return next((found for planned, found in pairs if planned == own), own)
+
+    listed = [entry[0].diluent if isinstance(entry[0], Loop) else Gas.parse(entry[0]) for entry in gases]
+    for planned, found in pairs:
+        changed = _rebreathed(exposure, planned, found)
+        if changed is None and planned not in listed:
+            here = [exposure.gas_name(len(exposure.part) - 1)] if not exposure.dims else []
+            raise unknown_name("planned mix", str(planned), [*here, *map(str, listed)])
+        note = f"{found} as measured in place of the planned {planned}"
+        exposure = replace(changed or exposure, history=(*exposure.history, note))
+    return (
+        exposure,
+        [(found_for(gas), deepest) for gas, deepest in gases],
+        (None if without is None else found_for(without)),
+    )
+
+
+def _rebreathed(exposure: Exposure, planned: Gas, found: Gas) -> Exposure | None:
+    """Return the exposure with one gas, or diluent, in place of another; None where it is not breathed."""
+    formulas = [f for f in FORMULAS if f in exposure.fractions or found.fraction(f) or planned.fraction(f)]
+
+    def alike(given: Mapping[str, Any]) -> Any:
+        return np.all(
+            [np.abs(np.asarray(given.get(f, 0.0)) - planned.fraction(f)) < 1e-9 for f in formulas], axis=0
+        )
+
+    def turned(given: Mapping[str, Any]) -> dict[str, Any]:
+        same = alike(given)
+        return {f: np.where(same, found.fraction(f), given.get(f, 0.0)) for f in formulas}
+
+    there = {f: np.asarray(v) for f, v in exposure.fractions.items()}
+    if not (np.any(alike(there)) or np.any(alike(exposure.gas))):
+        return None
+    state = {f: (v if v.ndim else float(v)) for f, v in turned(exposure.gas).items()}
+    return replace(exposure, fractions=turned(there), gas=state)

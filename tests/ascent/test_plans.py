@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -18,6 +19,8 @@ from gasphys.errors import (
     ValidityError,
     ValidityWarning,
 )
+
+from ..tissues.sets import THREE_GASES
 
 MODELS = (
     "buhlmann_1995_c",
@@ -282,3 +285,77 @@ def test_a_plan_prints_when_to_leave() -> None:
     assert "wait at 6 msw, leave at" in text
     assert "half-time in control; oxygen" in text
     assert text.endswith(gp.quantities.CAUTION)
+
+
+# -- Sets of other kinds, very long stops ------------------------------------------------------------
+
+
+def test_a_users_set_of_three_gases_is_planned_with(tmp_path: Path) -> None:
+    """Tested before leaving only: at every stop the limit of the next depth is met, a minute earlier not."""
+    path = tmp_path / "own.toml"
+    path.write_text(THREE_GASES, encoding="utf-8")
+    one = tissues.load(path)
+    mix = gp.Gas(oxygen=0.18, helium=0.3, argon=0.05)
+    found = ascent.plan(bottom(mix, 50.0, 25.0), [("nitrox 50", 21.0)], path)
+    assert found.stops.sizes["stop"] > 2
+    grid = [*found.stops.depth.values[1:], 0.0]
+    for k, target in enumerate(grid):
+        if found.stops.depth[k] - target > 3.5:
+            continue  # the next stop is further up: several steps were allowed at once
+        leave = float(found.stops.leave_time[k])
+        ds = tissues.tensions(found.exposure, path, at=[leave - 1.0, leave])
+        for time, allowed in ((leave, True), (leave - 1.0, False)):
+            state = ds.tissue_pressure.sel(time=time).values
+            total, limit = tissues.tolerance.m_values(one, state, np.array(101.325 + 10.0 * target))
+            assert bool((total <= limit * (1.0 + 1e-9)).all()) is allowed
+
+
+def test_a_stop_of_days_is_the_closed_form() -> None:
+    """Saturation on air: t = t_half log2((p - PA)/(M - PA)) of the slowest tissue, in whole minutes."""
+    one = tissues.load("buhlmann_1995_a", compartments=["16"])
+    saturated = Exposure.start("air").travel(depth=20.0, minutes=2.0).stay(20000.0)
+    rules = ascent.Rules(stop_spacing=6.0, last_stop=6.0)
+    found = ascent.plan(saturated, model=one, rules=rules)
+    last = found.stops.isel(stop=-1)
+    assert float(last.depth) == 6.0
+    assert float(last.duration) > 2000.0
+    arrive = float(last.leave_time) - float(last.duration)
+    held = tissues.tensions(found.exposure, one, at=[arrive]).tissue_pressure
+    p = held.sel(time=arrive, inert_gas="N2", compartment="16").item()
+    inert, limit = 0.79 * (161.325 - 6.27), 23.27 + 101.325 / 0.9653
+    exact = 635.0 * np.log2((p - inert) / (limit - inert))
+    assert float(last.duration) == np.ceil(exact)
+
+
+def test_what_holds_a_stop_for_ever_is_said_with_the_gas_breathed() -> None:
+    deep = bottom(depth=60.0, minutes=3000.0)
+    with pytest.raises(NotReachableError, match="on nitrox 30 the step to 0 msw is never allowed"):
+        ascent.plan(deep, [("nitrox 30", 30.0)], rules=ascent.Rules(last_stop=21.0, stop_spacing=9.0))
+    with pytest.raises(NotReachableError, match=r"kidd_stubbs_1983: .* is never allowed"):
+        ascent.plan(
+            bottom(depth=60.0, minutes=2000.0),
+            model="kidd_stubbs_1983",
+            rules=ascent.Rules(last_stop=30.0, stop_spacing=9.0),
+        )
+
+
+def test_a_batch_of_which_nothing_can_be_planned_is_all_blank() -> None:
+    times = xr.DataArray([2500.0, 3000.0], dims="t", attrs={"units": "min"})
+    with pytest.warns(ValidityWarning, match="2 of 2 ascents cannot be planned"):
+        batch = ascent.plan(bottom(depth=30.0, minutes=times), rules=ascent.Rules(last_stop=21.0))
+    assert np.isnan(batch.ascent_time).all()
+
+
+def test_plans_do_not_depend_on_who_is_planned_beside_them() -> None:
+    """More scenarios than are looked at together, each as its single plan."""
+    rng = np.random.default_rng(5)
+    depths = xr.DataArray(rng.uniform(12.0, 60.0, 700), dims="n", attrs={"units": "msw"})
+    with gp.validity("ignore"):
+        batch = ascent.plan(bottom("trimix 18/40", depths, 20.0), GASES)
+        for n in (0, 1, 311, 511, 512, 513, 699):
+            alone = ascent.plan(bottom("trimix 18/40", float(depths[n]), 20.0), GASES)
+            here = batch.stops.isel(n=n)
+            real = here.where(here.duration > 0.0, drop=True)
+            assert real.depth.values.tolist() == alone.stops.depth.values.tolist()
+            assert real.duration.values.tolist() == alone.stops.duration.values.tolist()
+            assert float(batch.ascent_time[n]) == pytest.approx(alone.ascent_time, rel=1e-12)

@@ -3,30 +3,14 @@
 from __future__ import annotations
 
 import warnings
-from typing import Any
+from pathlib import Path
 
 import numpy as np
 import pytest
 
-from gasphys import Exposure, ascent
 from gasphys.errors import ValidityError, ValidityWarning
 
-from ..tissues.test_published_times import read
-
-STOPS = (40, 30, 20, 10)
-
-
-def square(depth: float, bottom: float) -> Exposure:
-    """Return a dive on air: descent at 75 fsw/min counts into the bottom time."""
-    down = depth / 75.0
-    return Exposure.start("air", depth_unit="fsw").travel(depth=depth, minutes=down).stay(bottom - down)
-
-
-def stops_of(depth: float, bottom: float, model: str, **rules: Any) -> dict[int, float]:
-    """Return minutes by depth."""
-    found = ascent.plan(square(depth, bottom), model=model, rules=ascent.Rules(**rules)).stops
-    return {int(d): float(m) for d, m in zip(found.depth.values, found.duration.values, strict=True)}
-
+from ..tissues.printed import STOPS, read, stops_of
 
 ROWS_1957 = read("schedules_usn1957_air")
 ROWS_LATER = read("schedules_usn_rev7_air")
@@ -95,3 +79,26 @@ def test_vval18_regression() -> None:
         later = stops_of(100.0, 45.0, "thalmann_vval18", ascent_rate=30.0, last_stop=20.0)
     assert later == {20: 78.0}
     assert np.isfinite(list(later.values())).all()
+
+
+@pytest.mark.parametrize(("overpressure", "minutes"), [(0.0, 78.0), (5.0, 49.0), (10.0, 36.0), (1e4, 32.0)])
+def test_what_the_gas_phase_overpressure_does(overpressure: float, minutes: float, tmp_path: Path) -> None:
+    """100 fsw/45 min, one stop at 20 fsw, computed elsewhere; a large one is the exponential model."""
+    model = _with_overpressure(overpressure, tmp_path)
+    assert stops_of(100.0, 45.0, model, ascent_rate=30.0, last_stop=20.0) == {20: minutes}
+
+
+def test_exponential_washout_of_the_same_limits_is_shorter(tmp_path: Path) -> None:
+    """80 fsw/90 min: 16 and 46 min where the exponential-linear set asks for 57 and 114 [computed]."""
+    model = _with_overpressure(1e4, tmp_path)
+    assert stops_of(80.0, 90.0, model, ascent_rate=30.0) == {20: 16.0, 10: 46.0}
+
+
+def _with_overpressure(overpressure: float, folder: Path) -> Path:
+    path = folder / "own.toml"
+    path.write_text(
+        'based_on = "thalmann_vval18"\ntitle = "another overpressure"\n'
+        f"[convention]\ngas_phase_overpressure = {overpressure}\n",
+        encoding="utf-8",
+    )
+    return path
