@@ -596,7 +596,8 @@ class Exposure:
 
         Examples
         --------
-        >>> depths = xr.DataArray([18.0, 30.0], dims="draw", coords={"draw": ["a", "b"]}, attrs={"units": "msw"})
+        >>> labels = {"draw": ["a", "b"]}
+        >>> depths = xr.DataArray([18.0, 30.0], dims="draw", coords=labels, attrs={"units": "msw"})
         >>> Exposure.start("air").travel(depth=depths, minutes=2).pick(draw="b").pieces().end_pressure
         array([401.325])
         """

@@ -559,8 +559,8 @@ def fit(
     loose = [n for n, e, log in zip(names, np.sqrt(np.diag(inner)), logs, strict=True) if log and e > _LOOSE]
     if loose:
         raise NotReachableError(
-            f"{', '.join(loose)} runs to zero or without end: the likelihood has no maximum there; leave that "
-            "compartment out, or hold the number"
+            f"{', '.join(loose)} runs to zero or without end: the likelihood has no maximum there; leave "
+            "that compartment out, or hold the number"
         )
     values = _from_scale(scaled, logs)
     slope = np.where(logs, values, 1.0)

@@ -181,7 +181,7 @@ def test_a_likelihood_without_maximum_is_said() -> None:
     with pytest.raises(NotReachableError, match="gain_1 runs to zero or without end"):
         risk.fit([Outcome(DIVE, "none", count=5)], MODEL)
     seen = [Outcome(DIVE, "event", count=13), Outcome(DIVE, "none", count=187)]
-    with pytest.raises(NotReachableError, match="flat or has no maximum|runs to zero"):
+    with pytest.raises(NotReachableError, match=r"flat or has no maximum|runs to zero"):
         risk.fit(seen, MODEL, ["gain_1", "half_time_1"])  # one kind of exposure tells one number
     with pytest.raises(RangeError, match="no outcome"):
         risk.fit([], MODEL)
