@@ -189,6 +189,7 @@ class NucleiPlanner(_Planner):
         if not complete:
             self._again(kept)
             self._pass()
+        self.settled = ~circling
         if circling.any():
             outside_validity(
                 f"{self.model.name}: {int(circling.sum())} of {len(self.depth)} ascents never settle; the "
@@ -253,6 +254,7 @@ class NucleiPlanner(_Planner):
             ("allowed_gradient", both, self.allowed, gradient, "supersaturation allowed by the last pass"),
             ("first_supersaturated_depth", (), self.zone, attributes(unit), where),
             ("passes", (), self.passes, {"units": "1"}, "passes until the stops repeat"),
+            ("settled", (), self.settled.astype(np.int8), {"units": "1"}, "1: the stops repeat, 0: a circle"),
         ):
             shape = cells if here else self.shape
             full = np.asarray(values).reshape(shape)

@@ -18,7 +18,7 @@ from gasphys.constants import (
     MMHG,
 )
 from gasphys.equation import Value, formula, inverse
-from gasphys.maths import exp, expm1, log, maximum, ramp_gain, sqrt, where
+from gasphys.maths import exp, expm1, log, maximum, ramp_gain, sqrt
 
 __all__ = [
     "altitude_stop_depth",
@@ -375,9 +375,8 @@ def intercept_from_surfacing(
 )
 def _weighted(one: Value, other: Value, of_one: Value, of_other: Value) -> Value:
     """Mean of two numbers by the pressures they belong to; the first where there is no gas at all."""
-    total = one + other
-    held = where(total <= 0.0, 1.0, total)
-    return where(total <= 0.0, of_one, (of_one * one + of_other * other) / held)
+    # The tiny pressure stands for no gas at all: 0/tiny is 0.
+    return of_one + (of_other - of_one) * (other / maximum(one + other, 1e-300))
 
 
 @formula(result="m_value_a", **_BAKER)

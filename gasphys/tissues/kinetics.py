@@ -7,8 +7,10 @@ step. Every scenario is computed as if it were alone.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import math
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from operator import mul
 from typing import Any
 
 import numpy as np
@@ -25,11 +27,25 @@ from gasphys.tissues.equations import (
     loop_alveolar_inert_pressure,
     slip_flow,
     tissue_pressure,
+    uptake_share,
     washout_threshold,
 )
 from gasphys.tissues.sets import TissueSet
 
-__all__ = ["Breath", "Stretches", "advance", "along", "equilibrium", "inert_pressure", "stretches"]
+__all__ = [
+    "Breath",
+    "LastBranch",
+    "Passage",
+    "Stretches",
+    "advance",
+    "along",
+    "equilibrium",
+    "inert_pressure",
+    "last_branch",
+    "serial_after",
+    "stay",
+    "stretches",
+]
 
 Array = NDArray[np.float64]
 
@@ -345,13 +361,9 @@ def _exponential_linear(
     on a stretch. So a compartment crosses upward only while w > 0 and downward only while w < 0: cut where w
     changes sign, and at most one crossing remains in each part.
     """
-    c = model.convention
-    own = (c["venous_po2"], c["venous_pco2"], c["gas_phase_overpressure"], c["water_vapor_pressure"])
     t, first, last = duration[..., None, None], first[..., None, :], last[..., None, :]
-    low = washout_threshold.raw(start, *own)[..., None, None]
-    high = washout_threshold.raw(end, *own)[..., None, None]
-    x = float(LN2) * t / model.half_time
-    begins, ends = x * (first - low) - (high - low), x * (last - high) - (high - low)
+    low, high = (_threshold(model, p)[..., None, None] for p in (start, end))
+    begins, ends = _relative_rates(t, first, last, low, high, model.half_time)
     plain = np.asarray(tissue_pressure.raw(state, first, last, t, model.half_time))
     simple = (state <= low) & (plain <= high) & ~((begins > 0.0) & (ends < 0.0))
     if simple.all():
@@ -362,15 +374,49 @@ def _exponential_linear(
     def lanes(values: Any) -> Array:
         return np.asarray(np.broadcast_to(values, shape)[todo])
 
-    half_time, t, begins, ends = lanes(model.half_time), lanes(t), lanes(begins), lanes(ends)
-    first, last, low, high = lanes(first), lanes(last), lanes(low), lanes(high)
+    result = plain.copy()
+    lane = map(lanes, (state, t, first, last, low, high, model.half_time, begins, ends))
+    result[todo] = _crossings(*lane)[0]
+    return result
+
+
+def _threshold(model: TissueSet, pressure: Array) -> Array:
+    c = model.convention
+    own = (c["venous_po2"], c["venous_pco2"], c["gas_phase_overpressure"], c["water_vapor_pressure"])
+    return np.asarray(washout_threshold.raw(pressure, *own))
+
+
+def _relative_rates(
+    t: Array, first: Array, last: Array, low: Array, high: Array, half_time: Array
+) -> tuple[Array, Array]:
+    """Return what p - L changes by over the stretch if it went on as at its ends, at p = L [kPa]."""
+    x = float(LN2) * t / half_time
+    return x * (first - low) - (high - low), x * (last - high) - (high - low)
+
+
+def _crossings(
+    p: Array,
+    t: Array,
+    first: Array,
+    last: Array,
+    low: Array,
+    high: Array,
+    half_time: Array,
+    begins: Array,
+    ends: Array,
+) -> tuple[Array, Array, Array, NDArray[np.bool_]]:
+    """Advance lanes that may cross the threshold, once or twice.
+
+    Returns pressures at the end; where the branch they end on begins, as a share of the stretch, and the
+    pressures there; and whether that branch is the linear one.
+    """
     with np.errstate(divide="ignore", invalid="ignore"):
         turns = begins * ends < 0.0
         share = np.where(turns, begins / (begins - ends), 1.0)
     middle_first = np.where(turns, first + (last - first) * share, last)
     middle_low = np.where(turns, low + (high - low) * share, high)
-    p = _one_crossing(
-        lanes(state),
+    p, within, begin, linear = _one_crossing(
+        p,
         t * share,
         first,
         middle_first,
@@ -379,11 +425,15 @@ def _exponential_linear(
         half_time,
         np.where(turns, begins, begins + ends) > 0.0,
     )
+    begun = share * within
     if turns.any():
-        p = _one_crossing(p, t * (1.0 - share), middle_first, last, middle_low, high, half_time, ends > 0.0)
-    result = plain.copy()
-    result[todo] = p
-    return result
+        rest = 1.0 - share
+        p, within, later, linear_later = _one_crossing(
+            p, t * rest, middle_first, last, middle_low, high, half_time, ends > 0.0
+        )
+        begun = np.where(turns, share + rest * within, begun)
+        begin, linear = np.where(turns, later, begin), np.where(turns, linear_later, linear)
+    return p, begun, begin, linear
 
 
 def _one_crossing(
@@ -395,9 +445,10 @@ def _one_crossing(
     high: Array,
     half_time: Array,
     rising: NDArray[np.bool_],
-) -> Array:
-    """Advance lanes over a part in which p - L can change sign at most once, upward if `rising`."""
+) -> tuple[Array, Array, Array, NDArray[np.bool_]]:
+    """As :func:`_crossings`, over a part in which p - L can change sign at most once, upward if `rising`."""
     linear = (p > low) | ((p == low) & rising)
+    begun, begin = np.zeros_like(p), p.copy()
     above = linear_tissue_pressure.raw(p, first, last, low, high, t, half_time)
     below = tissue_pressure.raw(p, first, last, t, half_time)
     result = np.where(linear, above, below)
@@ -411,6 +462,7 @@ def _one_crossing(
         share = when / time
         at = l0 + (l1 - l0) * share
         result[down] = tissue_pressure.raw(at, a + (b - a) * share, b, time - when, half)
+        begun[down], begin[down] = share, at
     up = ~linear & rising & (below > high) & (t > 0.0)
     if up.any():
         q, a, b, l0, l1, time, half = (v[up] for v in (p, first, last, low, high, t, half_time))
@@ -425,7 +477,77 @@ def _one_crossing(
         result[up] = linear_tissue_pressure.raw(
             at, a + (b - a) * share, b, at, l1, time * (1.0 - share), half
         )
-    return np.asarray(result)
+        begun[up], begin[up] = share, at
+    return np.asarray(result), begun, begin, (linear & ~down) | up
+
+
+@dataclass(frozen=True)
+class LastBranch:
+    """The branch on which exponential-linear compartments end a stretch; ``(compartment, stretch)``.
+
+    Parameters
+    ----------
+    linear : array of bool
+        Whether it is the linear one.
+    duration : array
+        How long it has lasted within the stretch [min].
+    state : array
+        Tissue pressure where it begins [kPa].
+    start_pressure, start_inert : array
+        Ambient pressure and arterial inert gas there [kPa].
+    """
+
+    linear: NDArray[np.bool_]
+    duration: Array
+    state: Array
+    start_pressure: Array
+    start_inert: Array
+
+
+def last_branch(
+    model: TissueSet, state: Array, duration: Array, start: Array, end: Array, first: Array, last: Array
+) -> LastBranch:
+    """Return on which branch exponential-linear compartments end stretches, and where it begins.
+
+    Parameters
+    ----------
+    model : TissueSet
+        The set.
+    state : array
+        Tissue pressure at the start of each stretch ``(compartment, stretch)`` [kPa].
+    duration, start, end, first, last : array
+        ``(stretch,)``: length [min], ambient pressure and arterial inert gas at its ends [kPa].
+
+    Returns
+    -------
+    LastBranch
+        The equation of that branch gives the pressure at the end.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from gasphys.tissues.sets import load
+    >>> fsw = 101.325 / 33.0
+    >>> one = np.array([1.0]) * fsw
+    >>> model = load("thalmann_vval18", compartments=["40"])
+    >>> held = np.array([[50.0 * fsw]])
+    >>> found = last_branch(model, held, np.array([150.0]), 43 * one, 43 * one, 32.47 * one, 32.47 * one)
+    >>> bool(found.linear[0, 0]), round(150.0 - float(found.duration[0, 0]), 3)
+    (False, 104.671)
+    """
+    low, high = (_threshold(model, p) for p in (start, end))
+    half_time = model.half_time
+    begins, ends = _relative_rates(duration, first, last, low, high, half_time)
+    shape = state.shape
+    columns = (state, duration, first, last, low, high, half_time, begins, ends)
+    _, begun, begin, linear = _crossings(*(np.broadcast_to(v, shape) for v in columns))
+    return LastBranch(
+        linear,
+        duration * (1.0 - begun),
+        begin,
+        start + (end - start) * begun,
+        first + (last - first) * begun,
+    )
 
 
 #: Dormand and Prince 1980, orders 5 and 4: stages, weights, and the difference of the two orders.
@@ -448,46 +570,103 @@ def _serial(
     model: TissueSet, state: Array, duration: Array, start: Array, end: Array, first: Array, last: Array
 ) -> Array:
     """Slip flow through compartments in series: embedded Runge-Kutta, each scenario with its own steps."""
-    coefficient, offset = model.convention["flow_coefficient"], model.convention["flow_offset"]
     lead = np.broadcast_shapes(state.shape[:-2], duration.shape, start.shape)
     count = state.shape[-2]
-    p = np.broadcast_to(state[..., 0], (*lead, count)).reshape(-1, count).copy()
-    minutes, low, high = (np.broadcast_to(v, lead).reshape(-1, 1) for v in (duration, start, end))
-
-    def slope(share: Array, p: Array, lane: Any) -> Array:
-        ambient = low[lane] + (high[lane] - low[lane]) * share
-        chain = np.concatenate([ambient, p], axis=-1)
-        flow = slip_flow.raw(chain[:, :-1], chain[:, 1:], coefficient, offset)
-        return np.asarray(
-            minutes[lane] * (flow - np.concatenate([flow[:, 1:], np.zeros((len(p), 1))], axis=-1))
-        )
-
+    flow = model.convention["flow_coefficient"], model.convention["flow_offset"]
+    chain = np.broadcast_to(state[..., 0], (*lead, count)).reshape(-1, count)
+    minutes, low, high = (np.broadcast_to(v, lead).reshape(-1) for v in (duration, start, end))
+    if len(minutes) == 1:
+        # One scenario in plain numbers: the same operations, without the overhead of arrays.
+        one = serial_after(chain[0].tolist(), float(minutes[0]), float(low[0]), float(high[0]), *flow)
+        return np.array(one).reshape(*lead, count, 1)
+    p = [chain[:, k].copy() for k in range(count)]
     done = np.where(minutes > 0.0, 0.0, 1.0)
-    # First step: a tenth of the fastest time constant, or the whole stretch.
-    fastest = (
-        4.0 * coefficient * (offset + 2.0 * np.maximum(np.maximum(low, high), p.max(axis=-1, keepdims=True)))
-    )
-    step = np.minimum(1.0, 0.1 / np.maximum(fastest * minutes, 1e-300))
+    highest = np.maximum(np.maximum(low, high), chain.max(axis=-1))
+    step = np.minimum(1.0, _first_step(minutes, highest, *flow))
     while True:
-        lane = np.flatnonzero(done[:, 0] < 1.0)
+        lane = np.flatnonzero(done < 1.0)
         if not lane.size:
-            return p.reshape(*lead, count)[..., None]
+            return np.stack(p, axis=-1).reshape(*lead, count, 1)
         h = np.minimum(step[lane], 1.0 - done[lane])
-        rates: list[Array] = []
-        here = p[lane]
-        trial = here
-        for weights, node in zip(_STAGES, _NODES, strict=True):
-            trial = here + h * sum(
-                (w * r for w, r in zip(weights, rates, strict=True) if w), np.zeros_like(here)
-            )
-            rates.append(slope(done[lane] + node * h, trial, lane))
-        error = np.abs(h * sum(w * r for w, r in zip(_ERROR, rates, strict=True) if w))
-        worst = (error / (_TOLERANCE * np.maximum(np.abs(trial), 1.0))).max(axis=-1, keepdims=True)
-        accepted = (worst <= 1.0)[:, 0]
-        p[lane[accepted]] = trial[accepted]
+        here = [v[lane] for v in p]
+        trial, errors = _runge_kutta(here, h, done[lane], minutes[lane], low[lane], high[lane], *flow)
+        worst = np.max([e / np.maximum(np.abs(v), 1.0) for e, v in zip(errors, trial, strict=True)], axis=0)
+        worst = worst / _TOLERANCE
+        accepted = worst <= 1.0
+        for k, v in enumerate(trial):
+            p[k][lane[accepted]] = v[accepted]
         reached = done[lane] + h
         done[lane[accepted]] = np.where(reached >= 1.0 - 1e-15, 1.0, reached)[accepted]
-        step[lane] = h * np.clip(0.9 * np.maximum(worst, 1e-10) ** -0.2, 0.2, 5.0)
+        step[lane] = h * np.clip(0.9 / np.sqrt(np.sqrt(np.maximum(worst, 1e-10))), 0.2, 5.0)
+
+
+def serial_after(
+    state: Sequence[float],
+    minutes: float,
+    low: float,
+    high: float,
+    flow_coefficient: float,
+    flow_offset: float,
+) -> list[float]:
+    """Return the pressures of serial compartments after one stretch of one scenario.
+
+    Parameters
+    ----------
+    state : sequence of float
+        Pressures at its start, in order [kPa].
+    minutes, low, high : float
+        Length [min], ambient pressure at its start and end [kPa].
+    flow_coefficient, flow_offset : float
+        Of :func:`gasphys.tissues.slip_flow` [1/min/kPa, kPa].
+
+    Returns
+    -------
+    list of float
+        Pressures at its end [kPa].
+
+    Examples
+    --------
+    >>> after = serial_after([100.6] * 4, 30.0, 400.6, 400.6, 2.596e-5, 836.7)
+    >>> [round(p, 4) for p in after]
+    [256.509, 154.1801, 113.3815, 103.2667]
+    """
+    flow = flow_coefficient, flow_offset
+    p, done = list(state), 0.0 if minutes > 0.0 else 1.0
+    step = min(1.0, _first_step(minutes, max(low, high, *p), *flow))
+    while done < 1.0:
+        h = min(step, 1.0 - done)
+        trial, errors = _runge_kutta(p, h, done, minutes, low, high, *flow)
+        worst = max(e / max(abs(v), 1.0) for e, v in zip(errors, trial, strict=True)) / _TOLERANCE
+        if worst <= 1.0:
+            p, done = trial, done + h
+            done = 1.0 if done >= 1.0 - 1e-15 else done
+        step = h * min(max(0.9 / math.sqrt(math.sqrt(max(worst, 1e-10))), 0.2), 5.0)
+    return p
+
+
+def _first_step(minutes: Any, highest: Any, a: float, b: float) -> Any:
+    """Return a tenth of the fastest time constant as a share of the stretch."""
+    fastest = 4.0 * a * (b + 2.0 * highest)
+    return 0.1 / (fastest * minutes + 1e-300)
+
+
+def _runge_kutta(
+    p: list[Any], h: Any, done: Any, minutes: Any, low: Any, high: Any, a: float, b: float
+) -> tuple[list[Any], list[Any]]:
+    """Take one step ``h`` of the stretch, numbers or arrays: pressures after it, and their errors."""
+    rates: list[list[Any]] = [[] for _ in p]
+    trial = p
+    for weights, node in zip(_STAGES, _NODES, strict=True):
+        if weights:
+            trial = [v + h * sum(map(mul, weights, own)) for v, own in zip(p, rates, strict=True)]
+        above = low + (high - low) * (done + node * h)
+        inflow = slip_flow.raw(above, trial[0], a, b)
+        for k, own in enumerate(rates):
+            outflow = slip_flow.raw(trial[k], trial[k + 1], a, b) if k + 1 < len(p) else 0.0
+            own.append(minutes * (inflow - outflow))
+            inflow = outflow
+    errors = [abs(h * sum(map(mul, _ERROR, own))) for own in rates]
+    return trial, errors
 
 
 #: Kind of kinetics to the kernel of one stretch.
@@ -551,10 +730,176 @@ def advance(
     return kernel(model, state, duration - duration * share, meets, end, middle, last)
 
 
+def stay(model: TissueSet, state: Array, minutes: Array, pressure: Array, breath: Breath) -> Array:
+    """Return the tissues of each scenario after stays at its pressure.
+
+    Parameters
+    ----------
+    model : TissueSet
+        The set.
+    state : array
+        ``(scenario, compartment, inert_gas)`` [kPa].
+    minutes : array
+        One stay each, ``(scenario,)``, or several, ``(scenario, stay)`` or ``(1, stay)`` [min].
+    pressure : array
+        ``(scenario,)`` [kPa].
+    breath : Breath
+        What is breathed, ``(scenario,)``.
+
+    Returns
+    -------
+    array
+        ``(scenario, [stay,] compartment, inert_gas)`` [kPa].
+
+    Notes
+    -----
+    As :func:`advance` with equal ends; what the stays have in common is computed once.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from gasphys.tissues.sets import load
+    >>> model = load("us_navy_1957", compartments=["10"])
+    >>> air = Breath(np.array([0.21]), np.array([[0.79]]), np.array([np.nan]))
+    >>> start = equilibrium(model, np.array([101.325]))
+    >>> at_100_fsw = stay(model, start, np.array([[10.0, 20.0]]), np.array([408.3705]), air)
+    >>> (at_100_fsw[0, :, 0, 0] * 33 / 101.325).round(2)
+    array([65.57, 85.32])
+    """
+    wide = minutes.ndim > 1
+    if model.kinetics != "exponential":
+        if wide:
+            state, pressure = state[:, None], pressure[:, None]
+            breath = Breath(breath.oxygen[:, None], breath.inert[:, None], breath.setpoint[:, None])
+        return advance(model, state, minutes, pressure, pressure, breath)
+    # The constant-depth form of tissue_pressure.
+    share = np.asarray(uptake_share.raw(minutes[..., None, None], model.half_time))
+    gap = inert_pressure(model, pressure, breath)[:, None, :] - state
+    if wide:
+        state, gap = state[:, None], gap[:, None]
+    out = np.asarray(gap * share)
+    out += state
+    return out
+
+
+@dataclass(frozen=True)
+class Passage:
+    """One stretch of each scenario, worked out once for any number of states; made by :meth:`of`.
+
+    Parameters
+    ----------
+    model : TissueSet
+        The set.
+    duration, start_pressure, end_pressure : array
+        ``(scenario,)`` [min, kPa].
+    breath : Breath
+        What is breathed, ``(scenario,)``.
+    inert, share, gain : array or None
+        Of exponential compartments: alveolar pressure at the start, share taken up, and what the change on
+        the way adds [kPa, 1, kPa].
+    """
+
+    model: TissueSet
+    duration: Array
+    start_pressure: Array
+    end_pressure: Array
+    breath: Breath
+    inert: Array | None = None
+    share: Array | None = None
+    gain: Array | None = None
+
+    @classmethod
+    def of(cls, model: TissueSet, duration: Array, start: Array, end: Array, breath: Breath) -> Passage:
+        """Work out a stretch.
+
+        Parameters
+        ----------
+        model : TissueSet
+            The set.
+        duration, start, end : array
+            ``(scenario,)`` [min, kPa].
+        breath : Breath
+            What is breathed, ``(scenario,)``.
+
+        Returns
+        -------
+        Passage
+            Called with states, it returns them after the stretch.
+
+        Examples
+        --------
+        >>> import numpy as np
+        >>> from gasphys.tissues.sets import load
+        >>> model = load("us_navy_1957", compartments=["10"])
+        >>> air = Breath(np.array([0.21]), np.array([[0.79]]), np.array([np.nan]))
+        >>> held = equilibrium(model, np.array([101.325]))
+        >>> ten = Passage.of(model, np.array([10.0]), np.array([408.3705]), np.array([408.3705]), air)
+        >>> round(float(ten(held)[0, 0, 0]) * 33 / 101.325, 2)
+        65.57
+        """
+        zero = _zero_pressure(model, breath)
+        if model.kinetics != "exponential" or ((start - zero) * (end - zero) < 0.0).any():
+            return cls(model, duration, start, end, breath)
+        first, last = (inert_pressure(model, p, breath)[:, None, :] for p in (start, end))
+        # tissue_pressure without its state; equal lengths, as steps of a grid have, are computed once.
+        length, back = np.unique(duration, return_inverse=True)
+        x = -float(LN2) * length[:, None, None] / model.half_time
+        lost = np.expm1(x)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            gain = ramp_gain_from(x, lost)[back]
+        gain *= last - first
+        return cls(model, duration, start, end, breath, first, -lost[back], gain)
+
+    def take(self, lanes: NDArray[np.int64]) -> Passage:
+        """Return the passage of some of the scenarios.
+
+        Parameters
+        ----------
+        lanes : array of int
+            Their numbers.
+
+        Returns
+        -------
+        Passage
+            In that order.
+
+        Examples
+        --------
+        >>> import numpy as np
+        >>> from gasphys.tissues.sets import load
+        >>> two = np.array([1.0, 2.0])
+        >>> air = Breath(0.21 + 0.0 * two, 0.79 + 0.0 * two[:, None], np.nan * two)
+        >>> whole = Passage.of(load("us_navy_1957"), two, 100.0 * two, 100.0 * two, air)
+        >>> whole.take(np.array([1])).duration
+        array([2.])
+        """
+        breath = Breath(self.breath.oxygen[lanes], self.breath.inert[lanes], self.breath.setpoint[lanes])
+        inert, share, gain = (None if v is None else v[lanes] for v in (self.inert, self.share, self.gain))
+        minutes, start, end = (v[lanes] for v in (self.duration, self.start_pressure, self.end_pressure))
+        return Passage(self.model, minutes, start, end, breath, inert, share, gain)
+
+    def __call__(self, state: Array) -> Array:
+        """Return states ``(scenario, ..., compartment, inert_gas)`` after the stretch."""
+        extra = (1,) * (state.ndim - 3)
+
+        def wide(values: Array) -> Array:
+            return values.reshape(values.shape[0], *extra, *values.shape[1:]) if extra else values
+
+        if self.inert is None or self.share is None or self.gain is None:
+            breath = Breath(*map(wide, (self.breath.oxygen, self.breath.inert, self.breath.setpoint)))
+            minutes, start, end = map(wide, (self.duration, self.start_pressure, self.end_pressure))
+            return advance(self.model, state, minutes, start, end, breath)
+        out = wide(self.inert) - state
+        out *= wide(self.share)
+        out += wide(self.gain)
+        out += state
+        return np.asarray(out)
+
+
 # -- Many stretches -------------------------------------------------------------------------------
 
-#: Stretches in a block of the scan.
-_BLOCK = 64
+#: Stretches in a block of the scan; most numbers of one kind held in a scan of branches.
+_BLOCK, _HELD = 64, 2**20
 
 
 def along(model: TissueSet, state: Array, row: Stretches) -> Array:
@@ -585,6 +930,8 @@ def along(model: TissueSet, state: Array, row: Stretches) -> Array:
     """
     if model.kinetics == "exponential":
         return _scan(model, state, row)
+    if model.kinetics == "exponential_linear":
+        return _scan_linear(model, state, row)
     kernel = KERNELS[model.kinetics]
     states = [state]
     for k in range(row.duration.shape[-1]):
@@ -646,3 +993,106 @@ def _scan(model: TissueSet, state: Array, row: Stretches) -> Array:
     out[..., 0] = state
     out[..., 1:].reshape(*shape[:-1], count, block)[...] = np.moveaxis(total, 0, -1)
     return out[..., : n + 1]
+
+
+def _scan_linear(model: TissueSet, state: Array, row: Stretches) -> Array:
+    """Exponential-linear compartments: on either branch a stretch is affine, and branches change seldom.
+
+    Scenarios in groups, so that memory is bounded whatever their number.
+    """
+    lead = np.broadcast_shapes(state.shape[:-2], row.duration.shape[:-1], row.start_pressure.shape[:-1])
+    n, count = row.duration.shape[-1], state.shape[-2]
+    size = math.prod(lead)
+    held = np.broadcast_to(state[..., 0], (*lead, count)).reshape(size, count)
+    first, last = row.start_inert[..., 0], row.end_inert[..., 0]
+    columns = [
+        np.broadcast_to(v, (*lead, n)).reshape(size, n)
+        for v in (row.duration, first, last, row.start_pressure, row.end_pressure)
+    ]
+    out = np.empty((size, count, n + 1))
+    group = max(1, _HELD // max(1, n * count))
+    for k in range(0, size, group):
+        part = slice(k, k + group)
+        out[part] = _branches(model, held[part], *(v[part] for v in columns))
+    return out.reshape(*lead, count, 1, n + 1)
+
+
+def _branches(
+    model: TissueSet, p: Array, duration: Array, first: Array, last: Array, start: Array, end: Array
+) -> Array:
+    """Advance scenarios along their stretches, a block at a time on the branch a compartment is on.
+
+    Where a compartment leaves its branch within the block, its stretches are taken one by one; only those in
+    which it meets the threshold are solved for the instant.
+    """
+    n, block = duration.shape[-1], _BLOCK
+    half_time = model.half_time[:, 0]
+    t, first, last, start, end = (v.T[:, :, None] for v in (duration, first, last, start, end))
+    low, high = (_threshold(model, v) for v in (start, end))
+    begins, ends = _relative_rates(t, first, last, low, high, half_time)
+    share = np.asarray(uptake_share.raw(t, half_time))
+    gain = np.asarray(tissue_pressure.raw(0.0, first, last, t, half_time))
+    slope = np.asarray(linear_tissue_pressure.raw(0.0, first, last, low, high, t, half_time))
+    dips, bumps = (begins < 0.0) & (ends > 0.0), (begins > 0.0) & (ends < 0.0)
+    turns = dips | bumps
+    # Exponential branch from an empty tissue since the start of each block, all blocks in one vector.
+    empty = gain.copy()
+    for j in range(1, min(block, n)):
+        summed = empty[j::block]
+        before = empty[j - 1 :: block][: len(summed)]
+        summed += before - share[j::block] * before
+    out = np.empty((n + 1, *p.shape))
+    out[0] = p
+    for k in range(0, n, block):
+        here = slice(k, min(k + block, n))
+        linear = p > low[k]
+        # From the state at the block's start, as if the branch were kept.
+        straight = p + np.cumsum(slope[here], axis=0)
+        lost = np.expm1(-float(LN2) * np.cumsum(t[here], axis=0) / half_time)
+        bent = empty[here] + p + p * lost
+        after = np.where(linear, straight, bent)
+        before = np.concatenate([p[None], after[:-1]])
+        kept = np.where(
+            linear,
+            (before > low[here]) & (after >= high[here]) & ~dips[here],
+            (before <= low[here]) & (after <= high[here]) & ~bumps[here],
+        ).all(axis=0)
+        out[1:][here] = after
+        if not kept.all():
+            scenario, compartment = np.nonzero(~kept)
+            wide = (v[here][:, scenario, 0] for v in (t, first, last, low, high))
+            own = (begins, ends, share, gain, slope, turns)
+            columns = (*wide, *(v[here][:, scenario, compartment] for v in own))
+            q = p[scenario, compartment]
+            for j in range(len(after)):
+                q = _one_by_one(q, half_time[compartment], *(v[j] for v in columns))
+                out[k + j + 1, scenario, compartment] = q
+        p = out[here.stop]
+    return np.moveaxis(out, 0, -1)
+
+
+def _one_by_one(
+    p: Array,
+    half_time: Array,
+    t: Array,
+    first: Array,
+    last: Array,
+    low: Array,
+    high: Array,
+    begins: Array,
+    ends: Array,
+    share: Array,
+    gain: Array,
+    slope: Array,
+    turns: NDArray[np.bool_],
+) -> Array:
+    """Advance lanes by one stretch: on their branch, or across the threshold where they meet it."""
+    straight, bent = p + slope, p - share * p + gain
+    linear = p > low
+    result = np.where(linear, straight, bent)
+    kept = np.where(linear, straight >= high, bent <= high) & ~turns
+    if not kept.all():
+        some = ~kept
+        args = (v[some] for v in (p, t, first, last, low, high, half_time, begins, ends))
+        result[some] = _crossings(*args)[0]
+    return result

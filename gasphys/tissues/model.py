@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import json
 import os
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -14,9 +15,9 @@ from numpy.typing import NDArray
 from gasphys.errors import ExposureError, RangeError, ValidityError
 from gasphys.exposure import Exposure, Pieces
 from gasphys.policy import outside_validity, require_provenance, weakest
-from gasphys.quantities import CAUTION, attributes, quantity
-from gasphys.tissues.equations import gradient_fraction, limit_fraction
-from gasphys.tissues.kinetics import Stretches, along, breath_of, equilibrium, stretches
+from gasphys.quantities import attributes, dataset_attributes, quantity
+from gasphys.tissues.equations import gradient_fraction, limit_fraction, washout_threshold
+from gasphys.tissues.kinetics import Stretches, along, breath_of, equilibrium, last_branch, stretches
 from gasphys.tissues.sets import TissueSet, load
 from gasphys.tissues.tolerance import Judged, coefficients, judge, short_deep
 
@@ -80,7 +81,8 @@ def tensions(
     Notes
     -----
     Exact along straight pieces whatever their length; exposures joined give what they give one after the
-    other. In a batch, scenarios with a gas the model refuses are NaN. Limits of different models are not
+    other. In a batch, scenarios with a gas the model refuses are NaN; along dimensions that came into the
+    exposure chunked the result is lazy, a block of scenarios at a time. Limits of different models are not
     comparable in risk, and keeping one is no promise of anything.
 
     Examples
@@ -103,11 +105,8 @@ def tensions(
     flags = _check_pressures(chosen, pieces, exposure.surface_pressure)
     view = exposure.to_dataset(at=at)
     timed = "time" in view.dims
-    row, before = stretches(chosen, pieces, *(exposure.sample(at)[1:] if timed else ()))
     cells = (*shape, *chosen.half_time.shape)
     begin = np.broadcast_to(initial_state(chosen, initial, exposure), cells)
-    states = np.broadcast_to(along(chosen, begin, row), (*cells, row.duration.shape[-1] + 1))
-    sampled = states[..., before]
     surface = np.asarray(exposure.surface_pressure, dtype=float)
     pressure = _ambient(exposure, view, shape)
     blank = np.broadcast_to(short_deep(chosen, pieces, surface), shape)
@@ -121,22 +120,25 @@ def tensions(
         outside_validity(message)
         flags.append(message)
     without = refused | blank if rule is not None and rule.action == "refuse" else refused
-    run = _Run(
+    block = _Block(
         model=chosen,
-        exposure=exposure,
-        view=view,
-        dim="time" if timed else "point",
-        row=row,
-        before=before,
-        states=states,
-        sampled=sampled,
+        pieces=pieces,
+        sample=exposure.sample(at)[1:] if timed else None,
+        begin=begin,
         pressure=pressure,
-        judged=judge(chosen, sampled, pressure, surface, gradient),
+        surface=np.broadcast_to(surface, shape),
         gradient=float(gradient),
-        refused=refused,
-        without=without,
+        refused=np.broadcast_to(refused, shape),
+        without=np.broadcast_to(without, shape),
     )
-    ds = _dataset(run)
+    dim = "time" if timed else "point"
+    if exposure.chunks:
+        ds = _dataset(exposure, chosen, view, dim, float(gradient), in_blocks(exposure, _columns_of, block))
+    else:
+        run = block.run()
+        ds = _dataset(exposure, chosen, view, dim, float(gradient), run.columns())
+        if not exposure.dims:
+            _record(ds, run)
     ds.attrs["start"] = chosen.start if initial is None else "as given"
     if flags:
         ds.attrs["flags"] = "; ".join(flags)
@@ -144,25 +146,145 @@ def tensions(
 
 
 @dataclass(frozen=True)
-class _Run:
-    """One model over one exposure, before it becomes a Dataset.
+class _Block:
+    """What one model is asked about scenarios: arrays begin with the scenario dimensions.
 
-    ``refused`` marks scenarios whose gas the set does not take, ``without`` those that have no limits.
+    ``refused`` marks scenarios whose gas the set does not take, ``without`` those that have no limits;
+    ``sample`` are the instants wanted besides the boundaries, as :meth:`Exposure.sample` gives them.
     """
 
     model: TissueSet
-    exposure: Exposure
-    view: xr.Dataset
-    dim: str
+    pieces: Pieces
+    sample: tuple[NDArray[np.int64], Array] | None
+    begin: Array
+    pressure: Array
+    surface: Array
+    gradient: float
+    refused: NDArray[np.bool_]
+    without: NDArray[np.bool_]
+
+    def run(self) -> _Run:
+        """Run the model."""
+        row, before = stretches(self.model, self.pieces, *(self.sample or ()))
+        cells = (*self.begin.shape, row.duration.shape[-1] + 1)
+        states = np.broadcast_to(along(self.model, self.begin, row), cells)
+        sampled = states[..., before]
+        judged = judge(self.model, sampled, self.pressure, self.surface, self.gradient)
+        return _Run(self, row, before, states, sampled, judged)
+
+    def part(self, slices: tuple[slice, ...]) -> _Block:
+        """Return some of the scenarios."""
+
+        def cut(values: Any) -> Any:
+            return values[
+                tuple(s if n > 1 else slice(None) for s, n in zip(slices, values.shape, strict=False))
+            ]
+
+        p = self.pieces
+        numeric = {k: cut(v) for k, v in vars(p).items() if k != "fractions"}
+        pieces = Pieces(**numeric, fractions={k: cut(v) for k, v in p.fractions.items()})
+        arrays = ("begin", "pressure", "surface", "refused", "without")
+        return replace(self, pieces=pieces, **{k: cut(getattr(self, k)) for k in arrays})
+
+
+@dataclass(frozen=True)
+class _Run:
+    """One model over scenarios, before it becomes a Dataset."""
+
+    block: _Block
     row: Stretches
     before: NDArray[np.int64]
     states: Array
     sampled: Array
-    pressure: Array
     judged: Judged
-    gradient: float
-    refused: NDArray[np.bool_]
-    without: NDArray[np.bool_]
+
+    @property
+    def model(self) -> TissueSet:
+        return self.block.model
+
+    def columns(self) -> dict[str, NDArray[Any]]:
+        """Return the variables of the result that differ between scenarios."""
+        model, block, judged = self.model, self.block, self.judged
+        refused, without = block.refused, block.without
+        with np.errstate(invalid="ignore", divide="ignore"):
+            share = limit_fraction.raw(judged.total, judged.limit)
+            over = gradient_fraction.raw(judged.total, block.pressure[..., None, :], judged.limit)
+        if model.surfacing_only:
+            surface = block.surface[..., None, None]
+            over = np.where(block.pressure[..., None, :] <= surface * (1.0 + 1e-9), over, np.nan)
+        names = np.array([*model.compartments, ""], dtype=str)
+        times = np.append(model.half_time[:, 0], np.nan)
+        control = np.where(without[..., None], -1, judged.controlling)
+        first, last = self.states[..., 0], self.states[..., -1]
+        return {
+            "tissue_pressure": _covered(self.sampled, refused),
+            "ceiling_pressure": _covered(judged.ceiling, without),
+            "m_value": _covered(judged.limit, without),
+            "limit_fraction": _covered(share, without),
+            "gradient_fraction": _covered(over, without),
+            "controlling_compartment": names[control],
+            "controlling_half_time": times[control],
+            "initial": _covered(first, refused),
+            "final": _covered(last, refused),
+            "residual_pressure": _covered(last - equilibrium(model, block.surface), refused),
+        }
+
+
+def _columns_of(block: _Block) -> dict[str, NDArray[Any]]:
+    return block.run().columns()
+
+
+def in_blocks(exposure: Exposure, f: Callable[[Any], dict[str, Any]], block: Any) -> dict[str, Any]:
+    """Return lazy arrays, computed a block of scenarios at a time when they are asked for.
+
+    Parameters
+    ----------
+    exposure : Exposure
+        Its chunks say how the scenario dimensions are divided.
+    f : callable
+        Block to arrays by name that begin with the scenario dimensions.
+    block : object
+        All scenarios; its method ``part`` returns some of them.
+
+    Returns
+    -------
+    dict
+        Name to dask array.
+
+    Examples
+    --------
+    >>> import xarray as xr
+    >>> depth = xr.DataArray([18.0, 30.0, 40.0], dims="d", attrs={"units": "msw"}).chunk(d=2)
+    >>> tensions(Exposure.start("air").travel(depth=depth, minutes=2)).ceiling_pressure.chunks
+    ((2, 1), (2,))
+    """
+    import dask.array
+    from dask.delayed import delayed
+
+    da: Any = dask.array
+    sizes = [exposure.chunks.get(d, (len(exposure.coords[d]),)) for d in exposure.dims]
+    edges = [np.append(0, np.cumsum(s)) for s in sizes]
+    # One scenario tells names, kinds and the dimensions behind.
+    like = f(block.part((slice(0, 1),) * len(sizes)))
+    counts = tuple(len(s) for s in sizes)
+    found: dict[str, Any] = {k: np.empty(counts, dtype=object) for k in like}
+    for place in np.ndindex(counts):
+        slices = tuple(slice(int(e[i]), int(e[i + 1])) for e, i in zip(edges, place, strict=True))
+        later = delayed(f, pure=False)(block.part(slices))
+        for name, one in like.items():
+            shape = (*(s.stop - s.start for s in slices), *one.shape[len(counts) :])
+            found[name][place] = da.from_delayed(later[name], shape, dtype=one.dtype)
+    return {k: _joined(v, 0) for k, v in found.items()}
+
+
+def _joined(blocks: Any, axis: int) -> Any:
+    """Join a nested array of dask arrays, the outermost along the first dimension."""
+    import dask.array
+
+    da: Any = dask.array
+    if not isinstance(blocks, np.ndarray):
+        return blocks
+    return da.concatenate([_joined(b, axis + 1) for b in blocks], axis=axis)
 
 
 def _ambient(exposure: Exposure, view: xr.Dataset, shape: tuple[int, ...]) -> Array:
@@ -355,10 +477,9 @@ def _covered(values: Array, mask: NDArray[np.bool_]) -> Array:
     return np.where(mask.reshape(mask.shape + (1,) * (values.ndim - mask.ndim)), np.nan, values)
 
 
-def _dataset(run: _Run) -> xr.Dataset:
-    from gasphys import __version__
-
-    model, exposure, view, dim, judged = run.model, run.exposure, run.view, run.dim, run.judged
+def _dataset(
+    exposure: Exposure, model: TissueSet, view: xr.Dataset, dim: str, gradient: float, columns: dict[str, Any]
+) -> xr.Dataset:
     lead = exposure.dims
     provenance = weakest([model.provenance_of[g] for g in present(model, exposure.pieces())])
     more = {"provenance": provenance, "references": model.source}
@@ -375,66 +496,56 @@ def _dataset(run: _Run) -> xr.Dataset:
         ds["time"] = view["time"]
     given = view["ambient_pressure"]
     ds["ambient_pressure"] = (given.dims, given.values, attributes("ambient_pressure"))
-    with np.errstate(invalid="ignore", divide="ignore"):
-        share = limit_fraction.raw(judged.total, judged.limit)
-        over = gradient_fraction.raw(judged.total, run.pressure[..., None, :], judged.limit)
-    if model.surfacing_only:
-        surface = np.asarray(exposure.surface_pressure, dtype=float)[..., None, None]
-        over = np.where(run.pressure[..., None, :] <= surface * (1.0 + 1e-9), over, np.nan)
     gases, rows, cells = ("compartment", "inert_gas", dim), ("compartment", dim), ("compartment", "inert_gas")
-    for name, dims, values, blank in (
-        ("tissue_pressure", gases, run.sampled, run.refused),
-        ("ceiling_pressure", (dim,), judged.ceiling, run.without),
-        ("m_value", rows, judged.limit, run.without),
-        ("limit_fraction", rows, share, run.without),
-        ("gradient_fraction", rows, over, run.without),
+    held = attributes("tissue_pressure")
+    for name, dims, attrs in (
+        ("tissue_pressure", gases, attributes("tissue_pressure", **more)),
+        ("ceiling_pressure", (dim,), attributes("ceiling_pressure", **more) | {"gradient": gradient}),
+        ("m_value", rows, attributes("m_value", **more)),
+        ("limit_fraction", rows, attributes("limit_fraction", **more)),
+        ("gradient_fraction", rows, attributes("gradient_fraction", **more)),
+        ("half_time", cells, attributes("half_time", **more)),
+        (
+            "controlling_compartment",
+            (dim,),
+            {"long_name": "compartment that sets the ceiling; empty: none does"},
+        ),
+        (
+            "controlling_half_time",
+            (dim,),
+            attributes("half_time") | {"long_name": f"half-time in control, for {model.inert_gases[0]}"},
+        ),
+        ("initial", cells, held | {"long_name": "tissue pressure at the start, absolute"}),
+        ("final", cells, held | {"long_name": "tissue pressure at the end, absolute"}),
+        (
+            "residual_pressure",
+            cells,
+            {"units": "kPa", "long_name": "final less equilibrium on air at the surface"},
+        ),
     ):
-        ds[name] = ((*lead, *dims), _covered(values, blank), attributes(name, **more))
-    ds["ceiling_pressure"].attrs["gradient"] = run.gradient
-    ds["half_time"] = (cells, model.half_time.copy(), attributes("half_time", **more))
-    names = np.array([*model.compartments, ""], dtype=str)
-    times = np.append(model.half_time[:, 0], np.nan)
-    control = np.where(run.without[..., None], -1, judged.controlling)
-    text = {"long_name": "compartment that sets the ceiling; empty: none does"}
-    ds["controlling_compartment"] = ((*lead, dim), names[control], text)
-    text = {"long_name": f"half-time in control, for {model.inert_gases[0]}"}
-    ds["controlling_half_time"] = ((*lead, dim), times[control], attributes("half_time") | text)
-    rest = equilibrium(model, exposure.surface_pressure)
-    for name, values, meaning in (
-        ("initial", run.states[..., 0], "tissue pressure at the start"),
-        ("final", run.states[..., -1], "tissue pressure at the end"),
-        ("residual_pressure", run.states[..., -1] - rest, "final less equilibrium on air at the surface"),
-    ):
-        kept = attributes("tissue_pressure") | {"long_name": f"{meaning}, absolute"}
-        if name == "residual_pressure":
-            kept = {"units": "kPa", "long_name": meaning}
-        ds[name] = ((*lead, *cells), _covered(values, run.refused), kept)
-    if not lead:
-        _record(ds, run)
+        if name == "half_time":
+            ds[name] = (dims, model.half_time.copy(), attrs)
+        else:
+            ds[name] = ((*lead, *dims), columns[name], attrs)
     refs = model.references
     if model.kinetics == "exponential":
         refs = (*refs, "schreiner_kelley_1971")
-    ds.attrs = {
-        **{
-            k: v
-            for k, v in view.attrs.items()
-            if k in ("Conventions", "depth_unit", "water", "surface_pressure")
-        },
-        "title": f"inert gas in the tissues of the model {model.name}",
-        "source": f"gasphys {__version__}, tissues, model {model.name}"
-        + (f" variant {model.variant}" if model.variant else "")
-        + f", parameters {model.digest}",
-        "history": view.attrs["history"],
-        "references": "; ".join(dict.fromkeys(refs)),
-        "provenance": provenance,
-        "model": model.name,
-        "edition": model.edition,
-        "refuses": model.refuses,
-        "does_not_claim": model.does_not_claim,
+    kept = {k: v for k, v in view.attrs.items() if k in ("depth_unit", "water", "surface_pressure")}
+    variant = f" variant {model.variant}" if model.variant else ""
+    ds.attrs = dataset_attributes(
+        f"inert gas in the tissues of the model {model.name}",
+        f"tissues, model {model.name}{variant}, parameters {model.digest}",
+        history=[view.attrs["history"]],
+        references=refs,
+        **kept,
+        provenance=provenance,
+        model=model.name,
+        edition=model.edition,
+        refuses=model.refuses,
+        does_not_claim=model.does_not_claim,
         **({"evidence": model.evidence} if model.evidence else {}),
-        "limit_tested": " and ".join(t.replace("_", " ") for t in model.tested),
-        "comment": CAUTION,
-    }
+        limit_tested=" and ".join(t.replace("_", " ") for t in model.tested),
+    )
     return ds
 
 
@@ -458,9 +569,7 @@ def _record(ds: xr.Dataset, run: _Run) -> None:
     total = attributes("tissue_pressure") | {"long_name": "inert gas pressure in a compartment, all gases"}
     ds["total_tissue_pressure"] = (("compartment", "time"), np.ascontiguousarray(judged.total), total)
     if model.kinetics == "exponential":
-        # The straight stretch that ends at each instant; before the first there is none.
-        last = np.maximum(run.before - 1, 0)
-        length = np.where(run.before > 0, row.duration[last], 0.0)
+        last, length = _last_stretch(run)
         text = {"long_name": "length of the straight stretch that ends here"}
         ds["stretch_duration"] = ("time", length, attributes("duration") | text)
         ds["start_tissue_pressure"] = (
@@ -483,6 +592,10 @@ def _record(ds: xr.Dataset, run: _Run) -> None:
                 "half_time": "@half_time",
             },
         )
+    if model.kinetics == "exponential_linear":
+        equations |= _record_branch(ds, run)
+    if model.kinetics == "serial":
+        _record_serial(ds, run)
     if not (model.surfacing_only or (model.mixed_gas == "smallest" and len(model.inert_gases) > 1)):
         _, a, b = coefficients(model, run.sampled, time=True)
         for name, values in (("m_value_a", a), ("m_value_b", b)):
@@ -505,8 +618,78 @@ def _record(ds: xr.Dataset, run: _Run) -> None:
                 "tissue_pressure": "@controlling_tissue_pressure",
                 "m_value_a": "@controlling_a",
                 "m_value_b": "@controlling_b",
-                "gradient": run.gradient,
+                "gradient": run.block.gradient,
             },
         )
     for name, (equation, inputs) in equations.items():
         ds[name].attrs |= {"equation": f"tissues.{equation}", "inputs": json.dumps(inputs)}
+
+
+def _last_stretch(run: _Run) -> tuple[NDArray[np.int64], Array]:
+    """Return the stretch that ends at each instant and its length; before the first there is none."""
+    last = np.maximum(run.before - 1, 0)
+    return last, np.where(run.before > 0, run.row.duration[last], 0.0)
+
+
+def _record_branch(ds: xr.Dataset, run: _Run) -> dict[str, tuple[str, dict[str, Any]]]:
+    """Add where the branch begins on which each compartment stands, and name its equation."""
+    model, row = run.model, run.row
+    last, length = _last_stretch(run)
+    begins = row.start_pressure[last], row.start_inert[last, 0]
+    ends = row.end_pressure[last], row.end_inert[last, 0]
+    state = run.states[:, 0, last]
+    found = last_branch(model, state, length, begins[0], ends[0], begins[1], ends[1])
+    cells = ("compartment", "time")
+    words = np.array(["exponential", "linear"])[found.linear.astype(int)]
+    ds["branch"] = (cells, words, {"long_name": "branch of the model at this instant"})
+    text = "at the start of the present branch, within the last straight stretch"
+    for name, known, values, meaning in (
+        (
+            "stretch_duration",
+            "duration",
+            found.duration,
+            "time on the branch within the last stretch",
+        ),
+        ("start_tissue_pressure", "initial_tissue_pressure", found.state, f"tissue pressure {text}"),
+        ("start_inert_pressure", "start_inert_pressure", found.start_inert, f"arterial inert gas {text}"),
+        ("branch_start_pressure", "ambient_pressure", found.start_pressure, f"ambient pressure {text}"),
+    ):
+        ds[name] = (cells, np.ascontiguousarray(values), attributes(known) | {"long_name": meaning})
+    for name, known, at_end in (
+        ("end_inert_pressure", "end_inert_pressure", ends[1]),
+        ("branch_end_pressure", "ambient_pressure", ends[0]),
+    ):
+        ds[name] = ("time", at_end, attributes(known))
+    own = ("venous_po2", "venous_pco2", "gas_phase_overpressure", "water_vapor_pressure")
+    constants = {k: model.convention[k] for k in own}
+    for end, pressure in (("start", found.start_pressure), ("end", ends[0])):
+        inputs = {"ambient_pressure": f"@branch_{end}_pressure", **constants}
+        ds[f"{end}_threshold"] = (
+            cells if end == "start" else "time",
+            np.asarray(washout_threshold.raw(pressure, *constants.values())),
+            attributes(f"{end}_threshold", equation=washout_threshold.name, inputs=json.dumps(inputs)),
+        )
+    same = ("start_inert_pressure", "end_inert_pressure", "start_threshold", "end_threshold", "half_time")
+    inputs = {
+        "initial_tissue_pressure": "@start_tissue_pressure",
+        "duration": "@stretch_duration",
+        **{k: f"@{k}" for k in same},
+    }
+    return {"tissue_pressure": ("tissue_pressure | tissues.linear_tissue_pressure", inputs)}
+
+
+def _record_serial(ds: xr.Dataset, run: _Run) -> None:
+    """Add the last straight stretch, from which one instant can be integrated again."""
+    last, length = _last_stretch(run)
+    text = "of the straight stretch that ends here"
+    ds["stretch_duration"] = ("time", length, attributes("duration") | {"long_name": f"length {text}"})
+    for name, values in (("start", run.row.start_pressure), ("end", run.row.end_pressure)):
+        words = {"long_name": f"ambient pressure at the {name} {text}"}
+        ds[f"stretch_{name}_pressure"] = ("time", values[last], attributes("ambient_pressure") | words)
+    ds["start_tissue_pressure"] = (
+        ("compartment", "time"),
+        np.ascontiguousarray(run.states[:, 0, last]),
+        attributes("initial_tissue_pressure"),
+    )
+    numbers = {k: run.model.convention[k] for k in ("flow_coefficient", "flow_offset")}
+    ds["tissue_pressure"].attrs["serial_flow"] = json.dumps(numbers)

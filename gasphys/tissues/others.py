@@ -13,7 +13,7 @@ from gasphys.constants import BODY_VAPOR_PRESSURE, LN2, MMHG
 from gasphys.errors import ExposureError, RangeError, ValidityError
 from gasphys.exposure import Exposure
 from gasphys.policy import weakest
-from gasphys.quantities import CAUTION, attributes, quantity
+from gasphys.quantities import CAUTION, attributes, dataset_attributes, quantity
 from gasphys.tissues.equations import (
     RESTING_HALF_TIME,
     exercise_half_time,
@@ -108,7 +108,6 @@ def counterdiffusion(
     rise = np.where(never, -gap.sum(axis=-1), rise)
     cells = ("switch", "compartment")
     provenance = weakest(list(chosen.provenance_of.values()))
-    from gasphys import __version__
 
     return xr.Dataset(
         {
@@ -147,15 +146,13 @@ def counterdiffusion(
             "compartment": np.array(chosen.compartments, dtype=str),
             "inert_gas": np.array(chosen.inert_gases, dtype=str),
         },
-        attrs={
-            "Conventions": "CF-1.11",
-            "title": f"switches between inert gases, model {chosen.name}",
-            "source": f"gasphys {__version__}, tissues, model {chosen.name}, parameters {chosen.digest}",
-            "history": "; ".join(exposure.history) or "as given",
-            "references": chosen.source,
-            "provenance": provenance,
-            "comment": CAUTION,
-        },
+        attrs=dataset_attributes(
+            f"switches between inert gases, model {chosen.name}",
+            f"tissues, model {chosen.name}, parameters {chosen.digest}",
+            history=exposure.history,
+            references=[chosen.source],
+            provenance=provenance,
+        ),
     )
 
 

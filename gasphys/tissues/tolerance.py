@@ -27,11 +27,13 @@ ROUNDING = 1e-9
 
 def _gases(model: TissueSet, state: Array, time: bool) -> list[tuple[Array, Array, Array]]:
     """Return pressure, a and b of each gas, ``(..., compartment)`` or ``(..., compartment, time)``."""
-    axis = -2 if time else -1
     rows = []
     for g in range(len(model.inert_gases)):
-        a, b = model.a[:, g], model.b[:, g]
-        rows.append((np.take(state, g, axis=axis), a[:, None] if time else a, b[:, None] if time else b))
+        a, b = model.a[..., g], model.b[..., g]
+        if time:
+            rows.append((state[..., g, :], a[..., None], b[..., None]))
+        else:
+            rows.append((state[..., g], a, b))
     return rows
 
 
@@ -59,12 +61,18 @@ def coefficients(model: TissueSet, state: Array, *, time: bool = False) -> tuple
     >>> coefficients(load("buhlmann_1995_a", compartments=["4"]), state)[1].round(3)
     array([87.204])
     """
+    total, a, b = _weighed(model, state, time)
+    return total, np.broadcast_to(a, total.shape), np.broadcast_to(b, total.shape)
+
+
+def _weighed(model: TissueSet, state: Array, time: bool) -> tuple[Array, Array, Array]:
+    """Return summed pressure with a and b, these of their own shape."""
     (total, a, b), *others = _gases(model, state, time)
     for pressure, own_a, own_b in others:
         a = mixed_m_value_a.raw(total, pressure, a, own_a)
         b = mixed_m_value_b.raw(total, pressure, b, own_b)
         total = total + pressure
-    return total, np.broadcast_to(a, total.shape), np.broadcast_to(b, total.shape)
+    return total, a, b
 
 
 def _single(model: TissueSet, state: Array, time: bool) -> list[tuple[Array, Array, Array]]:
@@ -113,7 +121,7 @@ def m_values(model: TissueSet, state: Array, pressure: Any, *, time: bool = Fals
         for one in values[1:]:
             smallest = np.fmin(smallest, one)
         return rows[0][0], np.asarray(smallest)
-    total, a, b = coefficients(model, state, time=time)
+    total, a, b = _weighed(model, state, time)
     return total, np.asarray(m_value.raw(ambient, a, b))
 
 

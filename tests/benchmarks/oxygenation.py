@@ -17,12 +17,12 @@ from gasphys.schedules import treatment
 
 
 def best(call: Callable[[], object], repeats: int = 3) -> float:
-    """Return the shortest of several runs [s]."""
+    """Return the shortest of several runs [s of the processor]."""
     found = []
     for _ in range(repeats):
-        start = time.perf_counter()
+        start = time.process_time()
         call()
-        found.append(time.perf_counter() - start)
+        found.append(time.process_time() - start)
     return min(found)
 
 
@@ -39,7 +39,7 @@ def main() -> None:
         return blood.o2_content.pick(model="severinghaus_1979").raw(po2, 15.0, 7.4, 37.0)
 
     def venous() -> object:
-        return blood.mixed_venous_ph.raw(co2, ds.base_excess.values, 15.0, content, 15.0)
+        return blood.mixed_venous_ph.raw(co2, ds.base_excess.values, 15.0, content, 0.0)
 
     kernel = best(arterial) + 3.0 * best(venous)  # nominal and both ends of the band
     print(f"{len(ds.time)} instants, kernel                {1e3 * kernel:9.1f} ms")

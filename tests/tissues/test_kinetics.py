@@ -353,6 +353,8 @@ def test_exponential_linear_against_an_ode_with_events(seed: int, over: float) -
     [
         # Slow ascent on air: off the linear branch, and on it again near the surface.
         ("20", 0.21, 105.0, 103.0, 33.0, 240.0, 2),
+        # The same with the branch left for the middle of the way only.
+        ("20", 0.21, 100.7, 103.0, 33.0, 176.4, 2),
         # Very slow descent on a gas with hardly any oxygen: onto the linear branch, and off it again.
         ("5", 0.05, 28.0, 33.0, 100.0, 670.0, 2),
         ("5", 0.05, 30.0, 33.0, 100.0, 670.0, 1),
@@ -378,6 +380,79 @@ def test_a_compartment_may_cross_twice_within_one_ramp(
     changes = sum(x != y for x, y in itertools.pairwise([start > low - 4.3, *above]))
     assert changes == crossings
     np.testing.assert_allclose(parts, whole, rtol=1e-11)
+    # The same as one stretch of a row.
+    ends = np.array([[low, high]]) * FSW
+    inert = kinetics.inert_pressure(model, ends[0], breath)
+    one = kinetics.Stretches(np.array([minutes]), ends[:, 0], ends[:, 1], inert[:1], inert[1:])
+    np.testing.assert_allclose(along(model, state, one)[..., -1], whole, rtol=1e-12)
+
+
+@pytest.mark.parametrize("over", [0.0, 10.0])
+@settings(max_examples=40)
+@given(
+    n=st.integers(1, 200),
+    seed=st.integers(0, 2**32 - 1),
+    scale=st.sampled_from([1e-6, 0.2, 5.0, 300.0]),
+    swing=st.sampled_from([0.0, 1.0, 60.0]),
+)
+def test_the_scan_of_branches_is_the_kernel_stretch_by_stretch(
+    over: float, n: int, seed: int, scale: float, swing: float
+) -> None:
+    """Blocks taken on one branch, crossings and all, against one exact stretch after the other."""
+    name = "thalmann_vval18" if over == 0.0 else "thalmann_vval18m_reconstructed"
+    model = tissues.load(name)
+    rng = np.random.default_rng(seed)
+    pressure = 101.325 + np.abs(np.cumsum(rng.normal(0.0, swing, (3, n + 1)), axis=-1))
+    oxygen = rng.uniform(0.05, 0.9, (3, 1))
+    inert = np.maximum((1.0 - oxygen) * pressure - 1.5 * FSW, 0.0)[..., None]
+    row = kinetics.Stretches(
+        rng.exponential(scale, (3, n)), pressure[:, :-1], pressure[:, 1:], inert[:, :-1], inert[:, 1:]
+    )
+    state = rng.uniform(40.0, 400.0, (3, *model.half_time.shape))
+    found = along(model, state, row)
+    p = state
+    for k in range(n):
+        p = kinetics.KERNELS["exponential_linear"](model, p, *row.at(k))
+        np.testing.assert_allclose(found[..., k + 1], p, rtol=1e-11, atol=1e-11)
+
+
+@pytest.mark.parametrize("model", tissues.models())
+@settings(max_examples=15)
+@given(seed=st.integers(0, 2**32 - 1))
+def test_what_is_worked_out_once_is_the_plain_step(model: str, seed: int) -> None:
+    """Stays of several lengths and passages of several states, as planners ask, against advance."""
+    one = tissues.load(model)
+    rng = np.random.default_rng(seed)
+    lanes = 3
+    gases = len(one.inert_gases)
+    oxygen = np.full(lanes, 0.21) if one.air_only else rng.uniform(0.1, 0.9, lanes)
+    shares = rng.dirichlet(np.ones(gases), lanes)
+    setpoint = (
+        np.where(rng.uniform(size=lanes) < 0.3, 130.0, np.nan) if not one.air_only else np.full(3, np.nan)
+    )
+    breath = Breath(oxygen, (1.0 - oxygen)[:, None] * shares, setpoint)
+    state = rng.uniform(50.0, 300.0, (lanes, *one.half_time.shape))
+    low, high = rng.uniform(105.0, 500.0, (2, lanes))
+    minutes = rng.exponential(10.0, (lanes, 4))
+    rows = [Breath(oxygen[k], breath.inert[k], setpoint[k]) for k in range(lanes)]
+    stays = kinetics.stay(one, state, minutes, low, breath)
+    shared = kinetics.stay(one, state, minutes[:1], low, breath)
+    single = kinetics.stay(one, state, minutes[:, 0], low, breath)
+    passage = kinetics.Passage.of(one, minutes[:, 0], low, high, breath)
+    passed, several = passage(state), passage.take(np.array([2, 0]))(stays[[2, 0]])
+    for k in range(lanes):
+        np.testing.assert_allclose(single[k], stays[k, 0], rtol=1e-12)
+        plain = advance(one, state[k], minutes[k, 0], low[k], high[k], rows[k])
+        np.testing.assert_allclose(passed[k], plain, rtol=1e-11)
+        for j in range(4):
+            plain = advance(one, state[k], minutes[k, j], low[k], low[k], rows[k])
+            np.testing.assert_allclose(stays[k, j], plain, rtol=1e-11)
+            plain = advance(one, state[k], minutes[0, j], low[k], low[k], rows[k])
+            np.testing.assert_allclose(shared[k, j], plain, rtol=1e-11)
+    for place, k in enumerate((2, 0)):
+        for j in range(4):
+            plain = advance(one, stays[k, j], minutes[k, 0], low[k], high[k], rows[k])
+            np.testing.assert_allclose(several[place, j], plain, rtol=1e-11)
 
 
 def test_worked_values_of_the_linear_branch() -> None:

@@ -11,7 +11,7 @@ import gasphys as gp
 from gasphys import Exposure, tissues
 from gasphys.errors import ExposureError, RangeError, ValidityError
 
-from .test_published_times import read
+from .printed import read
 
 PSI = 6.894757293168361
 

@@ -14,8 +14,8 @@ from gasphys.errors import InputFileError, UnknownNameError, ValidityError
 from gasphys.policy import PROVENANCE
 from gasphys.tissues.sets import _Reader, _shipped
 
+from .printed import read
 from .sets import THREE_GASES
-from .test_published_times import read
 
 FSW = 101.325 / 33.0
 NAMES = (
@@ -196,6 +196,71 @@ def test_ratio_models_have_no_intercept() -> None:
     )
 
 
+def _column(name: str, key: str) -> np.ndarray:
+    return np.array([float(row[key]) for row in read(name)])
+
+
+def test_every_number_of_the_sets_is_that_of_its_table() -> None:
+    """Row by row and column by column, typed a second time in the tables."""
+
+    def same(found: np.ndarray, name: str, key: str, unit: float = 1.0) -> None:
+        np.testing.assert_allclose(found / unit, _column(name, key), rtol=1e-12)
+
+    for letter in "abc":
+        for k, row in enumerate(read("buhlmann_zhl16")):
+            one = tissues.load(f"buhlmann_1995_{letter}", compartments=[row["compartment"]])
+            for found, keys, unit in (
+                (one.half_time[0], ("t_half_N2_min", "t_half_He_min"), 1.0),
+                (one.a[0], (f"a_N2_{letter.upper()}_bar", "a_He_bar"), 100.0),
+                (one.b[0], ("b_N2", "b_He"), 1.0),
+            ):
+                np.testing.assert_allclose(found / unit, [float(row[key]) for key in keys], rtol=1e-12)
+            other = tissues.load("buhlmann_1995_a", compartments=[row["compartment"]], variant="helium_2_65")
+            assert other.half_time[0, 1] == float(row["t_half_He_min_print2_N2_over_2p65"]), k
+    l12 = tissues.load("buhlmann_1983")
+    same(l12.half_time[:, 0], "buhlmann_zhl12", "t_half_N2_min")
+    same(l12.a[:, 0], "buhlmann_zhl12", "a_N2_bar", 100.0)
+    same(l12.b[:, 0], "buhlmann_zhl12", "b_N2")
+    rogers = tissues.load("rogers_powell_1994")
+    same(rogers.half_time[:, 0], "rogers_powell1994", "t_half_min")
+    same(rogers.a[:, 0], "rogers_powell1994", "M0_N2_fsw", FSW)
+    navy = tissues.load("us_navy_1957")
+    same(navy.half_time[:, 0], "usn1957_compartments", "t_half_min")
+    same(1.0 / navy.b[:, 0], "usn1957_compartments", "dM_fsw_per_fsw")
+    workman = tissues.load("workman_1965")
+    surfacing = tissues.m_value.raw(101.325, workman.a, workman.b)
+    for g, gas in enumerate(("N2", "He")):
+        same(workman.half_time[:, g], "workman1965", "t_half_min")
+        same(surfacing[:, g], "workman1965", f"M0_{gas}_fsw", FSW)
+        same(1.0 / workman.b[:, g], "workman1965", f"dM_{gas}")
+    haldane = tissues.load("boycott_1908")
+    same(haldane.half_time[:, 0], "haldane1908", "t_half_min")
+    same(1.0 / haldane.b[:, 0], "haldane1908", "max_ratio_total_pressure")
+    # 2:1 on total pressure is 1.58:1 on nitrogen.
+    same(0.79 / haldane.b[:, 0], "haldane1908", "equiv_N2_over_ambient")
+    constants = {row["symbol"]: float(row["value_fsw"]) for row in read("thalmann_constants")}
+    for name, overpressure in (
+        ("thalmann_vval18", "PBOVP (VVal-18)"),
+        ("thalmann_vval18m_reconstructed", "PBOVP (VVal-18M)"),
+    ):
+        one = tissues.load(name)
+        for key, symbol in (
+            ("arterial_pco2", "PACO2"),
+            ("water_vapor_pressure", "PH2O"),
+            ("venous_pco2", "PVCO2"),
+            ("venous_po2", "PVO2"),
+            ("gas_phase_overpressure", overpressure),
+        ):
+            assert one.convention[key] / FSW == pytest.approx(constants[symbol], rel=1e-12)
+        assert one.half_time[:, 0].tolist() == [5.0, 10.0, 20.0, 40.0, 80.0, 120.0, 160.0, 200.0, 240.0]
+    serial = tissues.load("kidd_stubbs_1983")
+    assert serial.convention["flow_coefficient"] * 10.0 == pytest.approx(0.0002596, rel=1e-12)
+    assert serial.convention["flow_offset"] / 10.0 == pytest.approx(83.67, rel=1e-12)
+    # The multiplier of the rate is 1 in every compartment, alveolar and ambient O2 the same: not in the code.
+    assert constants["SDR"] == 1.0
+    assert constants["AMBAO2"] == 0.0
+
+
 def test_conventions_give_the_printed_start_tensions() -> None:
     """At 760 mmHg and 0.79: exchange ratio 0.9 566.8, dry 600.4, Thalmann 565.9 mmHg [computed]."""
     mmhg = 0.133322387415
@@ -292,6 +357,17 @@ CHANGES = [
     ('alveolar = "schreiner"', 'alveolar = "thalmann"', "convention.alveolar", "go together"),
     ("[start]", "[integrity]\ncompartments = 4\n[start]", "integrity.compartments", "3 found"),
     ("[start]", "[integrity]\nsum_a = { N2 = 2.14 }\n[start]", "integrity.sum_a", "mistyped"),
+    ("[start]", "[integrity]\nsum_a = { Ne = 2.1 }\n[start]", "integrity.sum_a", "Ne"),
+    ('unit = "bar"', "unit = 3", "unit", "wrong kind"),
+    ('unit = "bar"', 'unit = "bar"\nair_only = 1', "air_only", "wrong kind"),
+    ('unit = "bar"', 'unit = "bar"\ncounted_as = { Ne = "H2" }', "counted_as", "H2"),
+    ('unit = "bar"', 'unit = "bar"\nbased_on = "buhlmann"', "based_on", "nearest: 'buhlmann_"),
+    ('inert_gases = ["N2", "He", "Ar"]', 'inert_gases = ["total"]', "inert_gases", "go together"),
+    ('kinetics = "exponential"', 'kinetics = "serial"', "kinetics", "driven by the ambient pressure"),
+    ("respiratory_exchange_ratio = 0.9", "exchange_ratio = 0.9", "exchange_ratio", "respiratory_exchange"),
+    ("Ar = { half_time = 4.0, a = 1.2,", "#", "compartment.fast.Ar", "missing"),
+    ('b = 0.5, provenance = "computed"', 'b = 0.5, provenance = "known"', "fast.N2.provenance", "memory_low"),
+    ("[start]", '[short_deep]\ndepth = "3 bar"\naction = "refuse"\n[start]', "short_deep", "bottom_time"),
 ]
 
 
@@ -338,3 +414,58 @@ def test_weaker_provenance_is_refused() -> None:
             tissues.no_stop_time(18.0, "air", "thalmann_vval18m_reconstructed")
     assert tissues.tensions(air, "buhlmann_1995_a").attrs["provenance"] == "memory_high"
     assert tissues.tensions(trimix, "buhlmann_1995_a").attrs["provenance"] == "memory_medium"
+
+
+def test_other_files_that_cannot_be_meant(tmp_path: Path) -> None:
+    path = tmp_path / "wrong.toml"
+
+    def read_again(text: str) -> None:
+        path.write_text(text, encoding="utf-8")
+        tissues.load(path)
+
+    head = THREE_GASES[: THREE_GASES.index("[compartment.fast]")]
+    with pytest.raises(InputFileError, match="compartment: there is none"):
+        read_again(head + "[compartment]\n")
+    linear = THREE_GASES.replace('"exponential"', '"exponential_linear"').replace('"schreiner"', '"thalmann"')
+    with pytest.raises(InputFileError, match="tracks one gas"):
+        read_again(linear)
+    ordered = THREE_GASES.replace('unit = "bar"', 'unit = "bar"\nordered = true')
+    read_again(ordered)
+    with pytest.raises(InputFileError, match="not: half_time rises from fast"):
+        read_again(ordered.replace("half_time = 37.0", "half_time = 2.0"))
+    # What is shipped must name its source and give its sums.
+    for old, new, match in (
+        ('source = "made up"', 'source = "nobody"', "unknown source 'nobody'"),
+        ('source = "made up"', 'source = "usn_1957"', "integrity: is missing"),
+    ):
+        with pytest.raises(InputFileError, match=match):
+            _Reader("own", THREE_GASES.replace(old, new), "own.toml", shipped=True).read(None, "")
+
+
+def test_a_set_is_read_once_and_shown() -> None:
+    one = tissues.load("workman_1965")
+    assert tissues.load(one) is one
+    assert repr(one) == "<TissueSet workman_1965: 9 compartments, N2, He>"
+    with pytest.raises(UnknownNameError, match="give its name"):
+        tissues.load(one, compartments=["5"])
+    with pytest.raises(UnknownNameError, match="give its name"):
+        tissues.load(one, variant="exchange_ratio_0_9")
+
+
+def test_a_set_without_limits_holds_tensions_only(tmp_path: Path) -> None:
+    """Uptake can be followed; nothing that needs a limit is answered."""
+    path = tmp_path / "no_limits.toml"
+    plain = re.sub(r", a = [\d.]+, b = [\d.]+", "", THREE_GASES)
+    path.write_text(plain.replace('form = "a_b"\ntested = ["before_leaving"]', ""), encoding="utf-8")
+    dive = Exposure.start("air").travel(depth=30, minutes=2).stay(20)
+    ds = tissues.tensions(dive, path)
+    assert np.isfinite(ds.tissue_pressure).all()
+    assert np.isnan(ds.ceiling_pressure).all()
+    assert set(ds.controlling_compartment.values) == {""}
+    for ask in (
+        lambda: tissues.no_stop_time(30.0, "air", path),
+        lambda: tissues.time_to_fly(dive, path, altitude=2400.0),
+        lambda: gp.ascent.plan(dive, model=path),
+    ):
+        with pytest.raises(ValidityError, match="no limit"):
+            ask()

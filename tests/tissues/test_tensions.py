@@ -193,11 +193,54 @@ def test_a_number_is_explained_by_its_equations(model: str) -> None:
             found = gp.explain(ds, name, time=time, compartment=compartment)
             assert found.value == pytest.approx(found.stored, rel=1e-12)
             assert found.steps
-        if model != "thalmann_vval18":
-            gas_name = str(ds.inert_gas[0].values)
-            found = gp.explain(ds, "tissue_pressure", time=time, compartment=compartment, inert_gas=gas_name)
-            assert found.value == pytest.approx(found.stored, rel=1e-12)
-            assert "tissues.tissue_pressure" in str(found)
+        gas_name = str(ds.inert_gas[0].values)
+        found = gp.explain(ds, "tissue_pressure", time=time, compartment=compartment, inert_gas=gas_name)
+        assert found.value == pytest.approx(found.stored, rel=1e-12)
+        assert "tissue_pressure" in str(found.steps[-1])
+
+
+@pytest.mark.parametrize("model", ["thalmann_vval18", "thalmann_vval18m_reconstructed"])
+def test_exponential_linear_numbers_are_explained_on_either_branch(model: str) -> None:
+    """Each instant from where its branch begins, thresholds included; both branches occur."""
+    down = Exposure.start("air", depth_unit="fsw").travel(depth=90, rate=75).stay(60)
+    up = down.travel(depth=20, rate=30).stay(25).travel(depth=0, rate=2).stay(400)
+    ds = tissues.tensions(up, model, at=np.linspace(1.0, 450.0, 40))
+    assert set(np.unique(ds.branch.values)) == {"exponential", "linear"}
+    seen = set()
+    for time in ds.time.values:
+        for compartment in ds.compartment.values:
+            found = gp.explain(ds, "tissue_pressure", time=time, compartment=compartment, inert_gas="N2")
+            assert found.value == pytest.approx(found.stored, rel=1e-11)
+            branch = str(ds.branch.sel(time=time, compartment=compartment).values)
+            assert (".linear_tissue_pressure" in str(found)) == (branch == "linear")
+            assert ("tissues.washout_threshold" in str(found)) == (branch == "linear")
+            p = float(ds.tissue_pressure.sel(time=time, compartment=compartment, inert_gas="N2"))
+            # Linear above the threshold, exponential below it, whichever way it came there.
+            rest = p - float(ds.end_threshold.sel(time=time))
+            assert abs(rest) < 1e-6 or (rest > 0.0) == (branch == "linear")
+            seen.add(branch)
+    assert seen == {"exponential", "linear"}
+
+
+def test_serial_numbers_are_explained_by_the_last_stretch() -> None:
+    ds = tissues.tensions(dive(), "kidd_stubbs_1983", at=[3.0, 12.5])
+    for time in ds.time.values:
+        for compartment, flows in (("1", 2), ("2", 2), ("4", 1)):
+            found = gp.explain(ds, "tissue_pressure", time=time, compartment=compartment, inert_gas="total")
+            assert found.value == pytest.approx(found.stored, rel=1e-10)
+            assert len(found.steps) == flows
+            assert "tissues.slip_flow" in str(found)
+        found = gp.explain(ds, "ceiling_pressure", time=time)
+        assert found.value == pytest.approx(found.stored, rel=1e-12)
+    # What flows in less what flows out is the rate of the stored pressures.
+    fine = tissues.tensions(dive(), "kidd_stubbs_1983", at=[10.0, 10.001])
+    found = gp.explain(fine, "tissue_pressure", time=10.0, compartment="2", inert_gas="total")
+    inflow, outflow = (float(step.result) for step in found.steps)
+    two = fine.tissue_pressure.sel(compartment="2", inert_gas="total")
+    rate = (float(two.sel(time=10.001)) - float(two.sel(time=10.0))) / 0.001
+    assert inflow - outflow == pytest.approx(rate, rel=1e-3)
+    with pytest.raises(gp.errors.GasphysError, match="give compartment="):
+        gp.explain(ds, "tissue_pressure", time=3.0, inert_gas="total")
 
 
 # -- Start and altitude -----------------------------------------------------------------------------
@@ -328,3 +371,54 @@ def test_times_that_differ_between_scenarios() -> None:
     assert ds.time.dims == ("stay", "point")
     state = equilibrium(tissues.load("buhlmann_1995_c"), 101.325)
     np.testing.assert_array_equal(ds.initial.isel(stay=0), state)
+
+
+# -- Many scenarios, a block at a time --------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    "model", ["buhlmann_1995_c", "thalmann_vval18", "kidd_stubbs_1983", "rogers_powell_1994"]
+)
+def test_chunked_scenarios_stay_lazy(model: str) -> None:
+    dask = pytest.importorskip("dask")
+    depth = xr.DataArray(np.linspace(10.0, 40.0, 7), dims="depth", attrs={"units": "msw"})
+    stay = xr.DataArray([5.0, 20.0, 45.0], dims="stay", attrs={"units": "min"})
+
+    def along(depth: Any, stay: Any) -> Exposure:
+        return (
+            Exposure.start("air").travel(depth=depth, minutes=2.0).stay(stay).travel(depth=0.0, minutes=4.0)
+        )
+
+    def refuse(*_: object, **__: object) -> None:
+        raise AssertionError("computed")
+
+    with gp.validity("ignore"):
+        expected = tissues.tensions(along(depth, stay), model)
+        one = along(depth.chunk(depth=3), stay.chunk(stay=2))
+        assert one.chunks == {"depth": (3, 3, 1), "stay": (2, 1)}
+        with dask.config.set(scheduler=refuse):
+            ds = tissues.tensions(one, model)
+        assert ds.tissue_pressure.chunks is not None
+        assert ds.tissue_pressure.chunks[:2] == ((3, 3, 1), (2, 1))
+        xr.testing.assert_identical(ds.compute(), expected)
+        again = tissues.tensions(Exposure.from_dataset(along(depth, stay).to_dataset().chunk(depth=2)), model)
+        assert again.final.chunks is not None
+        final = again.final.compute().transpose(*expected.final.dims)
+        np.testing.assert_allclose(final.values, expected.final.values, rtol=1e-12)
+
+
+def test_a_refused_scenario_of_a_lazy_batch_is_blank() -> None:
+    pytest.importorskip("dask")
+    gases = xr.DataArray(
+        [[0.21, 0.79, 0.0], [0.21, 0.40, 0.39], [0.32, 0.68, 0.0]],
+        dims=("mix", "gas"),
+        coords={"mix": ["air", "trimix", "nitrox"], "gas": ["O2", "N2", "He"]},
+        attrs={"units": "1"},
+    ).chunk(mix=1)
+    batch = Exposure.start(gases).travel(depth=20.0, minutes=2.0).stay(20.0)
+    with pytest.warns(ValidityWarning, match="1 of 3 scenarios are nan"):
+        ds = tissues.tensions(batch, "us_navy_1957")
+    assert ds.final.chunks is not None
+    assert np.isnan(ds.sel(mix="trimix").final.values).all()
+    alone = tissues.tensions(Exposure.start("air").travel(depth=20.0, minutes=2.0).stay(20.0), "us_navy_1957")
+    np.testing.assert_array_equal(ds.sel(mix="air").tissue_pressure.values, alone.tissue_pressure.values)

@@ -12,11 +12,11 @@ from hypothesis import strategies as st
 
 import gasphys as gp
 from gasphys import Exposure, tissues
-from gasphys.errors import ExposureError, RangeError, UnknownNameError, ValidityError
+from gasphys.errors import ExposureError, RangeError, UnitError, UnknownNameError, ValidityError
 from gasphys.tissues.equations import time_to_tissue_pressure
 from gasphys.tissues.tolerance import m_values
 
-from .test_published_times import read
+from .printed import read
 
 FSW = 101.325 / 33.0
 
@@ -265,3 +265,74 @@ def test_equivalent_depths_of_the_printed_altitude_table() -> None:
             printed = next(s for s in steps if s >= equivalent - 1e-9)
             wrong += printed != int(row[f"alt_{feet}ft"])
     assert wrong == 0
+
+
+def test_more_wrong_input_is_said() -> None:
+    f = tissues.no_stop_time
+    pressure = xr.DataArray([90.0, 101.325], dims="lake", attrs={"units": "kPa"})
+    with pytest.raises(UnitError, match="must be one each"):
+        f(18.0, "air", surface_pressure=pressure)
+    with pytest.raises(UnknownNameError, match="water"):
+        f(18.0, "air", depth_unit="m", water="salt")
+    with pytest.raises(UnknownNameError, match="depth unit"):
+        f("3 bar", "air")
+    deeper = pytest.warns(gp.ValidityWarning, match="250 fsw is deeper than the model was made for")
+    with pytest.warns(gp.ValidityWarning, match="doubtful"), deeper:
+        f(250.0, "air", "thalmann_vval18", depth_unit="fsw")
+    depth = xr.DataArray([20.0, 30.0], dims="d", attrs={"units": "msw"})
+    several = Exposure.start("air").travel(depth=depth, minutes=2.0)
+    with pytest.raises(ExposureError, match="one scenario"):
+        tissues.time_to_fly(several, altitude=2400.0)
+
+
+def test_a_window_that_closes_within_the_search_is_found() -> None:
+    """Two gases: the sum may rise for a while after a switch. Brute force in steps of a second."""
+    one = tissues.load("buhlmann_1995_c")
+    before = Exposure.start("air").travel(depth=30, rate=20).stay(16.0).travel(depth=12.0, rate=9.0)
+    loaded = tissues.tensions(before).final
+    for depth in (12.0, 15.0, 18.0):
+        found = tissues.no_stop_time(depth, "heliox 21/79", initial=loaded)
+        stay = Exposure.start("heliox 21/79", pressure=101.325 + 10.0 * depth).stay(120.0)
+        times = np.arange(0.0, 120.0, 1.0 / 60.0)
+        ds = tissues.tensions(stay, initial=loaded, at=times)
+        states = np.moveaxis(ds.tissue_pressure.values, -1, 0)
+        total, limit = m_values(one, states, np.full(len(states), 101.325))
+        over = (total - limit).max(axis=-1) > 0.0
+        first = float(ds.time[np.argmax(over)]) if over.any() else np.inf
+        assert found == pytest.approx(first, abs=1.0 / 60.0 + 1e-9)
+    full = tissues.tensions(Exposure.start("air", pressure=500.0).stay(1000.0)).final
+    assert tissues.no_stop_time(10.0, "trimix 21/35", initial=full) == 0.0
+
+
+# -- Up to altitude ---------------------------------------------------------------------------------
+
+
+def test_going_up_after_the_wait_is_within_the_limit_and_before_it_beyond() -> None:
+    wait = float(tissues.time_to_fly(long_dive(), pressure=65.0).wait)
+    for minutes, beyond in ((wait, False), (wait - 5.0, True)):
+        flight = long_dive().stay(minutes).travel(pressure=65.0, minutes=1e-6)
+        share = tissues.tensions(flight).limit_fraction.isel(time=-1).max()
+        assert bool(share > 1.0 + 1e-8) is beyond
+        # The ceiling says the same, as a pressure.
+        ceiling = float(tissues.tensions(flight).ceiling_pressure[-1])
+        assert (ceiling > 65.0 + 1e-6) is beyond
+
+
+def test_group_on_arrival_at_altitude() -> None:
+    """Air excess of the 120-min tissue over the new ambient, rescaled to sea level, in steps of 2 fsw.
+
+    Inferred from the printed table: at 0.65 of sea level 8.885, so group 9, I [computed].
+    """
+    lake = Exposure.start("air", surface_pressure=0.65 * 101.325).stay(1.0)
+    arrived = tissues.tensions(lake, "us_navy_1957", initial="1 atm")
+    excess = (arrived.initial - tissues.tensions(lake, "us_navy_1957").initial).sel(compartment="120")
+    assert excess.item() / 0.79 / 0.65 / FSW / 2.0 == pytest.approx(8.885, abs=5e-4)
+
+
+def test_a_plan_at_altitude_asks_for_more_than_at_sea_level() -> None:
+    found = [
+        gp.ascent.plan(Exposure.start("air", surface_pressure=p).travel(depth=36.0, rate=20.0).stay(20.0))
+        for p in (101.325, 85.0, 65.0)
+    ]
+    assert found[0].ascent_time < found[1].ascent_time < found[2].ascent_time
+    assert found[2].exposure.pressure == pytest.approx(65.0)
