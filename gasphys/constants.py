@@ -565,3 +565,177 @@ LN2 = _constant(
     "computed",
     exact=True,
 )
+USN_INNER_LOCK_FILLS = _constant(
+    "USN_INNER_LOCK_FILLS",
+    5.0,
+    "1",
+    "n_i",
+    "free air over the inner lock's volume, once to 165 fsw",
+    "usn_rev4",
+    "secondary",
+)
+USN_OUTER_LOCK_FILLS = _constant(
+    "USN_OUTER_LOCK_FILLS",
+    10.0,
+    "1",
+    "n_o",
+    "free air over the outer lock's volume, twice to 165 fsw",
+    "usn_rev4",
+    "secondary",
+)
+USN_AIR_STOCK = _constant(
+    "USN_AIR_STOCK",
+    45390.0 * UNITS["ft3"].factor / UNITS["L"].factor,
+    "L",
+    "V_{TT4}",
+    "free air for one Treatment Table 4, 45 390 standard cubic feet",
+    "usn_rev4",
+    "secondary",
+)
+PI = _constant(
+    "PI",
+    3.141592653589793,
+    "1",
+    r"\pi",
+    "circumference over diameter",
+    "common_practice",
+    "computed",
+    exact=True,
+)
+SECONDS_PER_MINUTE = _constant(
+    "SECONDS_PER_MINUTE",
+    UNITS["min"].factor / UNITS["s"].factor,
+    "s/min",
+    r"s_{min}",
+    "seconds in a minute",
+    "si_brochure_2019",
+    "read",
+    exact=True,
+)
+ENERGY_OF_O2 = _constant(
+    "ENERGY_OF_O2",
+    20.1,
+    "J/mL",
+    r"e_{O_2}",
+    "energy of a milliliter of O2 used, STPD",
+    "respiratory_muscle_efficiency",
+    "memory_medium",
+)
+WARKANDER_SURFACE = _constant(
+    "WARKANDER_SURFACE", 2.49, "kPa", r"w_0", "external work for a liter at the surface, limit",
+    "warkander_2007", "read",
+)  # fmt: skip
+WARKANDER_SLOPE = _constant(
+    "WARKANDER_SLOPE", 0.016, "kPa", r"w_z", "fall of the limit of external work for each msw",
+    "warkander_2007", "read",
+)  # fmt: skip
+MORRISON_REIMERS_REST = _constant(
+    "MORRISON_REIMERS_REST", 0.5, "J/L", r"w_r", "external work for a liter without ventilation, limit",
+    "morrison_reimers_1982", "memory_medium",
+)  # fmt: skip
+MORRISON_REIMERS_PREFERRED = _constant(
+    "MORRISON_REIMERS_PREFERRED", 0.02, "J*min/L^2", r"w_p", "rise of the preferred limit with ventilation",
+    "morrison_reimers_1982", "memory_medium",
+)  # fmt: skip
+MORRISON_REIMERS_MAXIMUM = _constant(
+    "MORRISON_REIMERS_MAXIMUM", 0.04, "J*min/L^2", r"w_m", "rise of the highest limit with ventilation",
+    "morrison_reimers_1982", "memory_medium",
+)  # fmt: skip
+LATENT_HEAT = _constant(
+    "LATENT_HEAT", 2420.0, "J/g", r"h_{fg}", "heat that evaporates a gram of water in the airways",
+    "respiratory_heat_texts", "secondary",
+)  # fmt: skip
+EXPIRED_WARMTH = _constant(
+    "EXPIRED_WARMTH", 34.8, "degC", r"T_{ref}", "temperature of the rule of minimum inspired temperature",
+    "piantadosi_1980", "memory_medium",
+)  # fmt: skip
+EXPIRED_BASE = _constant(
+    "EXPIRED_BASE", 24.0, "degC", r"T_{e0}", "expired temperature for gas of 0 degC",
+    "hyperbaric_heat_work", "memory_medium",
+)  # fmt: skip
+EXPIRED_SLOPE = _constant(
+    "EXPIRED_SLOPE", 0.32, "1", r"b_e", "rise of expired with inspired temperature",
+    "hyperbaric_heat_work", "memory_medium",
+)  # fmt: skip
+PI = _constant(
+    "PI",
+    3.141592653589793,
+    "1",
+    r"\pi",
+    "circumference of a circle over its diameter",
+    "common_practice",
+    "computed",
+    exact=True,
+)
+VPM_SURFACE_TENSION = _constant(
+    "VPM_SURFACE_TENSION",
+    0.0179,
+    "N/m",
+    r"\gamma",
+    "surface tension of the skin of a nucleus, 17.9 dyn/cm",
+    "yount_hoffman_1986",
+    "memory_high",
+)
+VPM_SKIN_COMPRESSION = _constant(
+    "VPM_SKIN_COMPRESSION",
+    0.257,
+    "N/m",
+    r"\gamma_c",
+    "crumbling compression of the skin of a nucleus, 257 dyn/cm",
+    "yount_hoffman_1986",
+    "memory_high",
+)
+VPM_REGENERATION_TIME = _constant(
+    "VPM_REGENERATION_TIME",
+    20160.0,
+    "min",
+    r"\tau_R",
+    "time constant in which a nucleus heals",
+    "yount_hoffman_1986",
+    "memory_high",
+)
+VPM_CRITICAL_VOLUME = _constant(
+    "VPM_CRITICAL_VOLUME",
+    7500.0 * float(FSW),
+    "kPa*min",
+    r"\lambda",
+    "critical-volume parameter, 7500 fsw min at 33 fsw/atm; 7180 in a later paper of the authors",
+    "yount_hoffman_1986",
+    "memory_high",
+)
+VPM_ONSET = _constant(
+    "VPM_ONSET",
+    8.2 * float(ATMOSPHERE),
+    "kPa",
+    r"\Delta p^*",
+    "crushing gradient at which the skin of a nucleus closes, 8.2 atm in gelatin",
+    "yount_1979",
+    "memory_high",
+)
+VPM_OTHER_GASES = _constant(
+    "VPM_OTHER_GASES",
+    102.0 * float(MMHG),
+    "kPa",
+    r"p_{other}",
+    "other active gases in tissue, 102 mmHg; what they are made of is not known",
+    "yount_lally_1980",
+    "memory_medium",
+)
+VPM_NITROGEN_RADIUS = _constant(
+    "VPM_NITROGEN_RADIUS",
+    0.8,
+    "um",
+    r"r_{0,N_2}",
+    "initial critical radius of nuclei, nitrogen",
+    "yount_hoffman_1986",
+    "memory_medium",
+)
+VPM_HELIUM_RADIUS = _constant(
+    "VPM_HELIUM_RADIUS",
+    0.7,
+    "um",
+    r"r_{0,He}",
+    "initial critical radius of nuclei, helium",
+    "yount_hoffman_1986",
+    "memory_medium",
+)

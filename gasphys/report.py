@@ -11,7 +11,7 @@ import xarray as xr
 
 from gasphys.errors import UnitError
 from gasphys.exposure import Exposure
-from gasphys.gas_exchange import oxygenation
+from gasphys.gas_exchange import carboxyhemoglobin, oxygenation
 from gasphys.limits import Limit
 from gasphys.person import Person
 from gasphys.quantities import CAUTION, quantity
@@ -89,7 +89,7 @@ class Units:
         if name == "compression_rate":
             rate = self.depth if self.depth != "m" else "msw"
             return float(convert(value, "kPa/min", f"{rate}/min")), f"{rate}/min"
-        if name.startswith(("chamber_", "breathing_gas_co2")):
+        if name.startswith(("chamber_", "breathing_gas_co2", "breathing_gas_o2_fraction")):
             return value * 100.0, "%"
         return value, one.dose_unit or ("" if one.unit == "1" else one.unit)
 
@@ -192,6 +192,8 @@ def summary_text(exposure: Exposure, person: Person | None, units: Units) -> str
         f"arterial O2 content {_range(row['arterial_o2_content'])}"
     )
     lines.append(f"    arterial PO2 {_by_model(row['arterial_po2'], units.pressure)}")
+    lines += _venous_text(ds, row, person, units)
+    lines += _carbon_monoxide_text(exposure, person)
     for word in ("measured", "assumed"):
         if ds.attrs[word]:
             lines += _wrapped(f"{word}: {_shorter(ds.attrs[word])}", "    ", hang=2)
@@ -203,6 +205,48 @@ def summary_text(exposure: Exposure, person: Person | None, units: Units) -> str
         if len(exposure.history) > 12:
             lines.append(f"    and {len(exposure.history) - 12} more entries in the saved file's history")
     return "\n".join(lines)
+
+
+def _venous_text(ds: xr.Dataset, row: xr.Dataset, person: Person | None, units: Units) -> list[str]:
+    """Tell what the tissues leave, and whether O2 in solution alone would do."""
+    low, high = ds.attrs["arteriovenous_band"]
+    both = xr.concat([row["mixed_venous_po2_low"], row["mixed_venous_po2_high"]], "end")
+    both.attrs = row["mixed_venous_po2"].attrs
+    pco2 = row["venous_arterial_pco2_difference"]
+    found = [
+        f"mixed venous PO2 {_range(both, units.pressure)} for an arteriovenous difference of "
+        f"{_round(low)} to {_round(high)} mL/dL, venous PCO2 {_range(pco2, units.pressure)} above arterial",
+        f"O2 delivery {_range(row['o2_delivery_stpd'])}, of which the tissues take "
+        f"{_range(row['o2_extraction'], '%')}",
+    ]
+    difference = (Person() if person is None else person).value("arteriovenous_difference")
+    dissolved = row["arterial_dissolved_o2"]
+    covers = [str(m) for m in dissolved["model"].values if float(dissolved.sel(model=m)) >= difference]
+    by = (
+        "by neither model"
+        if not covers
+        else "by both models"
+        if len(covers) == 2
+        else f"by constant {covers[0]}"
+    )
+    found.append(f"dissolved O2 alone covers a difference of {_round(difference)} mL/dL {by}")
+    return [line for text in found for line in _wrapped(text, "    ", hang=2)]
+
+
+def _carbon_monoxide_text(exposure: Exposure, person: Person | None) -> list[str]:
+    """Tell what becomes of a person's carboxyhemoglobin, with the band."""
+    if person is None or not person.value("cohb_fraction") > 0.0:
+        return []
+    ds = carboxyhemoglobin(exposure, person, target=0.5 * person.value("cohb_fraction"))
+    end = [100.0 * float(ds[f"cohb_fraction{x}"][-1]) for x in ("", "_low", "_high")]
+    half = [float(v) for v in ds["time_at_target"].values]
+    told = [minutes_text(v) if np.isfinite(v) else "after the end" for v in half]
+    text = (
+        f"carboxyhemoglobin {100.0 * person.value('cohb_fraction'):.1f} % at the start, {end[0]:.1f} % at "
+        f"the end (band {end[1]:.1f} to {end[2]:.1f} %); half of it at {told[0]} "
+        f"(band {told[1]} to {told[2]}). Evidence: {ds.attrs['evidence']}"
+    )
+    return _wrapped(text, "    ", hang=2)
 
 
 def _range(values: xr.DataArray, shown: str = "") -> str:
@@ -229,8 +273,6 @@ def _shorter(text: str) -> str:
     parts = []
     for one in text.split(", "):
         name, _, number = one.partition(" = ")
-        if name == "cardiac_output":  # enters nothing that is printed here
-            continue
         unit_name = quantity(name).unit
         parts.append(f"{name} {float(number):.3g}{'' if unit_name == '1' else ' ' + unit_name}")
     return ", ".join(parts)
@@ -264,12 +306,12 @@ def review_text(exposure: Exposure, found: xr.Dataset, limits: tuple[Limit, ...]
     >>> print(review_text(dive, review(dive), load(), Units()).splitlines()[0])
     BEYOND, by first minute
     """
-    groups: dict[tuple[str, str], list[Limit]] = {}
+    groups: dict[tuple[str, str, str], list[Limit]] = {}
     rows = {x.id: found.sel(limit=x.id) for x in limits}
     status = {x.id: str(rows[x.id]["status"].values) for x in limits}
     for limit in limits:
         if status[limit.id] in ("beyond", "within"):
-            groups.setdefault((limit.quantity, limit.comparison), []).append(limit)
+            groups.setdefault((limit.quantity, limit.comparison, limit.model), []).append(limit)
     beyond, nearest = [], []
     for group in groups.values():
         crossed = [float(rows[x.id]["first_crossing"].values) for x in group if status[x.id] == "beyond"]
@@ -388,6 +430,8 @@ def _lever_lines(
         else:
             parts.append(f"{lever.gas} instead of {lever.of}" if lever.of else f"{lever.gas} instead")
         parts.append("not by less time" if lever.time is None else f"{_up(lever.time)} min less")
+        if parts[0].startswith("not "):  # "with not by pressure" is no English
+            parts.sort(key=lambda part: part.startswith("not "))
         of = f" ({lever.of})" if lever.of else ""
         lines += _wrapped(f"back to {letters[target.id]}{of} with {' | '.join(parts)}", "    ", hang=4)
     return lines

@@ -5,8 +5,9 @@ Crossings are roots inside the linear pieces, not samples.
 
 from __future__ import annotations
 
+import json
 import os
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -14,25 +15,44 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from gasphys.constants import ATMOSPHERE, MSW
+from gasphys.breathing import (
+    density_ratio,
+    maximum_ventilation,
+    ventilation_for_o2_uptake,
+    ventilatory_reserve,
+)
+from gasphys.breathing_gas import fraction_breathed, linear_in_piece
+from gasphys.constants import ATMOSPHERE, BODY_VAPOR_PRESSURE, MSW
 from gasphys.doses.carbon_dioxide import surface_equivalent
 from gasphys.doses.measures import MEASURES, closed_circuit, outside_fit, piece_doses
-from gasphys.errors import ExposureError, unknown_name
+from gasphys.errors import ExposureError, RangeError, ValidityError, unknown_name
 from gasphys.exposure import Exposure, Pieces
 from gasphys.gas import FORMULAS, Gas
 from gasphys.limits import Limit, load
+from gasphys.lungs import alveolar_po2
 from gasphys.maths import find_root
 from gasphys.person import Person
-from gasphys.policy import require_provenance, weakest
-from gasphys.quantities import CAUTION, attributes, quantity
-from gasphys.real_gas import ideal_density
+from gasphys.policy import require_provenance, validity, weakest
+from gasphys.quantities import attributes, dataset_attributes, quantity
+from gasphys.real_gas import humid_density, reference_density
+from gasphys.tissues.kinetics import Breath, advance, along, breath_of, stretches
+from gasphys.tissues.model import check_gases, initial_state
+from gasphys.tissues.sets import TissueSet
+from gasphys.tissues.sets import load as tissue_set
+from gasphys.tissues.tolerance import m_values, short_deep
 
-__all__ = ["Lever", "levers", "rests_on_memory", "review"]
+__all__ = ["Lever", "highest", "levers", "rests_on_memory", "review"]
 
 Array = NDArray[np.float64]
 
+#: Ventilation for each liter of O2 uptake, where only that is given, and the exponent of density: the
+#: defaults of their equations.
+_VENTILATION_PER_O2 = float(ventilation_for_o2_uptake.arguments[1].default or 0.0)
+_DENSITY_EXPONENT = float(maximum_ventilation.arguments[2].default or 0.0)
+
 #: Beyond means beyond by more than rounding.
 _ROUNDING = 1e-9
+_DAY = 24.0 * 60.0
 
 
 @dataclass(frozen=True)
@@ -45,12 +65,14 @@ class Trace:
         Value at the ends of each piece, linear between them; for a dose the value reached.
     within : callable or None
         For a dose: ``(share of the piece) -> value``; None where the quantity is linear.
+    some : callable or None
+        ``(mask of pieces) -> within`` of these alone, in a row: where `within` is much work.
     reason : str
         Why it cannot be judged; "" where it can.
-    status : str
-        Status that goes with the reason.
+    status : str or array of str
+        Status that goes with the reason, or with each scenario.
     undefined : array of bool
-        Scenarios for which the quantity is not defined, and `why` not.
+        Scenarios for which the quantity is not defined, and `why` not; `status` holds for them too.
     why : str
         Reason that goes with them.
     """
@@ -58,8 +80,9 @@ class Trace:
     start: Array
     end: Array
     within: Callable[[Array], Array] | None = None
+    some: Callable[[NDArray[np.bool_]], Callable[[Array], Array]] | None = None
     reason: str = ""
-    status: str = "not judged"
+    status: Any = "not judged"
     undefined: NDArray[np.bool_] | bool = False
     why: str = ""
 
@@ -68,29 +91,57 @@ def _breathing_gas_po2(exposure: Exposure, pieces: Pieces) -> Trace:
     return Trace(pieces.start_po2, pieces.end_po2)
 
 
+def _o2_fraction(exposure: Exposure, pieces: Pieces) -> Trace:
+    def within(share: Array) -> Array:
+        po2 = pieces.start_po2 + (pieces.end_po2 - pieces.start_po2) * share
+        pressure = pieces.start_pressure + (pieces.end_pressure - pieces.start_pressure) * share
+        return np.asarray(po2 / pressure)
+
+    nothing = np.zeros(np.broadcast_shapes(pieces.start_po2.shape, pieces.start_pressure.shape))
+    return Trace(within(nothing), within(nothing + 1.0), within)
+
+
+def _n2_pressure(exposure: Exposure, pieces: Pieces) -> Trace:
+    """Nitrogen, argon with it: of the gas itself, or on a loop its share of what is not oxygen."""
+    loop = ~np.isnan(pieces.setpoint)
+    rest = 1.0 - pieces.fractions["O2"]
+    given = pieces.fractions["N2"] + pieces.fractions.get("Ar", np.zeros_like(rest))
+    part = np.where(rest > 0.0, given / np.where(rest > 0.0, rest, 1.0), 0.0)
+    start, end = (
+        np.where(loop, (pressure - po2) * part, pressure * given)
+        for pressure, po2 in (
+            (pieces.start_pressure, pieces.start_po2),
+            (pieces.end_pressure, pieces.end_po2),
+        )
+    )
+    return Trace(start, end)
+
+
+def _breathed(pieces: Pieces, pressure: Array, po2: Array) -> dict[str, Array]:
+    """Dry fractions breathed, by field: of the gas itself, on a loop what set-point and diluent make."""
+    loop = ~np.isnan(pieces.setpoint)
+    share = po2 / pressure
+    rest = 1.0 - pieces.fractions["O2"]
+    mix = {}
+    for formula, field in FORMULAS.items():
+        given = pieces.fractions.get(formula, np.zeros_like(share))
+        part = np.where(rest > 0.0, given / np.where(rest > 0.0, rest, 1.0), 0.0)
+        mix[field] = share if formula == "O2" else np.where(loop, (1.0 - share) * part, given)
+    return mix
+
+
+#: Density as published limits count it: handbook densities at 0 degC and 1 atm, scaled with pressure. The
+#: ideal gas at 0 degC is 0.1 % less for air. The limits are quoted as air at depths that belong to this
+#: rule; one function then serves review, plots and apps, and it is the stricter of the two for air.
+_LIMIT_DENSITY = reference_density.pick(rule="scaled_1_atm")  # type: ignore[attr-defined]
+
+
 def _gas_density(exposure: Exposure, pieces: Pieces) -> Trace:
     ends = []
-    loop = ~np.isnan(pieces.setpoint)
     for pressure, po2 in ((pieces.start_pressure, pieces.start_po2), (pieces.end_pressure, pieces.end_po2)):
-        share = po2 / pressure
-        mix = {}
-        for formula, field in FORMULAS.items():
-            given = pieces.fractions.get(formula, np.zeros_like(share))
-            if formula == "O2":
-                mix[field] = share
-            else:
-                rest = 1.0 - pieces.fractions["O2"]
-                part = np.where(rest > 0.0, given / np.where(rest > 0.0, rest, 1.0), 0.0)
-                mix[field] = np.where(loop, (1.0 - share) * part, given)
-        ends.append(
-            np.asarray(
-                ideal_density.raw(
-                    pressure,
-                    *(mix[a.name] for a in ideal_density.arguments[1:-1]),
-                    0.0,
-                )
-            )
-        )
+        mix = _breathed(pieces, pressure, po2)
+        fractions = (mix[a.name] for a in _LIMIT_DENSITY.arguments[1:])
+        ends.append(np.asarray(_LIMIT_DENSITY.raw(pressure, *fractions)))
     # Linear in pressure at a fixed mix, and on a loop at a fixed PO2: both ends tell all.
     return Trace(ends[0], ends[1])
 
@@ -107,26 +158,20 @@ def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
         each = piece_doses(measure, pieces)
         reached = np.cumsum(each, axis=-1)
         before = reached - each
-        if np.isnan(each).any():
+        above = np.isnan(each).any(axis=-1)
+        whys = []
+        if above.any():
             highest = float(np.nanmax(np.maximum(pieces.start_po2, pieces.end_po2)))
-            return Trace(
-                before,
-                reached,
-                reason=(
-                    f"breathing gas PO2 reaches {highest:.1f} kPa ({highest / ATMOSPHERE:.2f} atm) and the "
-                    "table ends at 162.1 kPa (1.60 atm); it is not extrapolated"
-                ),
-                status="not applicable",
+            whys.append(
+                f"breathing gas PO2 reaches {highest:.1f} kPa ({highest / ATMOSPHERE:.2f} atm) and the "
+                "table ends at 162.1 kPa (1.60 atm); it is not extrapolated"
             )
-        if measure in _OF_A_DAY and np.max(pieces.times) > 24.0 * 60.0:
-            return Trace(before, reached, reason="the exposure lasts longer than the 24 h of this total")
+            if above.all():
+                return Trace(before, reached, reason=whys[0], status="not applicable")
         outside = outside_fit(measure, pieces, np.ones(each.shape[-1], dtype=bool)) >= 1.0 - _ROUNDING
-        low = MEASURES[measure].fit[0] / ATMOSPHERE
-        why = (
-            f"breathing gas PO2 stays below {low:.2g} atm, where the model was fitted"
-            if np.any(outside)
-            else ""
-        )
+        if np.any(outside & ~above):
+            low = MEASURES[measure].fit[0] / ATMOSPHERE
+            whys.append(f"breathing gas PO2 stays below {low:.2g} atm, where the model was fitted")
 
         def within(share: Array) -> Array:
             partial = replace(
@@ -136,7 +181,14 @@ def _dose(measure: str) -> Callable[[Exposure, Pieces], Trace]:
             )
             return dose(before + piece_doses(measure, partial))
 
-        return Trace(dose(before), dose(reached), within, undefined=outside, why=why)
+        return Trace(
+            dose(before),
+            dose(reached),
+            within,
+            status="not applicable",
+            undefined=outside | above,
+            why="; ".join(whys),
+        )
 
     return trace
 
@@ -145,31 +197,40 @@ def _closed_circuit_o2(exposure: Exposure, pieces: Pieces) -> Trace:
     found = closed_circuit(pieces, np.ones(pieces.duration.shape[-1], dtype=bool))
     duration = np.broadcast_to(pieces.duration, found.on.shape)
     nothing = np.zeros(found.on.shape)
-    if found.reason:
+    if found.refused.all():
         return Trace(nothing, nothing, reason=found.reason, status="not applicable")
     start, end = found.used(nothing, duration), found.used(nothing + 1.0, duration)
-    return Trace(start, end, lambda share: found.used(share, duration))
+
+    def within(share: Array) -> Array:
+        return found.used(share, duration)
+
+    return Trace(start, end, within, status="not applicable", undefined=found.refused, why=found.reason)
 
 
 def _co2(exposure: Exposure, pieces: Pieces) -> Trace:
     nothing = np.zeros_like(pieces.duration)
     fraction = pieces.fractions.get("CO2", nothing)
-    if not np.any(fraction > 0.0):
-        return Trace(nothing, nothing, reason="the CO2 of the breathing gas is not given")
+    unknown, why = ~np.any(fraction > 0.0, axis=-1), "the CO2 of the breathing gas is not given"
+    if unknown.all():
+        return Trace(nothing, nothing, reason=why)
     ends = [surface_equivalent.raw(fraction, p) for p in (pieces.start_pressure, pieces.end_pressure)]
-    return Trace(np.asarray(ends[0]), np.asarray(ends[1]))
+    return Trace(
+        np.asarray(ends[0]), np.asarray(ends[1]), undefined=unknown, why=why if unknown.any() else ""
+    )
 
 
 def _depth_on_helium(exposure: Exposure, pieces: Pieces) -> Trace:
     nothing = np.zeros_like(pieces.duration)
     helium = pieces.fractions.get("He", nothing) > 0.0
-    if not np.any(helium & (pieces.duration > 0.0)):
-        return Trace(nothing, nothing, reason="no helium is breathed", status="not applicable")
+    none, why = ~np.any(helium & (pieces.duration > 0.0), axis=-1), "no helium is breathed"
+    if none.all():
+        return Trace(nothing, nothing, reason=why, status="not applicable")
     surface = np.asarray(exposure.surface_pressure, dtype=float)
     surface = surface[..., None] if surface.ndim else surface
     ends = (pieces.start_pressure, pieces.end_pressure)
     start, end = (np.where(helium, np.maximum(p - surface, 0.0) / MSW, 0.0) for p in ends)
-    return Trace(start, end)
+    why = why if none.any() else ""
+    return Trace(start, end, status="not applicable", undefined=none, why=why)
 
 
 def _without(what: str) -> Callable[[Exposure, Pieces], Trace]:
@@ -180,9 +241,87 @@ def _without(what: str) -> Callable[[Exposure, Pieces], Trace]:
     return trace
 
 
+def _limit_fraction(
+    model: str, exposure: Exposure, pieces: Pieces, factors: Mapping[str, Any] | None = None
+) -> Trace:
+    """Largest share of a tissue model's M-value, at both ends of each piece; the surface is the last.
+
+    In a stay every compartment is monotone, so its ends tell all; on a way up the end does: M is lowest.
+    """
+    chosen = tissue_set(model)
+    varied = _scaled(chosen, factors or {}, exposure)
+    by_piece = _scaled(chosen, factors or {}, exposure, pieces=True)
+    shape = tuple(len(exposure.coords[d]) for d in exposure.dims)
+    lead = (*shape, pieces.duration.shape[-1])
+    nothing = np.zeros(lead)
+    try:
+        with validity("ignore"):
+            refused = check_gases(chosen, pieces, shape)
+            blank = np.broadcast_to(short_deep(chosen, pieces, exposure.surface_pressure), shape)
+    except ValidityError:
+        return Trace(
+            nothing, nothing, reason=f"{chosen.name} refuses a gas of the exposure: {chosen.refuses}"
+        )
+    rule = chosen.short_deep
+    if rule is not None and rule.action == "refuse":
+        refused = refused | blank
+    begin = np.broadcast_to(initial_state(chosen, None, exposure), (*shape, *chosen.half_time.shape))
+    columns = (pieces.duration, pieces.start_pressure, pieces.end_pressure)
+    minutes, low, high = (np.broadcast_to(v, lead) for v in columns)
+    whole = breath_of(chosen, pieces)
+    oxygen, setpoint = (np.broadcast_to(v, lead) for v in (whole.oxygen, whole.setpoint))
+    inert = np.broadcast_to(whole.inert, (*lead, whole.inert.shape[-1]))
+    breath = Breath(oxygen, inert, setpoint)
+    surface = np.broadcast_to(np.asarray(exposure.surface_pressure, dtype=float), shape)[..., None]
+
+    def share_of(state: Array, pressure: Array, level: Array = surface, model: TissueSet = by_piece) -> Array:
+        total, limit = m_values(model, state, pressure)
+        top = np.where(np.isnan(limit), 0.0, total / limit).max(axis=-1)
+        if chosen.surfacing_only:
+            return np.where(pressure <= level * (1.0 + _ROUNDING), top, 0.0)
+        return np.asarray(top)
+
+    if shape:
+        states = [begin]
+        for k in range(lead[-1]):
+            one = Breath(oxygen[..., k], inert[..., k, :], setpoint[..., k])
+            states.append(advance(varied, states[-1], minutes[..., k], low[..., k], high[..., k], one))
+        held = np.stack(states, axis=len(shape))
+    else:  # a log may have ten thousand pieces
+        row, before = stretches(chosen, pieces)
+        held = np.moveaxis(along(varied, begin, row)[..., before], -1, 0)
+
+    def within(share: Array) -> Array:
+        there = low + (high - low) * share
+        return share_of(advance(by_piece, held[..., :-1, :, :], minutes * share, low, there, breath), there)
+
+    def some(mask: NDArray[np.bool_]) -> Callable[[Array], Array]:
+        begins, time, first, last = held[..., :-1, :, :][mask], minutes[mask], low[mask], high[mask]
+        breathed = Breath(oxygen[mask], inert[mask], setpoint[mask])
+        level = np.broadcast_to(surface, lead)[mask]
+        cells = (*lead, *chosen.half_time.shape)
+        columns = {c: getattr(by_piece, c) for c in TISSUE_FACTORS.values()}
+        wide = {c: np.broadcast_to(v, cells)[mask] for c, v in columns.items() if v.ndim > 2}
+        own = replace(by_piece, **wide)
+
+        def one(share: Array) -> Array:
+            there = first + (last - first) * share
+            return share_of(advance(own, begins, time * share, first, there, breathed), there, level, own)
+
+        return one
+
+    start, end = (
+        share_of(held[..., part, :, :], p) for part, p in ((slice(None, -1), low), (slice(1, None), high))
+    )
+    why = f"{chosen.name} refuses it" if refused.any() else ""
+    return Trace(start, end, within, some, status="not applicable", undefined=refused, why=why)
+
+
 #: How each reviewed quantity follows from an exposure.
 TRACES: dict[str, Callable[[Exposure, Pieces], Trace]] = {
     "breathing_gas_po2": _breathing_gas_po2,
+    "breathing_gas_o2_fraction": _o2_fraction,
+    "breathing_gas_n2_pressure": _n2_pressure,
     "gas_density": _gas_density,
     "compression_rate": _compression_rate,
     "noaa_cns_single_fraction": _dose("noaa_cns"),
@@ -194,13 +333,80 @@ TRACES: dict[str, Callable[[Exposure, Pieces], Trace]] = {
     "depth_on_helium": _depth_on_helium,
     "chamber_o2_fraction": _without("no chamber atmosphere is part of the exposure; measure it"),
     "chamber_co2_surface_equivalent": _without("no chamber atmosphere is part of the exposure; measure it"),
+    "external_work_share": _without(
+        "the work of an apparatus is measured on a machine; breathing.compare_apparatus compares it"
+    ),
+    "cylinder_pressure": _without("no cylinder is part of the exposure; supply.stock_review judges them"),
 }
+
+
+def _in_order(value: Any, exposure: Exposure, *behind: str) -> Any:
+    """Return a number, or an array over scenarios in the order of the exposure's dimensions.
+
+    Behind them stands an axis for the pieces, or the dimensions named.
+    """
+    if not isinstance(value, xr.DataArray):
+        return value
+    order = [d for d in (*exposure.dims, *behind) if d in value.dims]
+    plain = value.transpose(*order).values.astype(float)
+    plain = plain.reshape([value.sizes.get(d, 1) for d in (*exposure.dims, *behind)])
+    return plain if behind else plain[..., None]
+
+
+def _alveolar_po2(exposure: Exposure, pieces: Pieces, person: Person) -> Trace:
+    """Alveolar PO2 of steady breathing, for the arterial PCO2 and R of a person."""
+    pco2 = _in_order(person.value("arterial_pco2"), exposure)
+    exchange = _in_order(person.value("respiratory_exchange_ratio"), exposure)
+    nothing = np.zeros(np.broadcast_shapes(pieces.start_po2.shape, pieces.start_pressure.shape))
+    co2 = np.where(np.isnan(pieces.setpoint), pieces.fractions.get("CO2", nothing), 0.0)
+
+    def within(share: Array) -> Array:
+        pressure = linear_in_piece.raw(pieces.start_pressure, pieces.end_pressure, share)
+        po2 = linear_in_piece.raw(pieces.start_po2, pieces.end_po2, share)
+        fio2 = fraction_breathed.raw(po2, pressure)
+        return np.asarray(alveolar_po2.raw(pressure, fio2, pco2, exchange, co2, float(BODY_VAPOR_PRESSURE)))
+
+    return Trace(within(nothing), within(nothing + 1.0), within)
+
+
+def _ventilatory_reserve(exposure: Exposure, pieces: Pieces, person: Person) -> Trace:
+    """Share of maximum ventilation in the gas breathed that the workload leaves."""
+    nothing = np.full(np.broadcast_shapes(pieces.start_po2.shape, pieces.start_pressure.shape), np.nan)
+    name = "surface_maximum_ventilation_btps"
+    if not person.is_measured(name):
+        return Trace(nothing, nothing, reason=f"{name} of the person is not measured")
+    given, uptake = (exposure.columns[c] for c in ("ventilation_btps", "o2_uptake_stpd"))
+    ventilation = np.where(np.isnan(given), ventilation_for_o2_uptake.raw(uptake, _VENTILATION_PER_O2), given)
+    if np.isnan(np.where(pieces.duration > 0.0, ventilation, 0.0)).any():
+        return Trace(nothing, nothing, reason="ventilation or O2 uptake is not given in every piece")
+    most = _in_order(person.value(name), exposure)
+    humid = humid_density.pick(model="virial").raw  # type: ignore[attr-defined]
+
+    def within(share: Array) -> Array:
+        pressure = linear_in_piece.raw(pieces.start_pressure, pieces.end_pressure, share)
+        po2 = linear_in_piece.raw(pieces.start_po2, pieces.end_po2, share)
+        mix = _breathed(pieces, pressure, po2)
+        density = humid(pressure, *(mix[f] for f in FORMULAS.values()), 37.0, float(BODY_VAPOR_PRESSURE))
+        ceiling = maximum_ventilation.raw(most, density_ratio.raw(density), _DENSITY_EXPONENT)
+        return np.asarray(ventilatory_reserve.raw(ventilation, ceiling))
+
+    return Trace(within(np.zeros_like(nothing)), within(np.ones_like(nothing)), within)
+
+
+#: Reviewed quantities that follow from an exposure and a person.
+PERSON_TRACES: dict[str, Callable[[Exposure, Pieces, Person], Trace]] = {
+    "alveolar_po2": _alveolar_po2,
+    "ventilatory_reserve": _ventilatory_reserve,
+}
+
+#: Factors on the numbers of tissue models, and the column of a set each belongs to.
+TISSUE_FACTORS = {"half_time_factor": "half_time", "m_value_a_factor": "a", "m_value_b_factor": "b"}
+
+#: Of the person, what these need.
+PERSONAL = ("arterial_pco2", "respiratory_exchange_ratio", "surface_maximum_ventilation_btps")
 
 #: Doses only grow: these traces have one crossing.
 _CUMULATIVE = ("noaa_cns_single_fraction", "noaa_cns_day_fraction", "uptd", "arieli_pulmonary_index")
-
-#: Measures whose limits are for a day.
-_OF_A_DAY = ("noaa_cns_day", "arieli_pulmonary_index")
 
 
 def review(
@@ -208,6 +414,8 @@ def review(
     person: Person | None = None,
     role: str = "diver",
     limits: str | os.PathLike[str] | Iterable[Any] = "default",
+    *,
+    tissue_factors: Mapping[Any, Any] | None = None,
 ) -> xr.Dataset:
     """Compare an exposure with published limits.
 
@@ -216,11 +424,15 @@ def review(
     exposure : Exposure
         Pressure and breathing gas against time.
     person : Person, optional
-        Its role is used where `role` is not given otherwise.
+        Whose lungs; fields that hold several values broadcast over the scenarios.
     role : {"diver", "patient", "attendant"}
         Whose exposure it is: limits made for others are "not applicable".
     limits : str, path or sequence
         As for :func:`gasphys.limits.load`.
+    tissue_factors : mapping or Dataset, optional
+        What the numbers of the tissue models are multiplied by, to learn how much a limit rests on them:
+        ``half_time_factor``, ``m_value_a_factor``, ``m_value_b_factor`` [1], each a number or a labelled
+        array over scenarios and, where compartments differ, ``compartment``.
 
     Returns
     -------
@@ -258,6 +470,13 @@ def review(
     chosen = load(limits)
     for limit in chosen:
         require_provenance(limit.provenance, f"limit {limit.id}")
+    factors = _factors(tissue_factors)
+    for one in (*_of_person(person).values(), *factors.values()):
+        if isinstance(one, xr.DataArray):
+            for dim in one.dims:
+                if dim != "compartment":
+                    labels = one[dim].values if dim in one.coords else np.arange(one.sizes[dim])
+                    exposure = exposure._adopt(str(dim), labels)
     pieces = exposure.pieces()
     shape = tuple(len(exposure.coords[d]) for d in exposure.dims)
     traces: dict[str, Trace] = {}
@@ -268,16 +487,104 @@ def review(
             if limit.quantity not in traces:
                 traces[limit.quantity] = TRACES[limit.quantity](exposure, pieces)
             trace = traces[limit.quantity]
+        elif limit.quantity in PERSON_TRACES:
+            if limit.quantity not in traces:
+                whose = Person() if person is None else person
+                traces[limit.quantity] = PERSON_TRACES[limit.quantity](exposure, pieces, whose)
+            trace = traces[limit.quantity]
+        elif limit.model:
+            if limit.model not in traces:
+                traces[limit.model] = _limit_fraction(limit.model, exposure, pieces, factors)
+            trace = traces[limit.model]
         found = _judge(limit, trace, pieces, role)
         for name in _NUMBERS:
             columns[name].append(np.broadcast_to(found[name], shape))
         status = np.broadcast_to(np.asarray(found["status"], dtype=object), shape)
         columns["status"].append(status)
         columns["reason"].append(found["reason"])
-    return _dataset(exposure, chosen, columns, role, person)
+    return _dataset(exposure, chosen, columns, role, person, factors)
 
 
 _NUMBERS = ("worst", "limit_value", "margin", "time_of_worst", "first_crossing", "time_beyond")
+
+
+def highest(exposure: Exposure, name: str, person: Person | None = None) -> Array:
+    """Return the highest value of a reviewed quantity along each scenario.
+
+    Parameters
+    ----------
+    exposure : Exposure
+        Pressure and breathing gas against time.
+    name : str
+        A quantity that reviews judge.
+    person : Person, optional
+        Whose, for quantities of a person.
+
+    Returns
+    -------
+    array
+        ``(...)``; NaN where the quantity is not defined.
+
+    Raises
+    ------
+    UnknownNameError
+        If reviews do not judge the quantity.
+
+    Examples
+    --------
+    >>> float(highest(Exposure.start("air").travel(depth=30, minutes=2), "gas_density").round(2))
+    5.1
+    """
+    pieces = exposure.pieces()
+    if name in TRACES:
+        trace = TRACES[name](exposure, pieces)
+    elif name in PERSON_TRACES:
+        trace = PERSON_TRACES[name](exposure, pieces, person or Person())
+    else:
+        raise unknown_name("reviewed quantity", name, [*TRACES, *PERSON_TRACES])
+    shape = tuple(len(exposure.coords[d]) for d in exposure.dims)
+    if trace.reason:
+        return np.full(shape, np.nan)
+    real = pieces.duration > 0.0
+    found = np.where(real, np.maximum(trace.start, trace.end), -np.inf).max(axis=-1)
+    return np.where(trace.undefined, np.nan, np.broadcast_to(found, shape))
+
+
+def _of_person(person: Person | None) -> dict[str, Any]:
+    """Return what of a person a review needs."""
+    return {n: (Person() if person is None else person).value(n) for n in PERSONAL}
+
+
+def _factors(given: Mapping[Any, Any] | None) -> dict[str, Any]:
+    """Return the factors on tissue models, checked; other variables of a Dataset are left aside."""
+    found = {n: given[n] for n in TISSUE_FACTORS if given is not None and n in given}
+    if given is not None and not found:
+        raise ExposureError(f"tissue_factors holds none of {', '.join(TISSUE_FACTORS)}")
+    for name, value in found.items():
+        if not np.all(np.asarray(value) > 0.0):
+            raise RangeError(f"tissue_factors: {name} = {float(np.min(value)):g} must be positive")
+        found[name] = value if isinstance(value, xr.DataArray) else float(value)
+    return found
+
+
+def _scaled(
+    chosen: TissueSet, factors: Mapping[str, Any], exposure: Exposure, *, pieces: bool = False
+) -> TissueSet:
+    """Return a set whose numbers carry the scenario dimensions, and an axis of pieces, where factors do."""
+    if not factors:
+        return chosen
+    if chosen.kinetics == "serial":
+        raise ExposureError(f"{chosen.name} has no half-times to multiply; leave it out with limits=")
+    new = {}
+    for name, column in TISSUE_FACTORS.items():
+        factor = factors.get(name, 1.0)
+        if isinstance(factor, xr.DataArray):
+            if "compartment" in factor.dims:
+                factor = factor.sel(compartment=list(chosen.compartments))
+            factor = _in_order(factor, exposure, "compartment")[..., None]
+            factor = factor[..., None, :, :] if pieces else factor
+        new[column] = getattr(chosen, column) * factor
+    return replace(chosen, **new)
 
 
 def _judge(limit: Limit, trace: Trace | None, pieces: Pieces, role: str) -> dict[str, Any]:
@@ -288,21 +595,35 @@ def _judge(limit: Limit, trace: Trace | None, pieces: Pieces, role: str) -> dict
             "status": "not judged",
             "reason": f"{limit.quantity} does not follow from an exposure",
         }
+    if limit.per_day and not trace.reason:
+        longer = pieces.times[..., -1] > _DAY * (1.0 + _ROUNDING)
+        why = "the limit is for a day and the exposure is longer"
+        if longer.all():
+            trace = replace(trace, reason=why, status="not judged")
+        elif longer.any():
+            status = np.where(longer, "not judged", trace.status)
+            why = f"{trace.why}; {why}" if trace.why else why
+            trace = replace(trace, status=status, undefined=trace.undefined | longer, why=why)
     if role not in limit.roles:
         reason = f"made for {_listed(limit.roles)}, not for {_with_article(role)}"
-        if trace.status == "not applicable" and trace.reason:
+        if trace.reason and trace.status == "not applicable":
             reason = f"{reason}; {trace.reason}"
-        shown = nothing if trace.reason or np.any(trace.undefined) else _measured(limit, trace, pieces)
+        shown = nothing if trace.reason else _blanked(_measured(limit, trace, pieces), trace)
         return shown | {"status": "not applicable", "reason": reason}
     if trace.reason:
         return nothing | {"status": trace.status, "reason": trace.reason}
-    found = _measured(limit, trace, pieces)
+    found = _blanked(_measured(limit, trace, pieces), trace)
     beyond = ~np.isnan(found["first_crossing"])
-    status = np.where(trace.undefined, "not applicable", np.where(beyond, "beyond", "within"))
-    if np.any(trace.undefined):
-        kept = {k: v for k, v in found.items() if k != "limit_value"}
-        found |= {k: np.where(trace.undefined, np.nan, v) for k, v in kept.items()}
+    status = np.where(trace.undefined, trace.status, np.where(beyond, "beyond", "within"))
     return found | {"status": status.astype(object), "reason": trace.why}
+
+
+def _blanked(found: dict[str, Any], trace: Trace) -> dict[str, Any]:
+    """Return the numbers of a limit without those of scenarios for which the quantity is not defined."""
+    if not np.any(trace.undefined):
+        return found
+    blank = {k: np.where(trace.undefined, np.nan, v) for k, v in found.items() if k != "limit_value"}
+    return found | blank
 
 
 def _listed(words: tuple[str, ...]) -> str:
@@ -329,7 +650,7 @@ def _measured(limit: Limit, trace: Trace, pieces: Pieces) -> dict[str, Any]:
     at = np.argmax(ordered >= top - np.abs(top) * _ROUNDING, axis=-1)[..., None]
     worst = top[..., 0]
     time_of_worst = np.take_along_axis(moments, at, axis=-1)[..., 0]
-    share = _crossing_share(trace, start, end, edge, bound)
+    share = _crossing_share(trace, start, end, edge, bound, sign)
     length = np.broadcast_to(pieces.duration, start.shape)
     rising = (start <= edge) & (end > edge)
     falling = (start > edge) & (end <= edge)
@@ -351,7 +672,7 @@ def _measured(limit: Limit, trace: Trace, pieces: Pieces) -> dict[str, Any]:
     }
 
 
-def _crossing_share(trace: Trace, start: Array, end: Array, edge: float, bound: float) -> Array:
+def _crossing_share(trace: Trace, start: Array, end: Array, edge: float, bound: float, sign: float) -> Array:
     """Share of each piece at which the limit is met; 0 where the piece does not cross it."""
     crosses = (start <= edge) != (end <= edge)
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -359,10 +680,16 @@ def _crossing_share(trace: Trace, start: Array, end: Array, edge: float, bound: 
     linear = np.clip(linear, 0.0, 1.0)
     if trace.within is None or not crosses.any():
         return linear
+    if trace.some is not None:
+        some = trace.some(crosses)
+        ends = np.zeros(int(crosses.sum())), np.ones(int(crosses.sum()))
+        root = find_root(lambda share: sign * some(share) - bound, *ends)
+        linear[crosses] = np.where(np.isnan(root), linear[crosses], root)
+        return linear
     within = trace.within
 
     def difference(share: Array) -> Array:
-        return np.where(crosses, within(share) - bound, share - 0.5)
+        return np.where(crosses, sign * within(share) - bound, share - 0.5)
 
     root = find_root(difference, np.zeros(start.shape), np.ones(start.shape))
     return np.where(crosses & ~np.isnan(root), root, linear)
@@ -374,13 +701,14 @@ def _dataset(
     columns: dict[str, list[Any]],
     role: str,
     person: Person | None,
+    factors: Mapping[str, Any],
 ) -> xr.Dataset:
-    from gasphys import __version__
 
     dims = ("limit", *exposure.dims)
     texts = {
         "reason": (columns["reason"], "why the limit is not applicable or not judged"),
         "quantity": ([x.quantity for x in chosen], "quantity compared"),
+        "model": ([x.model for x in chosen], "tissue model whose limit it is; empty: none"),
         "comparison": ([x.comparison for x in chosen], "inside means value <= or >= the limit"),
         "authority": ([x.authority for x in chosen], "whose limit it is"),
         "edition": ([x.edition for x in chosen], "edition of the limit"),
@@ -422,19 +750,23 @@ def _dataset(
     ds["duration"] = (exposure.dims, minutes.copy(), attributes("duration"))
     view = exposure.segment_view()
     ds = ds.merge(view, combine_attrs="override")
-    ds.attrs = {
-        **view.attrs,
-        "Conventions": "CF-1.11",
-        "title": f"review of {exposure.attrs.get('title', 'an exposure')}",
-        "source": f"gasphys {__version__}, review",
-        "history": "\n".join(exposure.history) or "as given",
-        "references": "; ".join(dict.fromkeys(x.source for x in chosen)),
-        "comment": CAUTION,
-        "role": role,
-        "person": "" if person is None else person.code,
-        "provenance": weakest([x.provenance for x in chosen]),
-        "from_memory": ", ".join(x.id for x in chosen if x.provenance.startswith("memory")),
-    }
+    for name, value in {**_of_person(person), **factors}.items():
+        if isinstance(value, xr.DataArray):
+            ds[name] = value
+    ds.attrs = view.attrs | dataset_attributes(
+        f"review of {exposure.attrs.get('title', 'an exposure')}",
+        "review",
+        history=exposure.history,
+        references=(x.source for x in chosen),
+        role=role,
+        person="" if person is None else person.code,
+        person_values=json.dumps(
+            {n: v for n, v in _of_person(person).items() if not isinstance(v, xr.DataArray)}
+        ),
+        provenance=weakest([x.provenance for x in chosen]),
+        from_memory=", ".join(x.id for x in chosen if x.provenance.startswith("memory")),
+        **{n: v for n, v in factors.items() if not isinstance(v, xr.DataArray)},
+    )
     return ds
 
 
@@ -606,8 +938,8 @@ def _gas_lever(exposure: Exposure, limit: Limit, index: int, same: NDArray[np.bo
         return None
     zero = np.zeros(len(exposure.part))
     mix = {k: exposure.fractions.get(k, zero) for k in ("O2", "N2", "He")}
-    # Density: helium for nitrogen, the oxygen stays. Oxygen: nitrogen takes its place or gives it.
-    if limit.quantity == "gas_density":
+    # Density, narcosis: helium for nitrogen, the oxygen stays. Oxygen: nitrogen takes its place or gives it.
+    if limit.quantity in ("gas_density", "breathing_gas_n2_pressure"):
         takes, gives = "He", "N2"
     elif limit.comparison == "<=":
         takes, gives = "N2", "O2"

@@ -19,9 +19,14 @@ GENERATORS = (
     "limits",
     "schedules",
     "tissue_sets",
+    "printed_times",
     "validation",
     "api",
     "examples",
+    "dose_figures",
+    "gas_exchange_figures",
+    "breathing_figures",
+    "risk_figures",
 )
 
 

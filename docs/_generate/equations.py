@@ -39,10 +39,14 @@ TITLES = {
     "lungs": "Alveolar gas",
     "blood": "Oxygen in blood",
     "breathing_gas": "Breathing gas at an instant",
+    "breathing": "Breathing dense gas",
     "gas_exchange": "From alveolus to arterial blood",
     "doses": "Oxygen dose, narcosis, carbon dioxide",
     "tissues": "Dissolved gas in tissues",
     "ascent": "Ascents",
+    "chamber": "Chamber gas, heat, trapped gas",
+    "bubbles": "Bubbles",
+    "supply": "Gas supply",
 }
 
 
@@ -143,7 +147,7 @@ def _body(name: str, f: Any) -> str:
 def _members(name: str, f: Any) -> str:
     rows = []
     for key, member in f.registry.items():
-        label = key if isinstance(key, str) else ",".join(map(str, key))
+        label = ",".join(map(str, key if isinstance(key, tuple) else (key,)))
         rows.append(
             (link(f"{name}[{label}]"), member.kind, escape(summary(member)), f"`{member.provenance}`")
         )
@@ -226,6 +230,79 @@ def _constants(f: Any) -> str:
 
 #: Inputs that must fit together where the middles of their ranges do not.
 EXAMPLES = {
+    "chamber.pressurization_gas": {
+        "volume": 18000.0,
+        "initial_pressure": 101.325,
+        "final_pressure": 243.18,
+    },
+    "chamber.compressor_flow": {
+        "volume": 18000.0,
+        "initial_pressure": 101.325,
+        "final_pressure": 243.18,
+        "duration": 10.0,
+        "air_flow": 300.0,
+    },
+    "chamber.cylinders_needed": {
+        "free_gas_volume": 28000.0,
+        "water_capacity": 50.0,
+        "cylinder_pressure": 20000.0,
+        "reserve_pressure": 2000.0,
+        "compressibility": 1.0,
+    },
+    "bubbles.closed_nucleus_pressure": {
+        "radius": 0.2537,
+        "onset_radius": 0.33473,
+        "onset_pressure": 932.19,
+        "onset_tension": 101.325,
+        "surface_tension": 0.0179,
+        "skin_compression": 0.257,
+    },
+    "bubbles.trapped_gas_pressure": {"radius": 0.2537, "onset_radius": 0.33473, "onset_tension": 101.325},
+    "bubbles.boyle_pressure": {"gradient": 45.0, "initial_gradient": 60.0, "initial_pressure": 350.0},
+    "bubbles.counterdiffusion_tension": {
+        "leaving_pressure": 300.0,
+        "arriving_pressure": 300.0,
+        "duration": 20.0,
+        "leaving_half_time": 27.0,
+        "arriving_half_time": 10.2,
+    },
+    "bubbles.counterdiffusion_peak_time": {
+        "leaving_pressure": 300.0,
+        "arriving_pressure": 300.0,
+        "leaving_half_time": 27.0,
+        "arriving_half_time": 10.2,
+    },
+    "bubbles.surface_excess_time": {
+        "helium_pressure": 30.0,
+        "nitrogen_pressure": 90.0,
+        "inspired_nitrogen_pressure": 75.1,
+        "helium_half_time": 15.1,
+        "nitrogen_half_time": 40.0,
+    },
+    "bubbles.composition_rate": {
+        "bubble_fraction": 0.6,
+        "own_inflow": 5e5,
+        "all_inflow": 7e5,
+        "radius": 20.0,
+        "bubble_pressure": 110.0,
+    },
+    "bubbles.gas_inflow": {
+        "radius": 10.0,
+        "tissue_gas_pressure": 200.0,
+        "bubble_gas_pressure": 120.0,
+        "diffusivity": 2e-9,
+        "solubility": 0.0144,
+        "boundary_term": 0.1,
+    },
+    "bubbles.squared_radius_rate": {
+        "radius": 10.0,
+        "bubble_inflow": 1.4e6,
+        "ambient_pressure": 101.325,
+        "ambient_rate": 0.0,
+        "surface_tension": 0.05,
+        "tissue_modulus": 0.0,
+        "metabolic_pressure": 18.0,
+    },
     "tissues.time_to_tissue_pressure": {
         "initial_tissue_pressure": 80.0,
         "inert_pressure": 220.0,

@@ -7,11 +7,22 @@ import os
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 from sphinx.util import logging
 
 import gasphys as gp
 from _generate.markdown import svg
-from gasphys.plots import exposure_figure
+from gasphys.plots import (
+    ascents_figure,
+    atmosphere_figure,
+    bubble_figure,
+    control_path_figure,
+    exposure_figure,
+    fill_figure,
+    loss_table_figure,
+    nuclei_figure,
+    worksheet_figure,
+)
 
 logger = logging.getLogger(__name__)
 
@@ -70,8 +81,32 @@ def pages() -> dict[str, str | bytes]:
             logger.warning("%s", error)
     if not {"diver.md", "schedules.md"} <= set(spaces):
         return {}
+    drawn = {}
+    if "ascent.md" in spaces:
+        compared = spaces["ascent.md"]["both"]
+        drawn = {
+            "ascents.svg": svg(ascents_figure(compared.to_dataset(judged=False))),
+            "control_path.svg": svg(control_path_figure(compared.control())),
+        }
+    if "gas_supply.md" in spaces:
+        supply = spaces["gas_supply.md"]
+        drawn["fill.svg"] = svg(fill_figure(supply["fill"]))
+        drawn["losses.svg"] = svg(loss_table_figure(supply["losses"]))
+    if "bubbles.md" in spaces:
+        shown = spaces["bubbles.md"]
+        whole = shown["plan"].exposure.then(60.0)
+        times = np.linspace(0.0, float(whole.duration), 400)
+        drawn["nuclei.svg"] = svg(nuclei_figure(gp.bubbles.nuclei(whole, at=times)))
+        grown = gp.bubbles.growth(
+            shown["up"], [1.0, 2.0, 5.0, 20.0], bubbles_per_ml=1000.0, at=np.linspace(0.0, 94.0, 189)
+        )
+        drawn["bubbles.svg"] = svg(bubble_figure(grown))
+    if "chamber.md" in spaces:
+        drawn["worksheet.svg"] = svg(worksheet_figure(spaces["chamber.md"]["before"]))
+        drawn["atmosphere.svg"] = svg(atmosphere_figure(spaces["chamber.md"]["run"]))
     dive, table = spaces["diver.md"], spaces["schedules.md"]["table"]
     return {
         "dive.svg": svg(exposure_figure(dive["dive"], dive["found"])),
         "usn_6.svg": svg(exposure_figure(table, gp.review(table, role="patient"))),
+        **drawn,
     }

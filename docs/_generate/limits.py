@@ -57,7 +57,8 @@ def _site() -> str:
     return """(limits-site)=
 ## A site's file
 
-A text file in TOML, one table for each limit, every field required. `source` may be any words there.
+A text file in TOML, one table for each limit, every field below required. `source` may be any words
+there. `per_day = true` makes it an allowance for a day: an exposure that lasts longer is not judged by it.
 
 ```text
 [[limit]]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import os
 from collections.abc import Iterable
 from dataclasses import dataclass
@@ -32,6 +33,9 @@ _FIELDS: dict[str, type | tuple[type, ...]] = {
     "provenance": str,
     "source": str,
 }
+
+#: Fields that may be left out, and what is meant then.
+_OPTIONAL: dict[str, bool | str] = {"per_day": False, "model": ""}
 
 
 @dataclass(frozen=True)
@@ -64,6 +68,10 @@ class Limit:
         How the number is known.
     source : str
         Key of ``sources.toml``, or free text in a site's file.
+    per_day : bool
+        True if it allows so much in a day: an exposure that lasts longer is not judged by it.
+    model : str
+        Tissue model whose limit it is, for the quantity ``limit_fraction``; "" otherwise.
     site : bool
         True if it comes from the caller's own file.
     """
@@ -81,6 +89,8 @@ class Limit:
     conditions: str
     provenance: str
     source: str
+    per_day: bool = False
+    model: str = ""
     site: bool = False
 
 
@@ -138,9 +148,10 @@ def load(limits: str | os.PathLike[str] | Iterable[Any] = "default") -> tuple[Li
     return tuple(found)
 
 
-def _shipped() -> list[Limit]:
+@functools.cache
+def _shipped() -> tuple[Limit, ...]:
     text = resources.files("gasphys.limits").joinpath("default.toml").read_text(encoding="utf-8")
-    return _limits(parse_toml(text, "gasphys/limits/default.toml"), site=False)
+    return tuple(_limits(parse_toml(text, "gasphys/limits/default.toml"), site=False))
 
 
 def _file(path: str | os.PathLike[str]) -> list[Limit]:
@@ -166,13 +177,26 @@ def _limit(row: dict[str, Any], file: TomlFile, number: int, site: bool) -> Limi
         return file.error(message, remedy, key=key, table="limit", number=number)
 
     for key in row:
-        if key not in _FIELDS:
-            raise refuse(key, str(unknown_name("field of a limit", key, _FIELDS)), "correct the field")
+        if key not in _FIELDS and key not in _OPTIONAL:
+            raise refuse(
+                key, str(unknown_name("field of a limit", key, [*_FIELDS, *_OPTIONAL])), "correct the field"
+            )
     for key, kind in _FIELDS.items():
         if key not in row:
             raise refuse(key, f"the limit has no {key}", f"add {key} = ...")
         if not isinstance(row[key], kind) or isinstance(row[key], bool):
             raise refuse(key, f"{key} = {row[key]!r} is of the wrong kind", f"correct {key}")
+    for key in _OPTIONAL:
+        default = _OPTIONAL[key]
+        if type(row.get(key, default)) is not type(default):
+            remedy = "write true or false" if default is False else "write a name in quotes"
+            raise refuse(key, f"{key} = {row[key]!r} is of the wrong kind", remedy)
+    if (row["quantity"] == "limit_fraction") != bool(row.get("model")):
+        raise refuse(
+            "quantity",
+            "the limit of a tissue model",
+            'write quantity = "limit_fraction" and model = "us_navy_1957"',
+        )
     if row["comparison"] not in ("<=", ">="):
         raise refuse("comparison", f"comparison {row['comparison']!r}", "write <= or >=")
     for role in row["roles"]:
@@ -199,4 +223,5 @@ def _limit(row: dict[str, Any], file: TomlFile, number: int, site: bool) -> Limi
     if not low <= value <= high:
         raise refuse("value", str(one.range_error(value)), "correct the value or its unit")
     kept = {k: row[k] for k in _FIELDS if k not in ("value", "roles")}
+    kept |= {k: row.get(k, default) for k, default in _OPTIONAL.items()}
     return Limit(**kept, value=value, published_value=published, roles=tuple(row["roles"]), site=site)

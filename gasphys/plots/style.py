@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import functools
+import io
 import os
 from typing import Any
 
@@ -57,7 +59,16 @@ def new_figure(width: float = 8.0, height: float = 5.0) -> Any:
     """
     from matplotlib.figure import Figure
 
-    return Figure(figsize=(width, height), layout="constrained", facecolor="white")
+    figure: Any = Figure(figsize=(width, height), layout="constrained", facecolor="white")
+    # A notebook shows a figure by itself only where pyplot keeps global state.
+    figure._repr_png_ = functools.partial(_png, figure)
+    return figure
+
+
+def _png(figure: Any) -> bytes:
+    with io.BytesIO() as file:
+        figure.savefig(file, format="png", dpi=100)
+        return file.getvalue()
 
 
 def caution_line(figure: Any) -> None:

@@ -77,6 +77,8 @@ class Number:
         Quantity: its possible range is what the blank takes, its usual range what the slider spans.
     units : tuple of str
         Units to choose from, the one shown at first in front; none: the quantity's own.
+    whole : bool
+        Whether it counts something: a part of one is refused.
 
     Examples
     --------
@@ -86,6 +88,7 @@ class Number:
 
     quantity_name: str
     units: tuple[str, ...] = ()
+    whole: bool = False
 
     @property
     def quantity(self) -> Quantity:
@@ -121,6 +124,8 @@ class Number:
         value = float(self.quantity.from_unit(number, given or unit))
         if not self.quantity.possible[0] <= value <= self.quantity.possible[1]:
             raise self.quantity.range_error(value)
+        if self.whole and value != round(value):
+            raise GasphysError(f"{self.quantity_name} = {shown(value)} is not a whole number")
         return value
 
     def show(self, value: float, unit: str) -> str:
@@ -301,6 +306,8 @@ class App(abc.ABC):
     name: ClassVar[str]
     #: Variable whose working can be shown, to the words for it.
     explained: ClassVar[Mapping[str, str]] = {}
+    #: Dimension along which the CSV file has its lines; "" where there is only one.
+    rows: ClassVar[str] = ""
     #: Size of the picture [inch].
     size: ClassVar[tuple[float, float]] = (7.4, 4.8)
 
@@ -571,7 +578,7 @@ class App(abc.ABC):
         ds = self.compute()
         if ending == ".nc":
             return bytes(ds.to_netcdf(engine="scipy"))
-        along = [n for n in ds.data_vars if len(ds[n].dims) == 1]
+        along = [n for n in ds.data_vars if len(ds[n].dims) == 1 and self.rows in ("", *ds[n].dims)]
         table = ds[along].to_dataframe().reset_index()
         table.columns = [
             f"{c} [{ds[c].attrs['units']}]" if "units" in ds[c].attrs else c for c in table.columns

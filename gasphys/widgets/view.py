@@ -156,7 +156,7 @@ class View:
         row: list[Any]
         if isinstance(blank, Name):
             entry = ipw.Combobox(options=list(blank.offered), continuous_update=False, tooltip=name)
-            entry.layout.width = "8rem"
+            entry.layout.width = f"{max(8.0, 0.62 * max(map(len, blank.offered)) + 1.0):.1f}rem"
         else:
             entry = ipw.Text(continuous_update=False, tooltip=blank.quantity.long_name)
             entry.layout.width = "6rem"

@@ -63,6 +63,33 @@ def test_carbon_monoxide_takes_its_share_of_hemoglobin(hemoglobin, cohb):
     assert left + hemoglobin * cohb == pytest.approx(hemoglobin)
 
 
+@covers("blood.o2_saturation_beside_cohb", "blood.liganded_fraction")
+@given(po2=st.floats(0.05, 300.0), cohb=st.floats(0.01, 0.9), ph=st.floats(7.1, 7.6))
+def test_both_laws_of_haldane_hold(po2, cohb, ph):
+    """Whatever M is: the PCO that the ratio asks for puts the sum where the curve of O2 alone stands."""
+    left = blood.o2_saturation_beside_cohb(po2, cohb, ph)
+    o2hb = left * (1.0 - cohb)
+    affinity = 218.0
+    pco = cohb / o2hb * po2 / affinity
+    together = blood.o2_saturation(po2 + affinity * pco, ph=ph)
+    assert together == pytest.approx(blood.liganded_fraction(left, cohb), rel=1e-9)
+    assert together == pytest.approx(o2hb + cohb, rel=1e-9)
+    # The curve of what is left stands to the left of the curve without CO.
+    assert left >= blood.o2_saturation(po2, ph=ph) * (1.0 - 1e-12)
+
+
+@covers("blood.o2_content_beside_cohb", "blood.po2_at_content_beside_cohb")
+@given(po2=st.floats(0.01, 300.0), cohb=st.floats(0.0, 0.9), hemoglobin=st.floats(0.0, 20.0))
+def test_content_beside_carbon_monoxide_comes_back(po2, cohb, hemoglobin):
+    content = blood.o2_content_beside_cohb(po2, hemoglobin, cohb)
+    assert blood.po2_at_content_beside_cohb(content, hemoglobin, cohb) == pytest.approx(po2, rel=1e-8)
+    assert blood.o2_content_beside_cohb(po2 * 1.001, hemoglobin, cohb) > content
+    # At a low PO2 a little carbon monoxide makes blood hold *more* O2; never more than what is left can.
+    room = blood.bound_o2(1.0, blood.functional_hemoglobin(hemoglobin, cohb))
+    assert content - blood.dissolved_o2(po2) <= room * (1.0 + 1e-12)
+    assert blood.o2_content_beside_cohb(po2, hemoglobin, 0.0) == blood.o2_content(po2, hemoglobin)
+
+
 @covers("blood.mixed_venous_o2_content", "blood.mixed_venous_co2_content", "blood.co2_load")
 @given(arterial=st.floats(10.0, 30.0), taken=differences, exchange=st.floats(0.7, 1.1))
 def test_the_exchange_ratio_is_that_of_the_two_gases(arterial, taken, exchange):
@@ -98,7 +125,7 @@ def test_blood_of_a_known_state_is_found_from_its_contents(state):
         assume(False)
     assume(7.05 < ph < 7.65)
     hemoglobin, excess = state["hemoglobin"], state["base_excess"]
-    found = blood.mixed_venous_ph(co2, excess, hemoglobin, o2, hemoglobin)
+    found = blood.mixed_venous_ph(co2, excess, hemoglobin, o2)
     assert found == pytest.approx(ph, abs=1e-9)
     assert blood.po2_at_content(o2, hemoglobin, ph=found) == pytest.approx(po2, rel=1e-7)
     saturation = blood.o2_saturation(po2, ph=found)
@@ -112,9 +139,9 @@ def test_bohr_and_haldane_pull_the_right_way(state, less):
     try:
         _, _, co2, o2 = _contents(**state)
         hemoglobin, excess = state["hemoglobin"], state["base_excess"]
-        before = blood.mixed_venous_ph(co2, excess, hemoglobin, o2, hemoglobin)
-        acid = blood.mixed_venous_ph(co2 + less, excess, hemoglobin, o2, hemoglobin)
-        lower = blood.mixed_venous_ph(co2, excess, hemoglobin, o2 - min(less, 0.3 * o2), hemoglobin)
+        before = blood.mixed_venous_ph(co2, excess, hemoglobin, o2)
+        acid = blood.mixed_venous_ph(co2 + less, excess, hemoglobin, o2)
+        lower = blood.mixed_venous_ph(co2, excess, hemoglobin, o2 - min(less, 0.3 * o2))
     except GasphysError:
         assume(False)
     assert acid < before
