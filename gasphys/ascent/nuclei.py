@@ -20,8 +20,8 @@ from gasphys.bubbles.equations import (
     mixed_gradient,
     surface_excess_time,
 )
-from gasphys.bubbles.nuclei import begin, crush, supersaturation_start
-from gasphys.bubbles.varying_permeability import VaryingPermeability
+from gasphys.bubbles.gas_nuclei import begin, crush, supersaturation_start
+from gasphys.bubbles.model_choices import VaryingPermeability
 from gasphys.constants import LN2
 from gasphys.exposure import Exposure
 from gasphys.policy import outside_validity

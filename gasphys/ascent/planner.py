@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from gasphys.ascent.equations import gradient_at_depth
 from gasphys.ascent.rules import Rules, Source, as_measured, read_gases
-from gasphys.bubbles.varying_permeability import VaryingPermeability, bubble_model
+from gasphys.bubbles.model_choices import VaryingPermeability, bubble_model
 from gasphys.errors import ExposureError, NotReachableError, ValidityError
 from gasphys.exposure import Exposure, Pieces
 from gasphys.gas import FORMULAS, Gas
@@ -136,8 +136,9 @@ def plan(
     depth is the listed one with the shallowest deepest depth that is not shallower than it; it is switched to
     on passing that depth, also without a stop. A dive within the no-stop time (by the high gradient) gets no
     stop. With two gradients the first stop is found with the low one and kept. In a batch an ascent that
-    cannot be planned is NaN with a warning. Not a table, not tested in the water; nothing here knows bubbles,
-    work or cold.
+    cannot be planned is NaN with a warning. Not a table, not tested in the water; only a bubble model knows
+    bubbles, none knows work or cold. Of a bubble model ``stops`` also holds radii, gradients, passes and the
+    depth where supersaturation begins; in the trial of stops moved deeper by one, the deeper ones did worse.
 
     Examples
     --------
@@ -222,7 +223,8 @@ class _Planner:
         f = depth_at_pressure.pick(water=self._water())  # type: ignore[attr-defined]
         inputs = {"ambient_pressure": pressure, "surface_pressure": self.surface, "latitude": 45.0}
         values = np.asarray(f.raw(*[np.asarray(inputs[a.name]) for a in f.arguments]), dtype=float)
-        return np.asarray(np.round(values, 9))  # 30 msw is 30, not 30.000000000000004
+        rounded = np.round(values, 9)  # 30 msw is 30, not 30.000000000000004; others stay as they are
+        return np.where(np.abs(values - rounded) <= 1e-11, rounded, values)
 
     def _water(self) -> str:
         return {"msw": "msw", "fsw": "fsw", "m": self.exposure.water}[self.exposure.depth_unit]

@@ -256,10 +256,11 @@ def assumptions(plan: Plan) -> list[str]:
     known = str(plan.stops.attrs["provenance"]).replace("_", ", ")
     start = model.start if plan.initial is None else "as given"
     tested = " and ".join(word.replace("_", " ") for word in model.tested)
+    unknown = "" if "allowed_gradient" in plan.stops else "bubbles, "
     return [
         f"Tissues at the start: {start}.",
         f"Limit tested {tested}; depth: {model.depth}.",
-        "Not considered: bubbles, work, cold, dehydration, the person.",
+        f"Not considered: {unknown}work, cold, dehydration, the person.",
         f"Weakest provenance of the model's numbers: {known}.",
         *(
             [f"Evidence: {model.evidence}."]

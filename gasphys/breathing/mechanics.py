@@ -786,6 +786,11 @@ def external_work_limit(
 def external_work_share(external_work: Value, external_work_limit: Value) -> Value:
     """Share of a limit that an external work of breathing takes.
 
+    Notes
+    -----
+    The measured work of an apparatus over the limit of an authority at the same ventilation. Not a share of
+    what a diver can do: it says nothing of the work inside the lungs.
+
     Examples
     --------
     >>> external_work_share(1.0, 2.0)

@@ -31,6 +31,7 @@ from gasphys.bubbles.equations import (
     trapped_gas_pressure,
     unstirred_boundary,
 )
+from gasphys.bubbles.gas_nuclei import first_supersaturated_depth, nuclei
 from gasphys.bubbles.grades import (
     KISMAN_MASUREL,
     Grade,
@@ -38,16 +39,15 @@ from gasphys.bubbles.grades import (
     kisman_masurel_grade,
     median_grade,
 )
-from gasphys.bubbles.growth import TissueGas, growth
-from gasphys.bubbles.nuclei import first_supersaturated_depth, nuclei
-from gasphys.bubbles.saturation import saturation_travel
-from gasphys.bubbles.varying_permeability import (
+from gasphys.bubbles.growing_bubble import TissueGas, growth
+from gasphys.bubbles.model_choices import (
     EVIDENCE,
     VaryingPermeability,
     bubble_model,
     models,
     varying_permeability,
 )
+from gasphys.bubbles.saturation import saturation_travel
 
 __all__ = [
     "EVIDENCE",

@@ -213,7 +213,7 @@ def _exposure(
 ) -> Exposure:
     if is_log:
         return Exposure.from_csv(name, surface_pressure=surface or None)
-    more = {"surface_pressure": surface} if surface else {}
+    more: dict[str, Any] = {"surface_pressure": surface} if surface else {}
     return treatment(name, counts[0], counts[1], attendant=attendant, descent=descent, **more)
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from gasphys.risk.ear import InnerEar, inner_ear
 from gasphys.risk.equations import (
     hazard,
     hill_probability,
@@ -24,7 +25,6 @@ from gasphys.risk.fitting import (
     null_log_likelihood,
     simulate,
 )
-from gasphys.risk.inner_ear import InnerEar, inner_ear
 from gasphys.risk.model import Compartment, HazardModel, probability, sampled_hazard
 from gasphys.risk.outcomes import Outcome, read_outcomes
 

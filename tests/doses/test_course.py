@@ -201,7 +201,7 @@ SESSION = '[[session]]\ndate = 2042-03-03\ntime = 08:00:00\nschedule = "usn_9"\n
         (SESSION + "\n" + SESSION.replace("08:00:00", '"8"'), 8, "not a time of day"),
         (SESSION + "\n" + SESSION.replace("2042-03-03", '"tomorrow"'), 7, "not a date"),
         (SESSION + "\n" + SESSION.replace("08", "09"), 8, "begins before"),
-        (SESSION + "extensions_deep = 1\n", 4, "allows 0 to 0"),
+        (SESSION + "extensions_deep = 6\n", 4, "allows 0 to 5"),
     ],
 )
 def test_toml_errors_tell_the_line(tmp_path: Path, text: str, line: int | None, words: str) -> None:

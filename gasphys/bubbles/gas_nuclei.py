@@ -23,7 +23,7 @@ from gasphys.bubbles.equations import (
     minimum_gradient,
     regenerated_radius,
 )
-from gasphys.bubbles.varying_permeability import EVIDENCE, VaryingPermeability, varying_permeability
+from gasphys.bubbles.model_choices import EVIDENCE, VaryingPermeability, varying_permeability
 from gasphys.errors import ExposureError
 from gasphys.exposure import Exposure
 from gasphys.maths import find_root

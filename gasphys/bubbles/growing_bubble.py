@@ -24,8 +24,8 @@ from gasphys.bubbles.equations import (
     squared_radius_rate,
     unstirred_boundary,
 )
+from gasphys.bubbles.model_choices import varying_permeability
 from gasphys.bubbles.stiff import integrate
-from gasphys.bubbles.varying_permeability import varying_permeability
 from gasphys.constants import ATMOSPHERE, LN2
 from gasphys.errors import ExposureError, RangeError, ValidityError, unknown_name
 from gasphys.exposure import Exposure
