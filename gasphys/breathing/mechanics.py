@@ -196,7 +196,7 @@ def airway_resistance(
 
     Notes
     -----
-    R = K1 + K2 |V|. Grows little with density at low flow, much at high flow: from 1 to 4.6 atm abs of air
+    R = K1 + K2 abs(V). Grows little with density at low flow, much at high flow: from 1 to 4.6 atm abs of air
     19 % at rest and 75 % in exercise of 100 W were measured (Held & Pendergast 2013, abstract read); the
     default coefficients give 72 % at 2 L/s. Submersion itself lowered it, which is not modeled.
 
@@ -231,7 +231,7 @@ def airway_pressure(
 
     Notes
     -----
-    dP = K1 V + K2 V |V|, odd in flow. In thin gas less pressure is needed for the same flow because less
+    dP = K1 V + K2 V abs(V), odd in flow. In thin gas less pressure is needed for the same flow because less
     of it is turbulent (Otis & Bembower 1949, heliox and altitude).
 
     Examples
