@@ -12,18 +12,21 @@ from __future__ import annotations
 import argparse
 import ast
 import contextlib
+import gc
 import os
 import re
 import shutil
+import subprocess
 import sys
 import tempfile
 import time
 import tomllib
+import types
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
-ROOT = Path(__file__).parents[1]
+ROOT = Path(__file__).resolve().parents[1]
 ACCEPTED = ROOT / ".ci" / "mutation_survivors.toml"
 
 #: Tests that speak of a file, by the beginning of its path, quickest first: the first match counts.
@@ -123,6 +126,10 @@ class Mutant:
     path: str
     label: str
     text: str
+    #: Name, first line and source of the one function that is broken; "" where it is not of one body.
+    function: str = ""
+    line: int = 0
+    body: str = ""
 
 
 def code_files() -> Iterator[Path]:
@@ -194,8 +201,21 @@ def break_code(path: Path) -> Iterator[Mutant]:
         node, kind = _places(tree)[number]
         where = f"line {node.lineno}"  # type: ignore[attr-defined]
         shown = ast.unparse(node)[:60]
+        around = [
+            f
+            for f in tree.body
+            if isinstance(f, ast.FunctionDef) and any(n is node for s in f.body for n in ast.walk(s))
+        ]
         _break(node, kind)
-        yield Mutant(str(path.relative_to(ROOT)), f"{where}: {kind}: {shown}", ast.unparse(tree))
+        label, whole = f"{where}: {kind}: {shown}", ast.unparse(tree)
+        name, line, body = "", 0, ""
+        if around:
+            # Decorators make a shell of the same body: the body alone is compiled and put in its place.
+            f = around[0]
+            name, line = f.name, f.decorator_list[0].lineno if f.decorator_list else f.lineno
+            f.decorator_list = []
+            body = ast.unparse(f)
+        yield Mutant(str(path.relative_to(ROOT)), label, whole, name, line, body)
 
 
 def _places(tree: ast.AST) -> list[tuple[ast.AST, str]]:
@@ -280,17 +300,23 @@ def tests_for(path: str) -> list[str]:
     raise KeyError(f"{path}: say in TESTS which tests speak of it")
 
 
-def survives(mutant: Mutant, copy: Path) -> bool:
-    """Run the tests on the broken copy in a fork of this process; True if all pass."""
+def survives(mutant: Mutant, copy: Path, warm: bool = False) -> bool:
+    """Run the tests on the broken copy in a fork of this process; True if all pass.
+
+    In a warm process, which has imported the package, the body of the one function is exchanged instead.
+    """
     target = copy / mutant.path
     original = target.read_bytes()
-    target.write_text(mutant.text, encoding="utf-8")
+    if not warm:
+        target.write_text(mutant.text, encoding="utf-8")
     try:
         for tests in tests_for(mutant.path):
             child = os.fork()
             if child == 0:
                 status = 70
                 try:
+                    if warm:
+                        _exchange(mutant)
                     status = _run(copy, tests)
                 finally:  # never leave through the parent's clean-up
                     os._exit(status)
@@ -300,6 +326,42 @@ def survives(mutant: Mutant, copy: Path) -> bool:
         return True
     finally:
         target.write_bytes(original)
+
+
+def _exchange(mutant: Mutant) -> None:
+    """Give every function made of one body the broken code: shells, kernels and bodies that call it."""
+    code = next(
+        c
+        for c in compile(mutant.body, mutant.path, "exec").co_consts
+        if isinstance(c, types.CodeType) and c.co_name == mutant.function
+    )
+    found = 0
+    for f in gc.get_objects():
+        if not isinstance(f, types.FunctionType):
+            continue
+        old = f.__code__
+        if (
+            old.co_name == mutant.function
+            and old.co_firstlineno == mutant.line
+            and old.co_filename.endswith(mutant.path)
+        ):
+            f.__code__ = code.replace(
+                co_argcount=old.co_argcount,
+                co_kwonlyargcount=old.co_kwonlyargcount,
+                co_filename=old.co_filename,
+                co_firstlineno=old.co_firstlineno,
+            )
+            found += 1
+    assert found, f"{mutant.path}: {mutant.function} not found"
+
+
+def _warm(copy: Path) -> None:
+    """Import the package of the copy with every equation."""
+    os.chdir(copy)
+    sys.path.insert(0, str(copy))
+    import gasphys
+
+    gasphys.equations()
 
 
 def _run(copy: Path, tests: str) -> int:
@@ -349,8 +411,14 @@ def _preload() -> None:
 def work(mutants: list[Mutant], copy: Path, report: Path) -> None:
     """Try mutants one after the other; a file's own tests must pass before it is broken."""
     whole: dict[str, bool] = {}
+    # What has to be imported anew comes first, in a process that has not imported the package.
+    mutants = sorted(mutants, key=lambda m: bool(m.function))
+    warm = False
     with report.open("w", encoding="utf-8") as out:
         for mutant in mutants:
+            if mutant.function and not warm:
+                _warm(copy)
+                warm = True
             tests = " ".join(tests_for(mutant.path))
             if tests not in whole:
                 unbroken = (copy / mutant.path).read_text(encoding="utf-8")
@@ -358,10 +426,24 @@ def work(mutants: list[Mutant], copy: Path, report: Path) -> None:
             if not whole[tests]:
                 out.write(f"not tried\t{mutant.path}\t{mutant.label}\n")
                 continue
-            out.write(
-                f"{'survived' if survives(mutant, copy) else 'killed'}\t{mutant.path}\t{mutant.label}\n"
-            )
+            state = "survived" if survives(mutant, copy, warm) else "killed"
+            if state == "survived" and warm:  # once more with everything imported anew
+                state = _again(mutant, copy)
+            out.write(f"{state}\t{mutant.path}\t{mutant.label}\n")
             out.flush()
+
+
+def _again(mutant: Mutant, copy: Path) -> str:
+    """Try one mutant in a new interpreter."""
+    text = (
+        f"import sys; sys.path.insert(0, {str(ROOT / '.ci')!r})\n"
+        "import mutations as m, pathlib\n"
+        f"one = m.Mutant({mutant.path!r}, '', open({str(copy / 'mutant.txt')!r}, encoding='utf-8').read())\n"
+        f"sys.exit(10 if m.survives(one, pathlib.Path({str(copy)!r})) else 20)"
+    )
+    (copy / "mutant.txt").write_text(mutant.text, encoding="utf-8")
+    done = subprocess.run([sys.executable, "-c", text], check=False, cwd=copy)
+    return {10: "survived", 20: "killed"}.get(done.returncode, "not tried")
 
 
 def main() -> int:

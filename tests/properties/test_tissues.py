@@ -57,6 +57,8 @@ def test_arterial_inert_gas_is_never_negative(p, o2, co2):
     found = tissues.arterial_inert_pressure(p, o2 * p, co2)
     assert found >= 0.0
     assert tissues.arterial_inert_pressure(p, p, co2) == 0.0
+    moist = tissues.arterial_inert_pressure(p, o2 * p, co2, 6.0)
+    assert moist == pytest.approx(max(found - 6.0, 0.0), abs=1e-9)
     if p * (1.0 - o2) > co2:
         assert found == pytest.approx((1.0 - o2) * p - co2, rel=1e-9, abs=1e-9)
 
