@@ -14,7 +14,15 @@ from typing import Literal
 
 from gasphys.errors import ProvenanceError, ValidityError, ValidityWarning, unknown_name
 
-__all__ = ["PROVENANCE", "outside_validity", "provenance", "require_provenance", "validity", "weakest"]
+__all__ = [
+    "PROVENANCE",
+    "outside_validity",
+    "provenance",
+    "require_provenance",
+    "validity",
+    "validity_mode",
+    "weakest",
+]
 
 #: How a number is known, strongest first: primary text seen; arithmetic from a stated formula;
 #: seen quoted elsewhere; remembered, with confidence.
@@ -115,6 +123,23 @@ def provenance(at_least: str) -> Iterator[None]:
     finally:
         STRICT.active -= 1
         _weakest_allowed.reset(token)
+
+
+def validity_mode() -> Literal["raise", "warn", "ignore"]:
+    """Return the mode that holds now: what work handed to another thread or process must take along.
+
+    Returns
+    -------
+    str
+        As :func:`validity` takes it.
+
+    Examples
+    --------
+    >>> with validity("ignore"):
+    ...     validity_mode()
+    'ignore'
+    """
+    return _mode.get()  # type: ignore[return-value]
 
 
 def require_provenance(word: str, what: str) -> None:

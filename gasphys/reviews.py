@@ -263,6 +263,8 @@ def _limit_fraction(
             nothing, nothing, reason=f"{chosen.name} refuses a gas of the exposure: {chosen.refuses}"
         )
     rule = chosen.short_deep
+    # As of one scenario: a gas the set does not take is not judged.
+    status = np.where(np.broadcast_to(refused, shape), "not judged", "not applicable")
     if rule is not None and rule.action == "refuse":
         refused = refused | blank
     begin = np.broadcast_to(initial_state(chosen, None, exposure), (*shape, *chosen.half_time.shape))
@@ -301,7 +303,7 @@ def _limit_fraction(
         level = np.broadcast_to(surface, lead)[mask]
         cells = (*lead, *chosen.half_time.shape)
         columns = {c: getattr(by_piece, c) for c in TISSUE_FACTORS.values()}
-        wide = {c: np.broadcast_to(v, cells)[mask] for c, v in columns.items() if v.ndim > 2}
+        wide: dict[str, Any] = {c: np.broadcast_to(v, cells)[mask] for c, v in columns.items() if v.ndim > 2}
         own = replace(by_piece, **wide)
 
         def one(share: Array) -> Array:
@@ -314,7 +316,7 @@ def _limit_fraction(
         share_of(held[..., part, :, :], p) for part, p in ((slice(None, -1), low), (slice(1, None), high))
     )
     why = f"{chosen.name} refuses it" if refused.any() else ""
-    return Trace(start, end, within, some, status="not applicable", undefined=refused, why=why)
+    return Trace(start, end, within, some, status=status, undefined=refused, why=why)
 
 
 #: How each reviewed quantity follows from an exposure.
@@ -637,7 +639,7 @@ def _with_article(word: str) -> str:
 
 def _measured(limit: Limit, trace: Trace, pieces: Pieces) -> dict[str, Any]:
     sign = 1.0 if limit.comparison == "<=" else -1.0
-    start, end = np.broadcast_arrays(sign * trace.start, sign * trace.end)
+    start, end, _ = np.broadcast_arrays(sign * trace.start, sign * trace.end, pieces.duration)
     bound = sign * limit.value
     edge = bound + abs(limit.value) * _ROUNDING
     real = np.broadcast_to(pieces.duration > 0.0, start.shape)

@@ -18,7 +18,7 @@ from gasphys.real_gas import density
 from gasphys.supply.bank import Demand, unknown_rate
 from gasphys.supply.equations import loop_diluent, open_circuit_use
 
-__all__ = ["Account", "free_liters_per_mole", "of_exposure", "open_account"]
+__all__ = ["Account", "free_liters_per_mole", "of_exposure", "open_account", "piece_amounts"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -157,9 +157,7 @@ class Account:
             used = used + np.where(on, columns.breathed(share), 0.0)
         if fills.any():
             reached = columns.start + (columns.end - columns.start) * share
-            free = _diluent(self.demand.loop_volume, columns.start, reached)
-            kelvin = self.demand.gas_temperature + float(ZERO_CELSIUS)
-            used = used + np.where(fills, free * float(ATMOSPHERE) / (float(GAS_CONSTANT) * kelvin), 0.0)
+            used = used + np.where(fills, _filled(self.demand, columns.start, reached), 0.0)
         if gas == self.oxygen:
             used = used + np.where(loop, columns.uptake * columns.minutes * share * MOL_STPD, 0.0)
         return np.asarray(used * float(self.demand.persons))
@@ -230,6 +228,21 @@ def open_account(exposure: Exposure, demand: Demand, *, as_if_open: bool = False
     >>> round(float(account.used[0, 0, -1]), 2)
     8.32
     """
+    columns, loop = _columns(exposure, demand, as_if_open)
+    mix, real = columns.fractions, columns.minutes > 0.0
+    gases, which = _gases(mix, real)
+    oxygen = -1
+    if (loop & real).any():
+        pure = Gas(oxygen=1.0)
+        if pure not in gases:
+            gases = (*gases, pure)
+        oxygen = gases.index(pure)
+    mine = np.stack([which == g for g in range(len(gases))])
+    return Account(exposure, gases, columns, mine & ~loop, mine & loop, loop & real, oxygen, demand)
+
+
+def _columns(exposure: Exposure, demand: Demand, as_if_open: bool) -> tuple[_Columns, Mask]:
+    """Return what the account needs of pieces, and which of them are on a loop."""
     n = len(exposure.part)
     rows = int(np.prod([len(exposure.coords[d]) for d in exposure.dims], dtype=int))
     shape = (*(len(exposure.coords[d]) for d in exposure.dims), n)
@@ -255,15 +268,49 @@ def open_account(exposure: Exposure, demand: Demand, *, as_if_open: bool = False
     columns = _Columns(
         minutes, flat(c["start_pressure"]), flat(c["end_pressure"]), volume, temperature, vapor, uptake, mix
     )
-    gases, which = _gases(mix, real)
-    oxygen = -1
-    if (loop & real).any():
-        pure = Gas(oxygen=1.0)
-        if pure not in gases:
-            gases = (*gases, pure)
-        oxygen = gases.index(pure)
-    mine = np.stack([which == g for g in range(len(gases))])
-    return Account(exposure, gases, columns, mine & ~loop, mine & loop, loop & real, oxygen, demand)
+    return columns, loop
+
+
+def piece_amounts(exposure: Exposure, demand: Demand) -> tuple[Array, Array]:
+    """Return moles of gas used in every piece, of however many mixtures.
+
+    Parameters
+    ----------
+    exposure : Exposure
+        Pieces.
+    demand : Demand
+        Who breathes how much.
+
+    Returns
+    -------
+    tuple of array
+        ``(scenario, piece)`` [mol]: gas of the piece, on a loop its diluent; oxygen of loops.
+
+    Raises
+    ------
+    ExposureError
+        If a piece has no demand.
+
+    Examples
+    --------
+    >>> piece_amounts(Exposure.start("air").stay(10), Demand(surface_rate=20.0))[0].round(2)
+    array([[8.32]])
+    """
+    columns, loop = _columns(exposure, demand, False)
+    real = columns.minutes > 0.0
+    used = np.where(real, np.where(loop, 0.0, columns.breathed(1.0)), 0.0)
+    oxygen = np.zeros_like(used)
+    if loop.any():
+        used = np.where(real & loop, _filled(demand, columns.start, columns.end), used)
+        oxygen = np.where(real & loop, columns.uptake * columns.minutes * MOL_STPD, 0.0)
+    return used * float(demand.persons), oxygen * float(demand.persons)
+
+
+def _filled(demand: Demand, start: Array, end: Array) -> Array:
+    """Moles of diluent that fill a loop from one pressure to another; none on the way up."""
+    kelvin = demand.gas_temperature + float(ZERO_CELSIUS)
+    free = _diluent(demand.loop_volume, start, end)
+    return np.asarray(free * float(ATMOSPHERE) / (float(GAS_CONSTANT) * kelvin))
 
 
 def _gases(mix: Array, real: Mask) -> tuple[tuple[Gas, ...], NDArray[np.int64]]:

@@ -360,7 +360,8 @@ def crossing(
         inside = (root - low) * _STEPS
         part[changes] = np.where(bad[changes], inside, 1.0 - inside)
         begins[changes] = np.where(bad[changes], low, root)
-    when = times[:, :-1, None] + begins * minutes[..., None]
+    with np.errstate(invalid="ignore"):  # never, in a piece of no duration
+        when = times[:, :-1, None] + begins * minutes[..., None]
     last = times[:, -1:]
     # At a boundary the stock may be below only when the next piece begins, or only when one ends.
     ends = np.where(bad[..., -1], times[:, 1:], np.inf)

@@ -122,11 +122,35 @@ def test_scenarios_equal_single_reviews() -> None:
         single = review(
             Exposure.start("nitrox 48").travel(depth=one, rate=10).stay(30).travel(depth=0, rate=9)
         )
+        np.testing.assert_array_equal(many.status.isel(depth=k), single.status)
         for name in ("worst", "margin", "time_of_worst", "first_crossing", "time_beyond"):
             got, expected = many[name].isel(depth=k).values, single[name].values
-            # NOAA is refused for all scenarios where one leaves its table.
-            noaa = np.char.startswith(single.limit.values, "noaa")
-            np.testing.assert_allclose(got[~noaa], expected[~noaa], rtol=1e-9, err_msg=name)
+            np.testing.assert_allclose(got, expected, rtol=1e-12, err_msg=name)
+
+
+def test_scenarios_that_a_limit_is_not_for_leave_the_others_alone() -> None:
+    """One without helium, one on pure oxygen, one with CO2, one longer than a day, in one batch."""
+    mix = xr.DataArray(
+        [[0.18, 0.37, 0.45, 0.0], [1.0, 0.0, 0.0, 0.0], [0.21, 0.78, 0.0, 0.01], [0.21, 0.79, 0.0, 0.0]],
+        dims=("case", "gas"),
+        coords={"gas": ["O2", "N2", "He", "CO2"]},
+        attrs={"units": "1"},
+    )
+    minutes = xr.DataArray([20.0, 30.0, 10.0, 2000.0], dims="case", attrs={"units": "min"})
+
+    def dive(gas: xr.DataArray, time: object) -> Exposure:
+        start = Exposure.start(gas, depth_unit="fsw")
+        return start.travel(depth=20, minutes=1).stay(time).travel(depth=0, minutes=1)
+
+    whole = dive(mix, minutes)
+    for role in ("diver", "attendant"):
+        many = review(whole, role=role)
+        for k, one in enumerate(whole.scenarios()):
+            single = review(one, role=role)
+            np.testing.assert_array_equal(many.status.isel(case=k), single.status)
+            for name in ("worst", "margin", "first_crossing", "time_beyond"):
+                got, expected = many[name].isel(case=k).values, single[name].values
+                np.testing.assert_allclose(got, expected, rtol=1e-12, err_msg=name)
 
 
 def test_netcdf_round_trip(tmp_path) -> None:
