@@ -48,6 +48,14 @@ td.ribbon svg { position: absolute; inset: 0; width: 100%; height: 100%; }
 .dense { font-size: 6.9pt; line-height: 1.16; }
 .dense td { padding: 0.35mm 1mm; }
 .dense .box { min-height: 3.5mm; }
+.tight { font-size: 6.4pt; line-height: 1.12; }
+.tight td { padding: 0.2mm 1mm; }
+.tight .box { min-height: 3.3mm; }
+.tight .line { margin-bottom: 0.2mm; }
+.tight .outside { font-size: 6.1pt; }
+.dense .box { margin-bottom: 0.4mm; }
+.tight .box { margin-bottom: 0.2mm; }
+.tight .when b { font-size: 7pt; }
 .notes { columns: 2; column-gap: 7mm; }
 .notes section { break-inside: avoid; }
 .notes h2 { margin-top: 0; }
@@ -64,8 +72,8 @@ td.ribbon svg { position: absolute; inset: 0; width: 100%; height: 100%; }
 
 _WIDTHS = ("8mm", "31mm", "80mm", "25mm", "46mm")
 
-#: Phases a page holds in the larger type.
-_ROOMY = 8
+#: Phases a page holds in the larger type, and in the middle one.
+_ROOMY, _DENSE = 8, 13
 
 _HEADS = ("", "time, pressure", "Patient", "Attendant", "Chamber (CO2 surface equivalent)")
 
@@ -149,8 +157,8 @@ def _timeline(ds: xr.Dataset, phases: Sequence[int] | Any) -> str:
     heads = "".join(f"<th>{h}</th>" for h in _HEADS)
     rows = "".join(_row(ds, int(k), least, most) for k in phases)
     head = f"<colgroup>{columns}</colgroup><thead><tr>{heads}</tr></thead>"
-    dense = ' class="dense"' if len(phases) > _ROOMY else ""
-    return f"<table{dense}>{head}<tbody>{rows}</tbody></table>"
+    kind = "tight" if len(phases) > _DENSE else "dense" if len(phases) > _ROOMY else "roomy"
+    return f'<table class="{kind}">{head}<tbody>{rows}</tbody></table>'
 
 
 def _row(ds: xr.Dataset, k: int, least: float, most: float) -> str:

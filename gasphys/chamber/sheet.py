@@ -43,6 +43,7 @@ from gasphys.policy import validity
 from gasphys.quantities import attributes, dataset_attributes
 from gasphys.real_gas import cylinder_content, cylinder_pressure
 from gasphys.schedules import read_protocol, surface_intervals, treatment
+from gasphys.schedules.data import read_rows
 from gasphys.tissues import tensions
 from gasphys.units import convert
 
@@ -53,7 +54,7 @@ Array = NDArray[np.float64]
 LANES = ("patient", "attendant", "chamber")
 
 #: Most phases a page of the run holds; stays and cycles of longer tables are put together.
-PHASES = 14
+PHASES = 17
 
 #: Powers of density a ventilator's volume may follow: none (pressure modes) to the square root.
 _DENSITY_POWER = (0.0, 0.5)
@@ -995,6 +996,7 @@ def _attendant_notes(work: _Work, schedule: Any) -> list[str]:
         if given < owed:
             found.append(f"owed before the ascent {owed:g} min, only {given:g} min fit")
     name = str(schedule) if isinstance(schedule, str) else ""
+    found += _practice(work)
     with validity("ignore"):
         for model in MODELS:
             try:
@@ -1010,6 +1012,24 @@ def _attendant_notes(work: _Work, schedule: Any) -> list[str]:
     else:
         found.append("no interval before diving or flying is known for this schedule; the unit's own applies")
     return found
+
+
+def _practice(work: _Work) -> list[str]:
+    """What one center did at such pressures and bottom times; not a rule of an authority."""
+    highest = max(max(p.first_pressure, p.last_pressure) for p in work.phases)
+    up = [p.start for p in work.phases if p.travel < 0]
+    if not up or highest > 2.41 * float(ATMOSPHERE):
+        return []
+    bottom = up[-1]
+    rows = [r for r in read_rows("attendants.csv") if r["source"] == "witucki_2013"]
+    for row in rows:
+        if int(row["bottom_from"]) <= bottom < int(row["bottom_to"]) + 1:
+            minutes = f"{row['minutes']} min of oxygen" if int(row["minutes"]) else "no oxygen"
+            return [
+                f"one center's practice, not a rule: bottom time {bottom:.0f} min at 2.4 atm abs or less, "
+                f"{minutes} before the ascent (Witucki 2013, read)"
+            ]
+    return []
 
 
 def _air_notes(work: _Work, out: xr.Dataset) -> list[str]:

@@ -41,14 +41,18 @@ class EquationCurve:
         # A number written beside the axis would have to be added by the reader.
         self.axes.ticklabel_format(useOffset=False)
         self.solid = self.axes.plot([], [], color=ACCENT, linewidth=3.0, zorder=3)[0]
-        self.dotted = self.axes.plot([], [], color=ACCENT, linewidth=2.0, linestyle=(0, (1, 1.5)), zorder=3)[0]
+        self.dotted = self.axes.plot([], [], color=ACCENT, linewidth=2.0, linestyle=(0, (1, 1.5)), zorder=3)[
+            0
+        ]
         self.mark = self.axes.axvline(0.0, color=INK, linewidth=0.8, zorder=2)
         self.point = self.axes.plot([], [], "o", color=INK, markersize=6, zorder=4, clip_on=False)[0]
         self.at = self.axes.text(
             0.0, 1.02, "", transform=self.axes.get_xaxis_transform(), fontsize=9, color=INK, ha="center"
         )
 
-    def update(self, result: xr.DataArray, at: float, valid: Any = None, unit: str = "", x_unit: str = "") -> None:
+    def update(
+        self, result: xr.DataArray, at: float, valid: Any = None, unit: str = "", x_unit: str = ""
+    ) -> None:
         """Show another result.
 
         Parameters
@@ -91,7 +95,8 @@ class EquationCurve:
         self.point.set_data([xs[index]], [ys[index]])
         self.at.set_x(xs[index])
         self.at.set_text(f"{_short(float(xs[index]))} {'' if x_unit == '1' else x_unit}".rstrip())
-        low, high = (float(end) for end in (np.nanmin(ys), np.nanmax(ys)))
+        finite = ys[np.isfinite(ys)]
+        low, high = (float(finite.min()), float(finite.max())) if finite.size else (0.0, 1.0)
         room = 0.05 * (high - low) or 0.05 * abs(high) or 1.0
         self.axes.set_ylim(low - room, high + room)
         self.axes.set_xlim(float(xs[0]), float(xs[-1]))

@@ -9,7 +9,7 @@ import numpy as np
 import xarray as xr
 
 from gasphys.errors import GasphysError
-from gasphys.plots.style import ACCENT, INK, caution_line, new_figure, tidy
+from gasphys.plots.style import ACCENT, INK, PALE, caution_line, new_figure, tidy
 from gasphys.quantities import quantity
 from gasphys.units import convert
 
@@ -93,6 +93,11 @@ class OxygenCascade:
             )[0]
             for name, line in self.lines.items()
         }
+        # From a constant ratio, the line, to a constant shunt, the edge: what is not known.
+        self.bands = {
+            name: self.lines[name][0].axes.fill([], [], facecolor=PALE, edgecolor=ACCENT, linewidth=0.6)[0]
+            for name in ("arterial_po2", "arterial_dissolved_o2")
+        }
         self.at = upper.text(
             0.0, 1.02, "", transform=upper.get_xaxis_transform(), fontsize=9, color=INK, ha="center"
         )
@@ -120,7 +125,8 @@ class OxygenCascade:
             Along one dimension, as :func:`gasphys.gas_exchange.oxygenation` names them:
             ``ambient_pressure``, ``inspired_po2``, ``alveolar_po2``, ``arterial_po2``,
             ``arterial_o2_content``, ``arterial_dissolved_o2``. Where it holds
-            ``arterial_po2_valid``, arterial lines are dotted where that is 0.
+            ``arterial_po2_valid``, arterial lines are dotted where that is 0; where it holds
+            ``arterial_po2_by_shunt`` and ``arterial_dissolved_o2_by_shunt``, a band reaches there.
         at : float
             Ambient pressure marked, one of the dataset's own [kPa absolute].
         pressure_unit, po2_unit : str
@@ -161,8 +167,22 @@ class OxygenCascade:
             highest[name] = float(np.nanmax(y, initial=0.0))
             self.labels[name].set_y(float(y[-1]))
             if name in self.values:
-                self.values[name].xy = (x[index], y[index])
-                self.values[name].set_text(_short(float(y[index])))
+                other = (
+                    ds[f"{name}_by_shunt"].values if f"{name}_by_shunt" in ds else np.full(x.shape, np.nan)
+                )
+                if quantity(name).is_pressure:
+                    other = convert(other, "kPa", po2_unit)
+                here, there_too = float(y[index]), float(other[index])
+                words = _short(here)
+                if not np.isnan(there_too):
+                    words = f"{words} to {_short(there_too)}"
+                    here = min(here, there_too) if name == "arterial_po2" else max(here, there_too)
+                self.values[name].set_text(words)
+                self.values[name].xy = (x[index], here)
+                known = ~np.isnan(other) & ~np.isnan(y)
+                around = [np.append(x[known], x[known][::-1]), np.append(y[known], other[known][::-1])]
+                self.bands[name].set_xy(np.column_stack(around))
+                highest[name] = max(highest[name], float(np.nanmax(other, initial=0.0)))
                 self.values[name].set_ha("right" if late else "left")
                 self.values[name].set_position(
                     (-5 if late else 5, _UNDER if name == "arterial_po2" else _OVER)

@@ -230,7 +230,7 @@ def treatment(
     if attendant:
         extensions = extensions_deep + extensions_shallow
         if attendant_minutes is None and not any(r.gas.startswith("oxygen") for r in rows):
-            more["attendant_rule"] = "no oxygen: an air table, no rule is stated"
+            more["attendant_rule"] = _rule_on_air(name)
         else:
             rows, more = _attendant(rows, name, extensions, exposed_before, altitude, attendant_minutes)
     rows = _cycled(rows, variant)
@@ -433,6 +433,14 @@ def _on_air(row: Segment) -> Segment:
     )
 
 
+def _rule_on_air(name: str) -> str:
+    """What is said of attendants of a table that is breathed on air throughout."""
+    try:
+        return attendant_oxygen(name).text
+    except RangeError:
+        return "no oxygen: an air table, no rule is stated"
+
+
 def _attendant(
     rows: list[Segment],
     name: str,
@@ -457,6 +465,8 @@ def _attendant(
             depth = rows[last].start
     if with_patient:
         return _cycled(rows, "late_oxygen"), more
+    if own is None and rule.ascent == "no" and not minutes:
+        return [_on_air(r) for r in rows], more
     last = max(i for i, r in enumerate(rows) if r.is_travel and r.start == depth)
     breathed: list[Segment] = []
     owed = minutes

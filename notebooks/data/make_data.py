@@ -112,6 +112,48 @@ def dive_log(loop: bool) -> str:
     return NOTICE + head + "\n".join(rows) + "\n"
 
 
+#: Cylinders and rates are invented too.
+SUPPLY = """\
+# D-1's gas for the dive in the sound: what is carried, who breathes how much, what is kept back.
+exposure = "dive_in_the_sound.csv"
+surface_pressure = "101.0 kPa"
+water_temperature = "9 degC"
+
+[[cylinder]]
+name = "back"
+gas = "trimix 17/48"
+water_capacity = "12 L"
+count = 2
+pressure_gauge = "219 bar"
+
+[[cylinder]]
+name = "left side"
+gas = "nitrox 48"
+water_capacity = "7 L"
+pressure_gauge = "190 bar"
+
+[[cylinder]]
+name = "right side"
+gas = "oxygen"
+water_capacity = "5.7 L"
+pressure_gauge = "140 bar"
+
+[demand]
+surface_rate = { others = "20 L/min", ascent = "16 L/min" }
+
+[reserve]
+persons = 2  # on one gas, to the next switch
+minutes = 2  # before they leave
+[reserve.demand]
+surface_rate = "30 L/min"
+
+[ascent]
+model = "buhlmann_1995_c"
+gases = ["nitrox 48 from 20 msw", "oxygen from 6 msw"]
+moments = [12, 22, 30]
+"""
+
+
 def course() -> str:
     """P-01's course: 40 sessions on weekdays from 3 March to 25 April 2042, 08:00."""
     day, rows = datetime.date(2042, 3, 3), []
@@ -127,6 +169,7 @@ FILES = {
     "p01_chamber_log.csv": chamber_log,
     "dive_in_the_sound.csv": lambda: dive_log(loop=False),
     "dive_in_the_sound_loop.csv": lambda: dive_log(loop=True),
+    "dive_in_the_sound_supply.toml": lambda: NOTICE + SUPPLY,
     "p01_course.csv": course,
     "p01.toml": lambda: NOTICE + PERSON,
 }

@@ -25,7 +25,7 @@ from gasphys.chamber import (
 )
 from gasphys.errors import ExposureError, InputFileError, RangeError, UnknownNameError
 from gasphys.quantities import CAUTION
-from gasphys.schedules import treatment
+from gasphys.schedules import oxygen_session, treatment
 
 DATA = Path(__file__).parents[2] / "notebooks" / "data"
 P0 = 101.325
@@ -100,14 +100,19 @@ def test_arterial_oxygen_lies_between_ratio_and_shunt(before: xr.Dataset) -> Non
     np.testing.assert_allclose(sorted(found), sorted([ratio, shunt]), rtol=1e-9)
 
 
-@pytest.mark.parametrize(("ratio", "expected"), [(100, 258), (200, 516), (300, 774), (450, 1161)])
-def test_a_sample_on_oxygen_carried_over(ratio: float, expected: float) -> None:
-    """Sheet 4.1: P/F on FIO2 1 at 1 atm, PaCO2 40 mmHg, gives this PaO2 at 2.4 atm by the constant ratio."""
+#: C26 and its neighbors: P/F on FIO2 1 at 1 atm, PaCO2 40 mmHg; PaO2 at 2.4 and 2.8 atm, mmHg.
+CARRIED = [(100, 258, 303), (200, 516, 607), (300, 774, 910), (450, 1161, 1365)]
+
+
+@pytest.mark.parametrize(("ratio", "at_24", "at_28"), CARRIED)
+def test_a_sample_on_oxygen_carried_over(ratio: float, at_24: float, at_28: float) -> None:
     with gp.validity("ignore"):
         person = Person.from_sample(arterial_po2=f"{ratio} mmHg", fio2=1.0, arterial_pco2="40 mmHg")
-        ds = worksheet("clinical_2_4_atm", person, ROOM)
-    ends = ds.arterial_po2.isel(phase=1).values / 0.133322387415
-    assert np.abs(ends - expected).min() < 0.5
+    for pressure, expected in (("2.4 atm abs", at_24), ("2.8 atm abs", at_28)):
+        ds = worksheet(oxygen_session(pressure), person, ROOM)
+        ends = ds.arterial_po2.isel(phase=1).values / 0.133322387415
+        # One end of the range is the constant ratio, the other the constant shunt.
+        assert np.abs(ends - expected).min() < 0.5
 
 
 #: Sheet 1.5: oxygen segments at 10 L/min, L referred to 1 atm, 33 fsw/atm.
@@ -228,6 +233,11 @@ def test_the_attendant_on_the_sheet() -> None:
     assert "A-1: oxygen from 5:03" in text
     assert "oxygen for the last 30 min at 30 fsw and the ascent (Revision 4 Change A p 21-26; read)" in text
     assert "treatment 12 h, no-stop dive 12 h, dive with stops 24 h, flying 24 h" in text
+    # Witucki 2013: at most 2.4 atm abs, bottom time 80-119 min, 15 min of oxygen; nothing above that.
+    practice = "bottom time 110 min at 2.4 atm abs or less, 15 min of oxygen before the ascent"
+    clinic = " ".join(worksheet_text(worksheet("clinical_2_4_atm", PERSON, ROOM)).split())
+    assert practice in clinic
+    assert "center's practice" not in text
     own = worksheet("clinical_2_4_atm", PERSON, ROOM.narrowed(attendant_minutes=15.0))
     assert "A-1: oxygen from 1:35" in worksheet_text(own)
 

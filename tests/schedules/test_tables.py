@@ -177,6 +177,10 @@ def test_an_attendant_who_owes_more() -> None:
     air = treatment("usn_2a", attendant=True)
     assert set(air.fractions["O2"]) == {0.21}
     assert "no rule is stated" in air.attrs["attendant_rule"]
+    with gp.validity("ignore"):
+        seven = treatment("usn_7", attendant=True, unverified=True)
+    assert set(seven.fractions["O2"]) == {0.21}
+    assert seven.attrs["attendant_rule"].startswith("no oxygen (Revision 4 Change A notes")
 
 
 def test_what_is_not_stated_is_said() -> None:
