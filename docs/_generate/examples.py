@@ -19,8 +19,10 @@ from gasphys.plots import (
     control_path_figure,
     exposure_figure,
     fill_figure,
+    limit_chance_figure,
     loss_table_figure,
     nuclei_figure,
+    sensitivity_figure,
     worksheet_figure,
 )
 
@@ -104,6 +106,10 @@ def pages() -> dict[str, str | bytes]:
     if "chamber.md" in spaces:
         drawn["worksheet.svg"] = svg(worksheet_figure(spaces["chamber.md"]["before"]))
         drawn["atmosphere.svg"] = svg(atmosphere_figure(spaces["chamber.md"]["run"]))
+    if "what_if.md" in spaces:
+        asked = spaces["what_if.md"]
+        drawn["limit_chance.svg"] = svg(limit_chance_figure(asked["chance"]))
+        drawn["sensitivity.svg"] = svg(sensitivity_figure(asked["indices"]))
     dive, table = spaces["diver.md"], spaces["schedules.md"]["table"]
     return {
         "dive.svg": svg(exposure_figure(dive["dive"], dive["found"])),

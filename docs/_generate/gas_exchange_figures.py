@@ -10,7 +10,7 @@ import xarray as xr
 
 import gasphys as gp
 from _generate.markdown import svg
-from gasphys.plots import arterial_band_figure
+from gasphys.plots import arterial_band_figure, breath_hold_figure
 from gasphys.plots.style import ACCENT, INK, PALE, caution_line, new_figure, tidy
 from gasphys.policy import validity
 
@@ -100,31 +100,5 @@ def carboxyhemoglobin() -> Any:
 
 def breath_hold() -> Any:
     """One breath to 24 m: alveolar pressures, and what passes to the blood."""
-    figure = new_figure(7.4, 5.0)
-    upper, lower = figure.subplots(2, 1, sharex=True)
     dive = gp.Exposure.start("air").travel(depth=24, minutes=0.5).stay(0.4).travel(depth=0, minutes=0.5)
-    ds = gp.gas_exchange.breath_hold(dive, at=np.linspace(0.0, 1.4, 281))
-    x = ds.time.values
-    panels = (
-        (upper, (("alveolar_po2", "O2"), ("alveolar_pco2", "CO2")), "alveolar pressure\nkPa", 1.0),
-        (lower, (("o2_transfer_stpd", "O2"), ("co2_transfer_stpd", "CO2")), "lung to blood\nL/min STPD", 1.0),
-    )
-    for axes, lines, label, factor in panels:
-        for (name, words), hue, dash in zip(lines, (ACCENT, INK), DASHES[:2], strict=True):
-            y = factor * ds[name].values
-            axes.plot(x, y, color=hue, linestyle=dash, linewidth=1.8)
-            axes.annotate(words, (x[-1], y[-1]), xytext=(5, 0), textcoords="offset points", fontsize=8,
-                          va="center", color=hue)  # fmt: skip
-        for boundary in (0.5, 0.9):
-            axes.axvline(boundary, color=INK, linewidth=0.5, linestyle=DASHES[2])
-        axes.set_ylabel(label, fontsize=9)
-        tidy(axes)
-    upper.set_ylim(bottom=0.0)
-    lower.axhline(0.0, color=INK, linewidth=0.6)
-    for place, words in ((0.25, "descent"), (0.7, "24 m"), (1.15, "ascent")):
-        upper.text(place, 1.02, words, transform=upper.get_xaxis_transform(), ha="center", fontsize=8)
-    lower.set_xlabel("time, min", fontsize=9)
-    lower.set_xlim(0.0, 1.4)
-    figure.align_ylabels()
-    caution_line(figure)
-    return figure
+    return breath_hold_figure(gp.gas_exchange.breath_hold(dive, at=np.linspace(0.0, 1.4, 281)))

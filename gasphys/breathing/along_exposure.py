@@ -224,8 +224,9 @@ def effort(
         record.put("resistive_work", named, "high", **airways, k2=max(k2, _K2_HIGH))
         elastic: Any = 0.0
         if tidal_volume is not None:
-            held = xr.full_like(record.ds["density"], _number(tidal_volume, "tidal_volume")).drop_attrs()
-            record.ds["tidal_volume"] = held.assign_attrs(attributes("tidal_volume"))
+            held = xr.full_like(record.ds["density"], _number(tidal_volume, "tidal_volume"))
+            held.attrs = attributes("tidal_volume")
+            record.ds["tidal_volume"] = held
             record.put(
                 "elastic_work", mechanics.elastic_work, tidal_volume="@tidal_volume", elastance=elastance
             )
@@ -254,9 +255,8 @@ def effort(
         for end, larger in (("low", dense), ("high", ~dense)):
             found = xr.full_like(ratio, most).where(larger, least)
             words = f"exponent of density of the {end} end of the band"
-            record.ds[f"density_exponent_{end}"] = found.drop_attrs().assign_attrs(
-                attributes("density_exponent", long_name=words)
-            )
+            found.attrs = attributes("density_exponent", long_name=words)
+            record.ds[f"density_exponent_{end}"] = found
         for end in ("", "low", "high"):
             record.put(
                 "maximum_ventilation_btps",
