@@ -49,7 +49,7 @@ TESTS = {
     ],
     "gasphys/real_gas": ["rows real_gas.", "tests/real_gas"],
     "gasphys/doses": ["rows doses.", "tests/doses", "tests/properties/test_doses.py"],
-    "gasphys/tissues": ["rows tissues.", "tests/tissues"],
+    "gasphys/tissues": ["rows tissues.", "tests/properties/test_tissues.py", "tests/tissues"],
     "gasphys/bubbles": [
         "rows bubbles.",
         "tests/properties/test_bubbles.py",

@@ -201,6 +201,16 @@ def _parser() -> argparse.ArgumentParser:
     one.add_argument("--order", default="helium,oxygen,air", metavar="A,B", help="gases added, in this order")
     one.add_argument("--gauge", action="store_true", help="all pressures as a gauge reads them")
     one.set_defaults(run=_fill)
+    one = commands.add_parser(
+        "open", help="open an app, an equation or a notebook in the browser", epilog=CAUTION
+    )
+    one.add_argument("name", metavar="NAME", nargs="?", help="without it: the list of names")
+    one.add_argument("--page", action="store_true", help="a notebook as a page, without its code")
+    one.add_argument("--no-browser", action="store_true", help="print the address only")
+    one.add_argument(
+        "--port", type=int, default=0, metavar="N", help="port on this machine; default: a free one"
+    )
+    one.set_defaults(run=_open)
     one = commands.add_parser("equations", help="list every equation, or print them all as JSON")
     one.add_argument("--json", action="store_true", help="as JSON")
     one.set_defaults(run=_equations)
@@ -221,6 +231,15 @@ def _table(options: argparse.Namespace) -> dict[str, Any]:
         "bottom_minutes": options.bottom_minutes,
         "unverified": options.unverified,
     }
+
+
+def _open(options: argparse.Namespace) -> int:
+    from gasphys.widgets.opening import listing, open_name
+
+    if options.name is None:
+        print(listing())
+        return 0
+    return open_name(options.name, page=options.page, browser=not options.no_browser, port=options.port)
 
 
 def _equations(options: argparse.Namespace) -> int:

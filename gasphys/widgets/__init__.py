@@ -9,6 +9,7 @@ from gasphys.widgets.equation_page import EquationPage
 from gasphys.widgets.nucleus_on_the_way_up import NucleusOnTheWayUp
 from gasphys.widgets.oxygen_at_pressure import OxygenAtPressure
 from gasphys.widgets.oxygen_course import OxygenCourse
+from gasphys.widgets.patient_at_pressure import PatientAtPressure
 from gasphys.widgets.room_for_work import RoomForWork
 
 __all__ = [
@@ -21,5 +22,6 @@ __all__ = [
     "Number",
     "OxygenAtPressure",
     "OxygenCourse",
+    "PatientAtPressure",
     "RoomForWork",
 ]

@@ -23,7 +23,7 @@ from gasphys.errors import GasphysError, unknown_name
 from gasphys.quantities import CAUTION, Quantity, quantity
 from gasphys.units import convert, parse_quantity
 
-__all__ = ["App", "Name", "Number", "shown", "start_values"]
+__all__ = ["App", "Name", "Number", "shown", "start_values", "unit_words"]
 
 
 @cache
@@ -65,6 +65,27 @@ def shown(value: float, digits: int = 4) -> str:
     ('231.7', '0.7928', '5.2')
     """
     return np.format_float_positional(value, precision=digits, fractional=False, trim="-")
+
+
+def unit_words(unit: str) -> str:
+    """Return a unit as a choice shows it.
+
+    Parameters
+    ----------
+    unit : str
+        A unit.
+
+    Returns
+    -------
+    str
+        The same, but a word for a plain number.
+
+    Examples
+    --------
+    >>> unit_words("1"), unit_words("kPa")
+    ('fraction', 'kPa')
+    """
+    return "fraction" if unit == "1" else unit
 
 
 @dataclass(frozen=True)
@@ -174,7 +195,7 @@ class Number:
         step = min((1.0, 2.0, 5.0, 10.0), key=lambda f: abs(math.log(f * power / rough))) * power
         low = math.floor(low / step + 1e-9) * step
         high = math.ceil(high / step - 1e-9) * step
-        return round(low, 9), round(high, 9), round(step, 9)
+        return _tidy(low, step), _tidy(high, step), _tidy(step, step)
 
     def place(self, value: float, unit: str) -> float:
         """Return the place of the slider that is nearest to a value.
@@ -198,7 +219,34 @@ class Number:
         """
         low, high, step = self.span(unit)
         steps = round((float(convert(value, self.quantity.unit, unit)) - low) / step)
-        return min(max(round(low + steps * step, 9), low), high)
+        return min(max(_tidy(low + steps * step, step), low), high)
+
+    def at_place(self, place: float, unit: str) -> str:
+        """Return the text a place of the slider stands for.
+
+        Parameters
+        ----------
+        place : float
+            Of the slider.
+        unit : str
+            Unit it counts in.
+
+        Returns
+        -------
+        str
+            As it would be typed.
+
+        Examples
+        --------
+        >>> Number("hemoglobin").at_place(13.000000000000002, "g/dL")
+        '13.0'
+        """
+        return repr(_tidy(place, self.span(unit)[2]))
+
+
+def _tidy(value: float, step: float) -> float:
+    """Return a value without what arithmetic left far below a step."""
+    return round(value, max(9, 2 - math.floor(math.log10(step))))
 
 
 @dataclass(frozen=True)
@@ -511,7 +559,8 @@ class App(abc.ABC):
         from matplotlib.backends.backend_agg import FigureCanvasAgg
         from PIL import Image
 
-        canvas: Any = FigureCanvasAgg(figure)
+        # The canvas of a figure drawn before is used again: a new one costs a fifth of the drawing.
+        canvas: Any = figure.canvas if isinstance(figure.canvas, FigureCanvasAgg) else FigureCanvasAgg(figure)
         figure.set_dpi(192)
         canvas.draw()
         full = Image.frombuffer("RGBA", canvas.get_width_height(), canvas.buffer_rgba(), "raw", "RGBA", 0, 1)
@@ -578,15 +627,38 @@ class App(abc.ABC):
         ds = self.compute()
         if ending == ".nc":
             return bytes(ds.to_netcdf(engine="scipy"))
+        table = self.table(ds)
+        head = [ds.attrs["title"], *self.notes(ds), CAUTION]
+        lines = [f"# {line}" for line in head]
+        text: str = table.to_csv(index=False, lineterminator="\n")
+        return ("\n".join(lines) + "\n" + text).encode()
+
+    def table(self, ds: xr.Dataset) -> Any:
+        """Return the dataset as a table.
+
+        Parameters
+        ----------
+        ds : Dataset
+            As :meth:`compute` returns it.
+
+        Returns
+        -------
+        DataFrame
+            A line for each place along :attr:`rows`, the unit in each header.
+
+        Examples
+        --------
+        >>> import gasphys as gp
+        >>> app = gp.widgets.OxygenAtPressure()
+        >>> app.table(app.compute()).columns[0]
+        'ambient_pressure [kPa]'
+        """
         along = [n for n in ds.data_vars if len(ds[n].dims) == 1 and self.rows in ("", *ds[n].dims)]
         table = ds[along].to_dataframe().reset_index()
         table.columns = [
             f"{c} [{ds[c].attrs['units']}]" if "units" in ds[c].attrs else c for c in table.columns
         ]
-        head = [ds.attrs["title"], *self.notes(ds), CAUTION]
-        lines = [f"# {line}" for line in head]
-        text: str = table.to_csv(index=False, lineterminator="\n")
-        return ("\n".join(lines) + "\n" + text).encode()
+        return table
 
     @cached_property
     def _shown(self) -> Any:

@@ -24,12 +24,12 @@ from gasphys.registry import equations
 from gasphys.shell import Argument
 from gasphys.sources import cite
 from gasphys.units import UNITS, convert
-from gasphys.widgets.base import App, Name, Number, shown, start_values
+from gasphys.widgets.base import App, Name, Number, start_values, unit_words
 
 __all__ = ["EquationPage"]
 
 _START = start_values()["equation_page"]
-_POINTS = 121
+_POINTS = 301
 #: Where in its usual range an argument without a default begins: the first that gives a result.
 _SHARES = (0.5, 0.25, 0.1, 0.75, 0.0, 1.0)
 
@@ -60,8 +60,8 @@ class EquationPage(App):
     Examples
     --------
     >>> app = EquationPage("laws.boyle_volume", volume=1.0, initial_pressure=100.0, final_pressure=400.0)
-    >>> app.answer(app.compute())[:25]
-    'Final volume is 0.25 L; o'
+    >>> app.answer(app.compute())[:50]
+    'Gas volume after, at stated conditions is 0.25 L; '
     """
 
     def __init__(self, equation: str = _START["equation"], **start: Any) -> None:
@@ -70,17 +70,19 @@ class EquationPage(App):
             raise unknown_name("equation", equation, known)
         self.equation, self.key = known[equation], equation
         self.members = tuple(
-            name for name in (f"{equation}[{_label(k)}]" for k in self._registry()) if self._alike(known[name])
+            name
+            for name in (f"{equation}[{_label(k)}]" for k in self._registry())
+            if self._alike(known[name])
         )
         # Every equation has blanks of its own: they belong to the object, not to the class.
         result = self.equation.result
         vars(self).update(name=equation, blanks=self._blanks(), explained={result.name: result.long_name})
         vars(self)["sentence"] = self._words()
-        given = self._begin_with()
+        given: dict[str, Any] = dict(self._begin_with())
         more = {
             "formula": next(iter(self.members), ""),
             "against": self.equation.arguments[0].name,
-            "result_unit": _units(self.equation.result)[0],
+            "result_unit": unit_words(_units(self.equation.result)[0]),
         }
         given |= {name: value for name, value in more.items() if name in self.blanks}
         super().__init__(**{**given, **start})
@@ -90,7 +92,7 @@ class EquationPage(App):
         return tuple(getattr(self.equation, "registry", ()))
 
     def _alike(self, member: EquationFunction) -> bool:
-        """Whether a formula of a choice means the same quantities as its first; others have their own page."""
+        """Whether a formula of a choice means the same quantities as its first; else it has its own page."""
         mine = {a.name: a.quantity for a in self.equation.arguments}
         same = all(mine[a.name] == a.quantity for a in member.arguments)
         return same and member.result == self.equation.result
@@ -99,8 +101,12 @@ class EquationPage(App):
         """Return start values of the arguments that give a result, the middle of usual ranges first."""
         f = equations()[next(iter(self.members), self.key)]
         for share in _SHARES:
-            values = {a.name: _start_value(a, share) for a in self.equation.arguments}
-            with validity("ignore"), contextlib.suppress(GasphysError):
+            # Not all at the same place: equal values are a special case of many equations.
+            values = {
+                a.name: _start_value(a, share * (1.0 - 0.03 * k))
+                for k, a in enumerate(self.equation.arguments)
+            }
+            with validity("ignore"), contextlib.suppress(GasphysError, ArithmeticError):
                 if np.isfinite(f(**{a.name: values[a.name] for a in f.arguments})):
                     return values
         return {a.name: _start_value(a, _SHARES[0]) for a in self.equation.arguments}
@@ -111,7 +117,7 @@ class EquationPage(App):
         if len(self.members) > 1:
             blanks["formula"] = _name("formula", self.members)
         if len(_units(f.result)) > 1:
-            blanks["result_unit"] = _name("unit", _units(f.result))
+            blanks["result_unit"] = _name("unit", tuple(map(unit_words, _units(f.result))))
         if len(f.arguments) > 1:
             blanks["against"] = _name("argument", tuple(a.name for a in f.arguments))
         return blanks
@@ -168,7 +174,7 @@ class EquationPage(App):
 
         Examples
         --------
-        >>> EquationPage("lungs.alveolar_po2", against="fio2").values()[-1]
+        >>> float(EquationPage("lungs.alveolar_po2", against="fio2").values()[-1])
         1.0
         """
         argument = self._against()
@@ -200,14 +206,17 @@ class EquationPage(App):
         axis, result, x = argument.name, f.result, self.values()
         with warnings.catch_warnings(record=True) as told:
             warnings.simplefilter("always")
-            f(**inputs)
+            try:
+                f(**inputs)
+            except ArithmeticError as error:
+                raise GasphysError(f"no result for these values: {error}") from None
         flags = [str(w.message) for w in told]
         along = xr.DataArray(x, dims=axis, coords={axis: x})
         along.attrs = along[axis].attrs = {**attributes(argument.quantity.name)}
         with validity("ignore"):
             try:
                 y = f(**{**inputs, axis: along})
-            except GasphysError:  # not everywhere a result
+            except (GasphysError, ArithmeticError):  # not everywhere a result
                 y = xr.DataArray([_or_nothing(f, {**inputs, axis: float(one)}) for one in x], {axis: along})
         stored = {n: v for n, v in inputs.items() if n != axis} | {axis: f"@{axis}"}
         recorded = {"equation": self._name(), "inputs": json.dumps(stored)}
@@ -264,7 +273,8 @@ class EquationPage(App):
         }
 
     def _unit(self) -> str:
-        return str(self.params.get("result_unit", _units(self.equation.result)[0]))
+        own, *_ = units = _units(self.equation.result)
+        return {unit_words(unit): unit for unit in units}.get(self.params.get("result_unit", ""), own)
 
     def figure(self) -> Any:
         """Return the picture on a figure of its own, with the caution.
@@ -279,7 +289,8 @@ class EquationPage(App):
         >>> len(EquationPage().figure().axes)
         1
         """
-        return equation_figure(*self._drawn(self.compute()), **self._axes())
+        result, at, valid = self._drawn(self.compute())
+        return equation_figure(result, at, valid, **self._axes())
 
     def answer(self, ds: xr.Dataset) -> str:
         """Return the answer in one sentence.
@@ -296,22 +307,24 @@ class EquationPage(App):
 
         Examples
         --------
-        >>> app = EquationPage("laws.charles_volume", volume=1.0, initial_temperature=0.0)
-        >>> app.answer(app.compute())[:15]
-        'Final volume is'
+        >>> app = EquationPage("lungs.alveolar_po2", ambient_pressure=243.18, fio2=1.0, alveolar_pco2=5.333)
+        >>> app.answer(app.compute())[:25]
+        'Alveolar PO2 is 231.58 kP'
         """
         argument, result = self._against(), self.equation.result
         y, x = ds[result.name].values, ds[argument.name].values
-        chosen = y[int(np.argmin(np.abs(x - ds.attrs["chosen_value"])))]
+        index = int(np.argmin(np.abs(x - ds.attrs["chosen_value"])))
+        # What arithmetic leaves of nothing is nothing.
+        y = np.where(np.abs(y) < 1e-12 * np.nanmax(np.abs(y), initial=0.0), 0.0, y)
         ends = [self._said(v, result, self._unit()) for v in (y[0], y[-1])]
         low, high = (self._said(v, argument.quantity, self.units[argument.name]) for v in (x[0], x[-1]))
         return (
-            f"{_capital(result.long_name)} is {self._said(chosen, result, self._unit())}; over "
+            f"{_capital(result.long_name)} is {self._said(y[index], result, self._unit())}; over "
             f"{argument.quantity.long_name} from {low} to {high} it goes from {ends[0]} to {ends[1]}."
         )
 
     def _said(self, value: float, quantity: Quantity, unit: str) -> str:
-        if np.isnan(value):
+        if not np.isfinite(value):
             return "no value"
         number = f"{float(convert(value, quantity.unit, unit)):.5g}"
         return number if unit == "1" else f"{number} {unit}"
@@ -368,8 +381,8 @@ class EquationPage(App):
         Examples
         --------
         >>> app = EquationPage("laws.boyle_volume")
-        >>> app.explain(app.compute(), "final_volume").splitlines()[1]
-        'laws.boyle_volume: final volume'
+        >>> app.explain(app.compute(), "final_volume").splitlines()[2]
+        'laws.boyle_volume: gas volume after, at stated conditions'
         """
         return str(explain(ds, name, **{self._against().name: ds.attrs["chosen_value"]}))
 
@@ -421,6 +434,8 @@ def _capital(words: str) -> str:
 def _units(quantity: Quantity) -> tuple[str, ...]:
     """Return the units a quantity may be shown in, its own first."""
     offered = tuple(u for u in _START["units"].get(quantity.unit, ()) if u in UNITS)
+    if quantity.unit == "1" and quantity.possible[1] > 1.0:  # no share of anything
+        offered = ()
     return (quantity.unit, *(u for u in offered if u != quantity.unit))
 
 
@@ -443,7 +458,10 @@ def _start_value(argument: Argument, share: float) -> float:
     air = gas_fractions("air")
     if argument.name in air:
         return float(air[argument.name])
-    low, high = (max(argument.quantity.usual[0], argument.low), min(argument.quantity.usual[1], argument.high))
+    low, high = (
+        max(argument.quantity.usual[0], argument.low),
+        min(argument.quantity.usual[1], argument.high),
+    )
     there = low + share * (high - low)
     rounded = Number(argument.quantity.name).place(there, argument.quantity.unit)
     return rounded if low <= rounded <= high else there
@@ -452,5 +470,5 @@ def _start_value(argument: Argument, share: float) -> float:
 def _or_nothing(f: EquationFunction, inputs: dict[str, float]) -> float:
     try:
         return float(f(**inputs))
-    except GasphysError:
+    except (GasphysError, ArithmeticError):
         return float("nan")

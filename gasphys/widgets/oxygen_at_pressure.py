@@ -24,6 +24,10 @@ from gasphys.widgets.base import App, Name, Number, shown, start_values
 __all__ = ["OxygenAtPressure"]
 
 _START = start_values()["oxygen_at_pressure"]
+_BY_SHUNT = ("arterial_po2", "arterial_o2_content", "arterial_dissolved_o2")
+_SHUNT_LINES = 'other = gp.gas_exchange.oxygenation(session, person, "shunt").isel(time=0)\n' + "".join(
+    f'ds["{name}_by_shunt"] = other["{name}"]\n' for name in _BY_SHUNT
+)
 
 
 class OxygenAtPressure(App):
@@ -74,8 +78,10 @@ class OxygenAtPressure(App):
         "arterial_dissolved_o2": "dissolved O2",
         "arterial_o2_content": "O2 content",
     }
+    #: Blank whose unit PO2 is shown in.
+    po2_like: ClassVar = "arterial_pco2"
     #: Blanks that describe the person.
-    personal: ClassVar = ("hemoglobin", "arterial_pco2", "arterial_alveolar_ratio")
+    personal: ClassVar[tuple[str, ...]] = ("hemoglobin", "arterial_pco2", "arterial_alveolar_ratio")
 
     def __init__(self, person: Person | None = None, **start: Any) -> None:
         self.person = Person() if person is None else person
@@ -150,11 +156,13 @@ class OxygenAtPressure(App):
         )
         session = Exposure.start(self.params["gas"], pressure=pressure).stay(1)
         person = self.described()
-        ds = oxygenation(session, person).isel(time=0, segment=0, drop=True)
         if self._has_shunt():
-            other = oxygenation(session, person, "shunt").isel(time=0, segment=0, drop=True)
-            for name in ("arterial_po2", "arterial_dissolved_o2"):
+            both = oxygenation(session, person, "both").isel(time=0, segment=0, drop=True)
+            ds, other = (_by_model(both, model) for model in ("ratio", "shunt"))
+            for name in _BY_SHUNT:
                 ds[f"{name}_by_shunt"] = other[name]
+        else:
+            ds = oxygenation(session, person).isel(time=0, segment=0, drop=True)
         ds = ds.swap_dims(pressure="ambient_pressure").set_coords("ambient_pressure").drop_vars("pressure")
         ds["ambient_pressure"].attrs = attributes("ambient_pressure")  # given, not computed from a piece
         kept = [
@@ -202,7 +210,7 @@ class OxygenAtPressure(App):
         return oxygen_cascade_figure(self.compute(), self.params["ambient_pressure"], **self._axes())
 
     def _axes(self) -> dict[str, str]:
-        return {"pressure_unit": self.units["ambient_pressure"], "po2_unit": self.units["arterial_pco2"]}
+        return {"pressure_unit": self.units["ambient_pressure"], "po2_unit": self.units[self.po2_like]}
 
     def answer(self, ds: xr.Dataset) -> str:
         """Return the answer in one sentence.
@@ -226,7 +234,7 @@ class OxygenAtPressure(App):
         row = ds.sel(ambient_pressure=ds.attrs["chosen_pressure"])
         if not float(row["alveolar_po2"]) > 0.0:
             return "No alveolar oxygen is left: this gas cannot sustain life at this pressure."
-        unit = self.units["arterial_pco2"]
+        unit = self.units[self.po2_like]
         alveolar, arterial = (
             shown(float(convert(float(row[name]), "kPa", unit))) for name in ("alveolar_po2", "arterial_po2")
         )
@@ -320,12 +328,6 @@ class OxygenAtPressure(App):
         >>> print(OxygenAtPressure(hemoglobin=12.9).lines().splitlines()[4])
         person = gp.Person(hemoglobin=12.9)
         """
-        person = self.described()
-        given = [
-            f"{one.name}={getattr(person, one.name)!r}"
-            for one in fields(person)
-            if getattr(person, one.name) != one.default
-        ]
         low, high = (float(end) for end in self.pressures()[[0, -1]])
         chosen = self.params["ambient_pressure"]
         axes = ", ".join(f"{name}={unit!r}" for name, unit in self._axes().items())
@@ -334,13 +336,32 @@ class OxygenAtPressure(App):
             "import xarray as xr\n"
             "import gasphys as gp\n"
             "\n"
-            f"person = gp.Person({', '.join(given)})\n"
+            f"person = {self._person_line()}\n"
             f"pressures = np.union1d(np.linspace({low!r}, {high!r}, 81), [{chosen!r}])\n"
             'pressures = xr.DataArray(pressures, dims="pressure", attrs={"units": "kPa"})\n'
             f"session = gp.Exposure.start({self.params['gas']!r}, pressure=pressures).stay(1)\n"
             "ds = gp.gas_exchange.oxygenation(session, person).isel(time=0)\n"
+            f"{_SHUNT_LINES if self._has_shunt() else ''}"
             f"figure = gp.plots.oxygen_cascade_figure(ds, at={chosen!r}, {axes})\n"
         )
+
+    def _person_line(self) -> str:
+        person = self.described()
+        given = [
+            f"{one.name}={getattr(person, one.name)!r}"
+            for one in fields(person)
+            if getattr(person, one.name) != one.default
+        ]
+        return f"gp.Person({', '.join(given)})"
+
+
+def _by_model(both: xr.Dataset, model: str) -> xr.Dataset:
+    """Return what one model of two says, with its own equation only."""
+    one = both.sel(model=model, drop=True)
+    attrs = one["arterial_po2"].attrs
+    (mine,) = (f for f in attrs["equation"].split(" | ") if f.endswith(f"_from_{model}"))
+    one["arterial_po2"].attrs = {**attrs, "equation": mine}
+    return one
 
 
 def _inputs(ds: xr.Dataset, name: str) -> list[tuple[Any, Any]]:

@@ -12,6 +12,7 @@ import contextlib
 import html
 import io
 import json
+import re
 import secrets
 import string
 import threading
@@ -135,6 +136,12 @@ class Page:
                 changed[one], self._sent[one] = more, now
         return changed
 
+    def close(self) -> None:
+        """Let go of the widgets, which ipywidgets keeps as long as they are open."""
+        for widget in self._widgets.values():
+            widget.close()
+        self._widgets.clear()
+
     def _spec(self, widget: Any) -> dict[str, Any]:
         number = str(len(self._widgets))
         self._widgets[number], self._sent[number] = widget, _state(widget)
@@ -180,7 +187,7 @@ def app_page(app: App) -> Page:
     Returns
     -------
     Page
-        Its view alone.
+        Its name and its view.
 
     Examples
     --------
@@ -188,7 +195,9 @@ def app_page(app: App) -> Page:
     >>> app_page(gp.widgets.OxygenAtPressure()).title
     'Oxygen at pressure'
     """
-    return Page(app.name.replace("_", " ").capitalize(), [app.view])
+    # The name of an equation stays as it is.
+    title = app.name if "." in app.name else app.name.replace("_", " ").capitalize()
+    return Page(title, [f"<h1>{html.escape(title)}</h1>", app.view])
 
 
 def notebook_page(path: str | Path) -> Page:
@@ -202,20 +211,15 @@ def notebook_page(path: str | Path) -> Page:
     Returns
     -------
     Page
-        Words, apps, pictures, tables and printed text, in order.
+        Words, apps, pictures, tables and printed text, in order. Of Markdown: headings, paragraphs,
+        emphasis, code and links.
 
     Raises
     ------
     GasphysError
-        If the file is no notebook, or the extra ``notebooks`` is not installed.
+        If the file is no notebook.
     """
     path = Path(path)
-    try:
-        import mistune
-    except ModuleNotFoundError:
-        raise GasphysError(
-            'a notebook as a page needs the extra notebooks: python -m pip install ".[notebooks]"'
-        ) from None
     try:
         cells = json.loads(path.read_text(encoding="utf-8"))["cells"]
     except (ValueError, KeyError) as error:
@@ -226,10 +230,28 @@ def notebook_page(path: str | Path) -> Page:
         for cell in cells:
             source = "".join(cell["source"])
             if cell["cell_type"] == "markdown":
-                items.append(str(mistune.html(source)))
+                items.append(_words(source))
             elif cell["cell_type"] == "code":
                 items += _run(source, space)
     return Page(path.stem.replace("_", " ").capitalize(), items)
+
+
+def _words(source: str) -> str:
+    """Return the little Markdown that notebooks here use as HTML."""
+    blocks = []
+    for block in re.split(r"\n\s*\n", html.escape(source.strip(), quote=False)):
+        # Code is set aside: a star in it is a star.
+        codes = re.findall(r"`([^`]+)`", block)
+        text = re.sub(r"`[^`]+`", "\0", block)
+        text = re.sub(r"\*\*(.+?)\*\*", r"<strong>\1</strong>", text, flags=re.DOTALL)
+        text = re.sub(r"\*(.+?)\*", r"<em>\1</em>", text, flags=re.DOTALL)
+        text = re.sub(r"\[([^]]+)\]\((https?://[^)\s]+)\)", r'<a href="\2">\1</a>', text)
+        for code in codes:
+            text = text.replace("\0", f"<code>{code}</code>", 1)
+        heading = re.match(r"(#{1,6}) ", text)
+        tag = f"h{len(heading[1])}" if heading else "p"
+        blocks.append(f"<{tag}>{text.removeprefix(heading[0] if heading else '')}</{tag}>")
+    return "\n".join(blocks)
 
 
 def _run(source: str, space: dict[str, Any]) -> list[Any]:
@@ -297,8 +319,6 @@ def server(make: Callable[[], Page], port: int = 0) -> ThreadingHTTPServer:
     lock = threading.Lock()
 
     class Handler(BaseHTTPRequestHandler):
-        protocol_version = "HTTP/1.1"
-
         def do_GET(self) -> None:
             if not self._from_here():
                 return
@@ -310,7 +330,7 @@ def server(make: Callable[[], Page], port: int = 0) -> ThreadingHTTPServer:
                     page = make()
                     pages[page.key] = page
                     while len(pages) > _KEPT:
-                        pages.popitem(last=False)
+                        pages.popitem(last=False)[1].close()
                     text = page.text()
             except Exception as error:
                 self._send(500, "text/plain", f"{type(error).__name__}: {error}")
@@ -336,11 +356,10 @@ def server(make: Callable[[], Page], port: int = 0) -> ThreadingHTTPServer:
 
         def _from_here(self) -> bool:
             """Refuse what another site makes the browser ask."""
-            here = f"127.0.0.1:{self.server.server_address[1]}"
+            here = f"127.0.0.1:{one.server_port}"
             host, origin = self.headers.get("Host", ""), self.headers.get("Origin")
             if host in (here, here.replace("127.0.0.1", "localhost")) and origin in (None, f"http://{host}"):
                 return True
-            self.close_connection = True
             self._send(403, "text/plain", "for this machine only")
             return False
 
@@ -359,4 +378,6 @@ def server(make: Callable[[], Page], port: int = 0) -> ThreadingHTTPServer:
         def log_message(self, *_: Any) -> None:
             """Stay silent."""
 
-    return ThreadingHTTPServer(("127.0.0.1", port), Handler)
+    one = ThreadingHTTPServer(("127.0.0.1", port), Handler)
+    one.daemon_threads = True
+    return one

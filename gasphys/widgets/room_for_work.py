@@ -105,7 +105,8 @@ class RoomForWork(App):
             ratio = density_ratio(humid_density(pressures, "air", 37.0, vapor))
             found: xr.DataArray = sustainable_o2_uptake(maximum_ventilation(surface, ratio))
         words = "O2 uptake that air leaves room for, STPD"
-        return found.drop_attrs().assign_attrs(attributes("sustainable_o2_uptake", long_name=words))
+        found.attrs = attributes("sustainable_o2_uptake", long_name=words)
+        return found
 
     def compute(self) -> xr.Dataset:
         """Return work and room for work along ambient pressure.

@@ -13,7 +13,7 @@ from typing import Any
 from gasphys.errors import GasphysError
 from gasphys.plots.style import ACCENT, INK, new_figure
 from gasphys.quantities import CAUTION
-from gasphys.widgets.base import App, Name
+from gasphys.widgets.base import App, Name, unit_words
 
 __all__ = ["View"]
 
@@ -31,6 +31,10 @@ _STYLE = f"""<style>
 .gasphys-app .noUi-handle {{ background: {ACCENT}; border-color: {ACCENT}; }}
 .gasphys-app img {{ width: 100%; aspect-ratio: var(--gasphys-ratio); }}
 .gasphys-app pre {{ font-size: 0.85rem; white-space: pre-wrap; word-break: normal; overflow-wrap: anywhere; }}
+.gasphys-table {{ max-height: 22rem; overflow: auto; font-size: 0.85rem; }}
+.gasphys-table table {{ border-collapse: collapse; }}
+.gasphys-table th, .gasphys-table td {{ padding: 0.1rem 0.5rem; text-align: right; color: {INK};
+  background: white; border-bottom: 1px solid #ccc; }}
 .gasphys-small .widget-html-content {{ font-size: 0.85rem; }}
 </style>"""
 
@@ -90,7 +94,7 @@ class View:
         self.working = self._html("gasphys-working")
         self.buttons = {
             words: ipw.Button(description=words, layout=ipw.Layout(width="auto"))
-            for words in ("Python lines", "netCDF file", "CSV file", "Reset")
+            for words in ("Table", "Python lines", "netCDF file", "CSV file", "Reset")
         }
         self.taken = self._html("gasphys-taken")
         self.caution = self._html("gasphys-small")
@@ -120,6 +124,7 @@ class View:
             if name in self.unit_choices:
                 self.unit_choices[name].observe(self._guarded(self._unit_chosen, name), "value")
         self.explained.observe(self._guarded(self._explain), "value")
+        self.buttons["Table"].on_click(self._guarded(self._take_table))
         self.buttons["Python lines"].on_click(self._guarded(self._take_lines))
         self.buttons["netCDF file"].on_click(self._guarded(self._take_file, ".nc", "application/x-netcdf"))
         self.buttons["CSV file"].on_click(self._guarded(self._take_file, ".csv", "text/csv"))
@@ -163,7 +168,9 @@ class View:
         row = [entry]
         self.entries[name] = entry
         if len(choices) > 1:
-            unit = ipw.Dropdown(options=choices, layout=ipw.Layout(width="5rem"), tooltip=f"unit of {name}")
+            shown = [(unit_words(one), one) for one in choices]
+            width = f"{max(5.0, 0.6 * max(len(words) for words, _ in shown) + 2.4):.1f}rem"
+            unit = ipw.Dropdown(options=shown, layout=ipw.Layout(width=width), tooltip=f"unit of {name}")
             self.unit_choices[name] = unit
             row.append(unit)
             after = mark
@@ -250,8 +257,9 @@ class View:
         # The page puts a slider onto its steps by itself: that must not change what stands in the blank.
         if abs(slider.value - self._parked[name]) < 0.5 * slider.step:
             return
-        value = repr(round(slider.value, 9))
-        self.app.params[name] = self.app.blanks[name].read(value, self._slider_unit(name))
+        blank: Any = self.app.blanks[name]  # a number
+        unit = self._slider_unit(name)
+        self.app.params[name] = blank.read(blank.at_place(slider.value, unit), unit)
         self._write(name)
         self._ask()
 
@@ -326,6 +334,11 @@ class View:
             self.working.value = ""
         else:
             self.working.value = f"<pre>{html.escape(self.app.explain(self._ds, self.explained.value))}</pre>"
+
+    def _take_table(self) -> None:
+        self._need_answer()
+        table = self.app.table(self._ds).to_html(index=False, border=0, float_format=lambda x: f"{x:.5g}")
+        self.taken.value = f'<div class="gasphys-table" tabindex="0">{table}</div>'
 
     def _take_lines(self) -> None:
         self._need_answer()

@@ -16,6 +16,7 @@ import time
 import urllib.error
 import urllib.request
 from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -45,6 +46,30 @@ ARGUMENTS = [
 ]
 expect.set_options(timeout=60_000)
 LOCAL = {"127.0.0.1", "localhost", ""}
+#: A notebook of the tests: every app in the output of one cell, so that none is out of sight.
+EVERY_APP = "every_app.ipynb"
+
+
+def _every_app() -> dict[str, Any]:
+    source = (
+        "import ipywidgets\n"
+        "from gasphys.widgets import opening, EquationPage\n"
+        "apps = {name: app() for name, app in opening.APPS.items()}\n"
+        "apps['lungs.alveolar_po2'] = EquationPage()\n"
+        "for name, app in apps.items():\n"
+        "    app.view.add_class('shown-' + name.replace('.', '-'))\n"
+        "ipywidgets.VBox([app.view for app in apps.values()])"
+    )
+    kernel = {"display_name": "Python 3 (ipykernel)", "language": "python", "name": "python3"}
+    cell = {
+        "cell_type": "code",
+        "id": "all",
+        "execution_count": None,
+        "metadata": {},
+        "outputs": [],
+        "source": source.splitlines(keepends=True),
+    }
+    return {"cells": [cell], "metadata": {"kernelspec": kernel}, "nbformat": 4, "nbformat_minor": 5}
 
 
 @pytest.fixture(scope="session")
@@ -52,6 +77,7 @@ def lab(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
     """Start JupyterLab on a copy of the notebooks, with no settings but its own; return its address."""
     home = tmp_path_factory.mktemp("lab")
     shutil.copytree(ROOT / "notebooks", home / "notebooks")
+    (home / "notebooks" / EVERY_APP).write_text(json.dumps(_every_app()), encoding="utf-8")
     config = home / "config"
     (config / "labconfig").mkdir(parents=True)
     (config / "labconfig" / "page_config.json").write_text(
@@ -170,27 +196,37 @@ def seen() -> Seen:
     return Seen()
 
 
-@pytest.fixture
-def page(browser: Browser, seen: Seen, shot: Any) -> Iterator[Page]:
-    """Open an empty page of a new profile; how it ends is kept as a screenshot."""
-    context = browser.new_context(viewport={"width": 1280, "height": 1500}, accept_downloads=True)
+@contextmanager
+def opened(browser: Browser, seen: Seen, **more: Any) -> Iterator[Page]:
+    """Open an empty page of a new profile; kernels it started are ended with it."""
+    context = browser.new_context(viewport={"width": 1280, "height": 1500}, accept_downloads=True, **more)
     context.set_default_timeout(90_000)
     one = context.new_page()
     seen.watch(one)
     yield one
-    shot(one, "end")
-    assert one.evaluate(_END_KERNELS) == 0
+    if "/lab" in one.url:
+        assert one.evaluate(_END_KERNELS) == 0
     context.close()
 
 
-#: The next test begins with a kernel of its own.
+@pytest.fixture
+def page(browser: Browser, seen: Seen, shot: Any) -> Iterator[Page]:
+    """Open an empty page; how it ends is kept as a screenshot."""
+    with opened(browser, seen) as one:
+        yield one
+        shot(one, "end")
+
+
+#: The next test of this notebook begins with a kernel of its own.
 _END_KERNELS = """async () => {
+    const path = decodeURIComponent(location.pathname.split('/lab/tree/')[1] || '');
+    const mine = async () => (await (await fetch('/api/sessions')).json()).filter(one => one.path === path);
     const token = (document.cookie.match(/_xsrf=([^;]*)/) || [])[1];
     const headers = {'X-XSRFToken': token};
-    for (const one of await (await fetch('/api/sessions')).json()) {
+    for (const one of await mine()) {
         await fetch('/api/sessions/' + one.id, {method: 'DELETE', headers});
     }
-    return (await (await fetch('/api/sessions')).json()).length;
+    return (await mine()).length;
 }"""
 
 
@@ -200,6 +236,7 @@ def shot(request: pytest.FixtureRequest) -> Any:
     SHOTS.mkdir(parents=True, exist_ok=True)
 
     def take(page: Page, what: str) -> None:
-        page.screenshot(path=SHOTS / f"{request.node.name}_{what}.png".replace("[", "_").replace("]", ""))
+        name = "".join(c if c.isalnum() or c in "_." else "_" for c in f"{request.node.name}_{what}")
+        page.screenshot(path=SHOTS / f"{name}.png", full_page="/lab" not in page.url)
 
     return take

@@ -3,17 +3,20 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
-from statistics import median
 
 import pytest
-from playwright.sync_api import Download, Page, expect
+from playwright.sync_api import Browser, Download, Page, expect
 
 from gasphys.quantities import CAUTION
-from tests.browser.conftest import ROOT, Seen
+from gasphys.widgets import App, EquationPage
+from gasphys.widgets.opening import APPS
+from tests.browser.conftest import EVERY_APP, ROOT, Seen, opened
+from tests.browser.moving import move_every_control, refuse_what_cannot_be, slider_to_picture, warned
 
 BLOOD = "what_will_this_patients_blood_carry_at_pressure.ipynb"
+MAKE: dict[str, Callable[[], App]] = {**APPS, "lungs.alveolar_po2": EquationPage}
 
 
 def _open(page: Page, lab: str, name: str) -> None:
@@ -24,14 +27,56 @@ def _open(page: Page, lab: str, name: str) -> None:
     page.locator("#jp-main-statusbar").get_by_text("Python 3 (ipykernel) | Idle").wait_for()
     page.get_by_role("menuitem", name="Run", exact=True).click()
     page.get_by_role("menuitem", name="Run All Cells", exact=True).click()
-    page.locator(".gasphys-picture").wait_for()
+
+
+@pytest.fixture(scope="module")
+def heard() -> Seen:
+    return Seen()
+
+
+@pytest.fixture(scope="module")
+def blood(browser: Browser, lab: str, heard: Seen) -> Iterator[Page]:
+    """The patient's notebook, run once for all tests of it."""
+    with opened(browser, heard) as page:
+        _open(page, lab, BLOOD)
+        page.locator(".gasphys-picture").first.wait_for()
+        yield page
 
 
 @pytest.fixture
-def app(page: Page, lab: str) -> Page:
-    _open(page, lab, BLOOD)
-    expect(page.locator(".gasphys-answer")).to_contain_text("PO2")
-    return page
+def app(blood: Page) -> Page:
+    """The notebook with its app as at the start."""
+    blood.bring_to_front()
+    blood.set_viewport_size({"width": 1280, "height": 1500})
+    blood.locator(".gasphys-app").first.get_by_role("button", name="Reset").click()
+    expect(blood.locator(".gasphys-answer").first).to_contain_text("from 183.7 kPa")
+    return blood
+
+
+@pytest.fixture(scope="module")
+def every_app(browser: Browser, lab: str, heard: Seen) -> Iterator[Page]:
+    with opened(browser, heard) as page:
+        _open(page, lab, EVERY_APP)
+        page.locator(".gasphys-picture").nth(len(MAKE) - 1).wait_for()
+        yield page
+
+
+@pytest.mark.parametrize("name", list(MAKE))
+def test_every_control_of_every_app(
+    every_app: Page, heard: Seen, shot: Callable[..., None], capsys: pytest.CaptureFixture[str], name: str
+) -> None:
+    every_app.bring_to_front()
+    view = every_app.locator(f".shown-{name.replace('.', '-')}")
+    view.scroll_into_view_if_needed()
+    warned(view)
+    shot(every_app, "start")
+    app = MAKE[name]()
+    assert move_every_control(every_app, view, app) >= len(app.blanks)
+    refuse_what_cannot_be(view, app)
+    took = slider_to_picture(every_app, view)
+    with capsys.disabled():
+        print(f"\n{name}, JupyterLab, to picture: median {took[0]:.0f} ms, {took[1]:.0f} to {took[2]:.0f}")
+    _clean(heard)
 
 
 def _answer(page: Page) -> str:
@@ -48,42 +93,17 @@ def _clean(seen: Seen) -> None:
     assert seen.outside == []
 
 
-def test_the_notebook_shows_this_patient(app: Page, seen: Seen, shot: Callable[..., None]) -> None:
-    assert "Alveolar PO2 is 231.7 kPa and arterial PO2 183.7 kPa" in _answer(app)
+def test_the_notebook_shows_this_patient(app: Page, heard: Seen, shot: Callable[..., None]) -> None:
+    assert "from 183.7 kPa (arterial/alveolar ratio 0.793 held) to 223.8 kPa" in _answer(app)
     sentence = " ".join(box.input_value() for box in app.locator(".gasphys-app input[type=text]").all())
-    assert sentence == "12.9 5.2 0.7928 oxygen 2.4"
+    assert sentence == "12.9 0.4 101 25.3 5.2 oxygen 2.4"
     expect(app.get_by_text(CAUTION).last).to_be_visible()
     expect(app.locator(".gasphys-message")).to_be_hidden()
     shot(app, "start")
-    _clean(seen)
+    _clean(heard)
 
 
-def test_every_control_moved_once_changes_the_answer(
-    app: Page, seen: Seen, shot: Callable[..., None]
-) -> None:
-    answer = _answer(app)
-    handles = app.locator(".gasphys-app .noUi-handle")
-    assert handles.count() == 4
-    for k in range(handles.count()):
-        handles.nth(k).focus()
-        app.keyboard.press("ArrowLeft")
-        answer = _changed(app, answer)
-    units = app.locator(".gasphys-blank-arterial_pco2 select")
-    units.select_option("mmHg")
-    answer = _changed(app, answer)
-    assert "mmHg" in answer
-    gas = app.locator(".gasphys-blank-gas input")
-    gas.fill("air")
-    gas.press("Enter")
-    answer = _changed(app, answer)
-    shot(app, "moved")
-    app.get_by_role("button", name="Reset").click()
-    expect(app.locator(".gasphys-answer")).to_contain_text("Alveolar PO2 is 231.7 kPa")
-    assert gas.input_value() == "oxygen"
-    _clean(seen)
-
-
-def test_an_entry_out_of_range_shows_its_message(app: Page, seen: Seen, shot: Callable[..., None]) -> None:
+def test_an_entry_out_of_range_shows_its_message(app: Page, heard: Seen, shot: Callable[..., None]) -> None:
     blank = app.locator(".gasphys-blank-hemoglobin input")
     blank.fill("45")
     blank.press("Enter")
@@ -101,18 +121,17 @@ def test_an_entry_out_of_range_shows_its_message(app: Page, seen: Seen, shot: Ca
     blank.press("Enter")
     expect(message).to_be_hidden()
     expect(app.locator(".gasphys-picture")).to_be_visible()
-    expect(app.locator(".gasphys-answer")).to_contain_text("Alveolar PO2 is 231.7 kPa")
-    _clean(seen)
+    expect(app.locator(".gasphys-answer")).to_contain_text("alveolar PO2 is 231.7 kPa")
+    _clean(heard)
 
 
-def test_an_error_of_the_code_is_seen(app: Page) -> None:
+def test_an_error_of_the_code_is_seen(every_app: Page) -> None:
     """What no entry can bring about: the code fails inside a callback."""
-    _run_more(app, "app = gp.widgets.OxygenAtPressure(); app.lines = None; app")
-    second = app.locator(".gasphys-app").nth(1)
-    second.get_by_role("button", name="Python lines").click()
-    expect(second.locator(".gasphys-message")).to_contain_text(
-        "Unexpected error, please report it: TypeError"
-    )
+    _run_more(every_app, "broken = EquationPage(); broken.lines = None; broken")
+    expect(every_app.locator(".gasphys-app")).to_have_count(len(MAKE) + 1)
+    last = every_app.locator(".gasphys-app").last
+    last.get_by_role("button", name="Python lines").click()
+    expect(last.locator(".gasphys-message")).to_contain_text("Unexpected error, please report it: TypeError")
 
 
 def _run_more(page: Page, source: str) -> None:
@@ -125,7 +144,7 @@ def _run_more(page: Page, source: str) -> None:
     page.keyboard.press("Control+Enter")
 
 
-def test_working_lines_and_files_on_request(app: Page, seen: Seen, shot: Callable[..., None]) -> None:
+def test_working_lines_and_files_on_request(app: Page, heard: Seen, shot: Callable[..., None]) -> None:
     app.get_by_label("Show the working of").select_option("alveolar PO2")
     expect(app.locator(".gasphys-working")).to_contain_text("Fenn, Rahn & Otis 1946")
     shot(app, "working")
@@ -134,15 +153,15 @@ def test_working_lines_and_files_on_request(app: Page, seen: Seen, shot: Callabl
     shot(app, "lines")
     app.get_by_role("button", name="CSV file").click()
     with app.expect_download() as waiting:
-        app.get_by_role("link", name="Save oxygen_at_pressure.csv").click()
+        app.get_by_role("link", name="Save patient_at_pressure.csv").click()
     lines = _content(waiting.value).decode().splitlines()
     assert f"# {CAUTION}" in lines
     assert len(lines) > 80
     app.get_by_role("button", name="netCDF file").click()
     with app.expect_download() as waiting:
-        app.get_by_role("link", name="Save oxygen_at_pressure.nc").click()
+        app.get_by_role("link", name="Save patient_at_pressure.nc").click()
     assert _content(waiting.value).startswith(b"CDF")
-    _clean(seen)
+    _clean(heard)
 
 
 def _content(download: Download) -> bytes:
@@ -196,7 +215,7 @@ def test_a_swept_slider_ends_on_its_last_value(app: Page) -> None:
     for _ in range(9):
         app.keyboard.press("ArrowLeft", delay=0)
     expect(app.locator(".gasphys-blank-ambient_pressure input")).to_have_value("1.5")
-    expect(app.locator(".gasphys-answer")).to_contain_text("Alveolar PO2 is 140.5 kPa")
+    expect(app.locator(".gasphys-answer")).to_contain_text("alveolar PO2 is 140.5 kPa")
 
 
 def test_legible_at_twice_the_size(app: Page, shot: Callable[..., None]) -> None:
@@ -212,35 +231,18 @@ def test_legible_at_twice_the_size(app: Page, shot: Callable[..., None]) -> None
     assert wide[0] <= wide[1] + 1
 
 
-def test_slider_to_new_picture(app: Page, capsys: pytest.CaptureFixture[str]) -> None:
-    """Measured, not judged: from the key to the loaded picture, in the browser's own clock."""
-    app.evaluate(
-        """() => {
-            window.times = [];
-            const picture = document.querySelector('.gasphys-picture');
-            const img = picture.tagName === 'IMG' ? picture : picture.querySelector('img');
-            img.addEventListener('load', () => window.times.push(performance.now()));
-            document.addEventListener('keydown', () => { window.pressed = performance.now(); }, true);
-        }"""
-    )
-    handle = app.locator(".gasphys-blank-ambient_pressure .noUi-handle")
-    handle.focus()
-    took = []
-    for k in range(24):
-        done = app.evaluate("() => window.times.length")
-        app.keyboard.press("ArrowLeft" if k < 12 else "ArrowRight")
-        app.wait_for_function(f"() => window.times.length > {done}")
-        took.append(app.evaluate("() => window.times.at(-1) - window.pressed"))
-    assert len(took) == 24
-    _run_more(app, "'compute {compute:.0f} ms, draw {draw:.0f} ms'.format(**_.timing)")
-    parts = app.locator(".jp-OutputArea-executeResult pre", has_text="compute").inner_text()
-    spread = f"median {median(took):.0f} ms, {min(took):.0f} to {max(took):.0f} ms"
-    with capsys.disabled():
-        print(f"\nslider to new picture: {spread}; {parts}")
+#: Each is run once in JupyterLab, one by the tests above; tests/notebooks scans what the others print.
+WITH_APPS = [
+    p.name
+    for p in sorted((ROOT / "notebooks").glob("*.ipynb"))
+    if "gp.widgets." in p.read_text("utf-8") and p.name != BLOOD
+]
 
 
-@pytest.mark.parametrize("name", sorted(path.name for path in (ROOT / "notebooks").glob("*.ipynb")))
-def test_every_notebook_loads(page: Page, lab: str, name: str, seen: Seen, shot: Callable[..., None]) -> None:
+@pytest.mark.parametrize("name", WITH_APPS)
+def test_every_notebook_with_an_app_loads(
+    page: Page, lab: str, name: str, seen: Seen, shot: Callable[..., None]
+) -> None:
     _open(page, lab, name)
     expect(page.locator(".gasphys-answer").first).to_have_text(re.compile(r"\d"))
     assert page.locator("[data-mime-type*='error'], [data-mime-type*='stderr']").count() == 0

@@ -48,7 +48,7 @@ def _build(source: Path, hook: str) -> Path:
 
 
 def _needed() -> set[str]:
-    suffixes = {".py", ".toml", ".csv", ".typed", ".js", ".css", ".md"}
+    suffixes = {".py", ".toml", ".csv", ".typed", ".html", ".js", ".css", ".md"}
     files = (p for p in PACKAGE.rglob("*") if p.is_file() and "__pycache__" not in p.parts)
     return {f"gasphys/{p.relative_to(PACKAGE).as_posix()}" for p in files if p.suffix in suffixes}
 

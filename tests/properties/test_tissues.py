@@ -141,6 +141,7 @@ def test_the_threshold_moves_with_ambient_pressure(p, po2, pco2, over):
     low, high = (tissues.washout_threshold(p + d, po2, pco2, over) for d in (0.0, 10.0))
     assert high - low == pytest.approx(10.0, rel=1e-9)
     assert low == pytest.approx(tissues.washout_threshold(p, po2, pco2) + over, abs=1e-9)
+    assert tissues.washout_threshold(p, po2, pco2, over, 6.0) == pytest.approx(low - 6.0, abs=1e-9)
 
 
 @covers("tissues.linear_tissue_pressure")

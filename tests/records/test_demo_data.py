@@ -24,7 +24,14 @@ def texts() -> dict[str, str]:
 
 
 @pytest.mark.parametrize(
-    "name", ["p01_chamber_log.csv", "dive_in_the_sound.csv", "dive_in_the_sound_loop.csv", "p01.toml"]
+    "name",
+    [
+        "p01_chamber_log.csv",
+        "dive_in_the_sound.csv",
+        "dive_in_the_sound_loop.csv",
+        "dive_in_the_sound_supply.toml",
+        "p01.toml",
+    ],
 )
 def test_files_are_those_of_the_script(name: str, texts: dict[str, str]) -> None:
     assert (FOLDER / name).read_bytes() == texts[name].encode()
