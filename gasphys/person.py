@@ -169,23 +169,24 @@ class Person:
         Returns
         -------
         str
-            Such as ``"hemoglobin = 12.9, arterial_ph = 7.4"``; of several persons lowest and highest.
+            Such as ``"hemoglobin = 12.9 g/dL, arterial_ph = 7.4"``; of several persons lowest and highest.
 
         Examples
         --------
         >>> Person(hemoglobin=[9.0, 12.9]).told(["hemoglobin", "arterial_ph"], measured=True)
-        'hemoglobin = 9 to 12.9'
+        'hemoglobin = 9 to 12.9 g/dL'
         """
         words = []
         for name in names:
             if self.is_measured(name) == measured:
-                value = self.value(name)
+                value, unit = self.value(name), quantity(name).unit
+                shown = "" if unit == "1" else f" {unit}"
                 if isinstance(value, float):
-                    words.append(f"{name} = {value:g}")
+                    words.append(f"{name} = {value:g}{shown}")
                 elif value.chunks is not None:
                     words.append(f"{name} of {value.size} persons")
                 else:
-                    words.append(f"{name} = {float(value.min()):g} to {float(value.max()):g}")
+                    words.append(f"{name} = {float(value.min()):g} to {float(value.max()):g}{shown}")
         return ", ".join(words)
 
     def one(self) -> Person:

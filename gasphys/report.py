@@ -270,11 +270,12 @@ def _by_model(arterial: xr.DataArray, shown: str) -> str:
 
 
 def _shorter(text: str) -> str:
+    """Return the same in three digits and without the signs."""
     parts = []
     for one in text.split(", "):
-        name, _, number = one.partition(" = ")
-        unit_name = quantity(name).unit
-        parts.append(f"{name} {float(number):.3g}{'' if unit_name == '1' else ' ' + unit_name}")
+        name, _, told = one.partition(" = ")
+        number, _, unit = told.partition(" ")
+        parts.append(one if unit.startswith("to ") else f"{name} {float(number):.3g} {unit}".rstrip())
     return ", ".join(parts)
 
 
