@@ -4,8 +4,6 @@ from __future__ import annotations
 
 import io
 import re
-import shutil
-import subprocess
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Any
@@ -209,28 +207,6 @@ def _with_history(plan: ascent.Plan, text: str) -> ascent.Plan:
     from dataclasses import replace
 
     return replace(plan, exposure=replace(plan.exposure, history=(text, *plan.exposure.history)))
-
-
-@pytest.mark.skipif(shutil.which("chromium") is None, reason="no browser to print with")
-def test_one_page_of_paper_however_many_stops(tmp_path: Path) -> None:
-    bottom = Exposure.start("trimix 12/60").travel(depth=100.0, rate=20.0).stay(35.0)
-    gases = [("trimix 25/30", 50.0), *GASES]
-    rules = ascent.Rules(
-        gradient_low=0.2, gradient_high=0.7, breaks=ascent.Breaks(15.0, 5.0, "air", "1.3 bar")
-    )
-    plans = {"few": ascent.plan(TRIMIX, GASES), "many": ascent.plan(bottom, gases, rules=rules)}
-    assert plans["many"].stops.sizes["stop"] > 20
-    for name, plan in plans.items():
-        page, paper = tmp_path / f"{name}.html", tmp_path / f"{name}.pdf"
-        ascent.save_plan(plan, page, "The sound")
-        command = ["chromium", "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
-        subprocess.run(
-            [*command, f"--user-data-dir={tmp_path / 'profile'}", f"--print-to-pdf={paper}", page.as_uri()],
-            check=True,
-            capture_output=True,
-            timeout=120,
-        )
-        assert len(re.findall(rb"/Type\s*/Page[^s]", paper.read_bytes())) == 1, name
 
 
 def test_saving(tmp_path: Path, found: ascent.Comparison) -> None:
