@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import abc
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
@@ -32,12 +33,12 @@ class Distribution(Protocol):
 
 
 @dataclass(frozen=True)
-class _Known:
+class _Known(abc.ABC):
     """A distribution by its parameters, in `unit`; the canonical unit of the quantity where it is empty."""
 
+    @abc.abstractmethod
     def frozen(self) -> Distribution:
         """Return it as scipy knows it."""
-        raise NotImplementedError
 
     def ppf(self, probability: Any, /) -> Any:
         """Return the value of a cumulative probability.
