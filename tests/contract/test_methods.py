@@ -311,6 +311,8 @@ def test_solve_for_says_what_it_needs(name: str) -> None:
 
 def _beyond_reach(f: Any, name: str, known: dict[str, float]) -> float:
     """Return a value above all the equation gives over the possible range of one argument."""
+    if f.kind == "inverse":  # close to an asymptote it may give any value that is possible
+        return 2.0 * _argument(f.forward, f.unknown).possible[1] + 1.0
     low, high = _argument(f, name).possible
     x = np.concatenate([np.linspace(low, high, 4001), np.geomspace(max(low, high * 1e-12), high, 4001)])
     with np.errstate(all="ignore"):
