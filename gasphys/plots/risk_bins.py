@@ -64,13 +64,13 @@ def risk_bins_figure(ds: xr.Dataset) -> Any:
         axes.plot([k - 0.25, k + 0.25], [100 * chance[k]] * 2, color=INK, linewidth=1.6)
     axes.plot(x, 100 * seen, "o", color=ACCENT, markersize=7)
     last = int(x[-1])
-    for text, y, height in (
-        ("seen", seen[last], seen[last]),
-        ("predicted", chance[last], chance[last]),
-        ("by chance,\n95 of 100", high[last], high[last]),
-    ):
+    words = sorted([(seen[last], "seen"), (chance[last], "predicted"), (high[last], "by chance,\n95 of 100")])
+    least, height = -np.inf, -np.inf
+    for y, word in words:  # moved up where they would cover each other
+        height = max(y, height + least)
+        least = (0.09 if "\n" in word else 0.06) * float(high.max())
         axes.annotate(
-            text,
+            word,
             (last + 0.26, 100 * y),
             xytext=(last + 0.42, 100 * height),
             fontsize=8,
