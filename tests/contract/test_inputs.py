@@ -32,8 +32,7 @@ from gasphys.quantities import CAUTION, attributes
 
 from .samples import LEAVES, columns, each, each_argument, for_all, other_unit, samples, wrong_units
 
-#: A number, an array and an old numpy may each take another logarithm, and differences cancel.
-TIGHT = 5e-12
+TIGHT = 1e-12
 
 PINT = pint.UnitRegistry()
 

@@ -33,8 +33,7 @@ from .samples import (
     samples,
 )
 
-#: A number, an array and an old numpy may each take another logarithm, and differences cancel.
-TIGHT = 5e-12
+TIGHT = 1e-12
 
 each_formula = pytest.mark.parametrize("name", FORMULAS_ONLY)
 each_option = pytest.mark.parametrize(

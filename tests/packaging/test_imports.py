@@ -148,8 +148,8 @@ def _loaded(code: str) -> set[str]:
 
 @functools.cache
 def _with_xarray() -> frozenset[str]:
-    """Return what xarray alone loads: its older versions bring dask along where it is there."""
-    return frozenset(_loaded("import xarray"))
+    """Return what xarray alone loads of dask: its older versions bring it along where it is there."""
+    return frozenset(m for m in _loaded("import xarray") if m.partition(".")[0] == "dask")
 
 
 def _heavy(modules: set[str]) -> list[str]:

@@ -419,7 +419,7 @@ def test_csv_comes_back_equal_with_the_caution(make: Callable[[], App], tmp_path
         if ds[name].dtype.kind == "U":
             assert table[column].tolist() == ds[name].values.tolist()
             continue
-        np.testing.assert_allclose(table[column], ds[name].values, rtol=1e-12, atol=0.0)
+        np.testing.assert_allclose(table[column], ds[name].values, rtol=1e-14, atol=0.0)
 
 
 @each
